@@ -1,0 +1,1 @@
+"""A protection scheme logic simulator."""

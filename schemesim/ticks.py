@@ -1,0 +1,90 @@
+"""Integer time: inside the library a time is a whole number of microseconds (rule R1).
+
+The face takes milliseconds or cycles and converts once, here.
+"""
+
+from __future__ import annotations
+
+import math
+
+from schemesim.errors import reject
+
+US_PER_MS = 1000
+MAX_MS = 1e9
+"""Longest time accepted (about eleven days): more is a slip of units."""
+
+
+def from_ms(value_ms: float, what: str = "time") -> int:
+    """Microseconds of a time given in milliseconds.
+
+    Parameters
+    ----------
+    value_ms : float
+        Time in ms; zero or more, finite.
+    what : str
+        Name used in the error.
+
+    Returns
+    -------
+    int
+        The time in microseconds, rounded to the nearest whole one.
+
+    Raises
+    ------
+    InputError
+        If the value is negative, NaN, infinite, not a number or over ``MAX_MS``.
+
+    Examples
+    --------
+    >>> from_ms(12.5)
+    12500
+    """
+    if isinstance(value_ms, bool) or not isinstance(value_ms, (int, float)):
+        raise reject(what, value_ms, "a number of milliseconds")
+    if not math.isfinite(value_ms) or value_ms < 0 or value_ms > MAX_MS:
+        raise reject(what, value_ms, f"a finite time from 0 to {MAX_MS:g} ms")
+    return round(value_ms * US_PER_MS)
+
+
+def from_cycles(cycles: float, frequency_hz: float, what: str = "time") -> int:
+    """Microseconds of a time given in cycles of the power frequency.
+
+    Raises
+    ------
+    InputError
+        If the cycles or the frequency are not positive finite numbers.
+
+    Examples
+    --------
+    >>> from_cycles(3, 60)
+    50000
+    """
+    if isinstance(frequency_hz, bool) or not isinstance(frequency_hz, (int, float)):
+        raise reject("power frequency", frequency_hz, "a number of hertz")
+    if not math.isfinite(frequency_hz) or frequency_hz <= 0:
+        raise reject("power frequency", frequency_hz, "a finite frequency over 0 Hz")
+    if isinstance(cycles, bool) or not isinstance(cycles, (int, float)):
+        raise reject(what, cycles, "a number of cycles")
+    return from_ms(cycles * 1000.0 / frequency_hz, what)
+
+
+def to_ms(ticks: int) -> float:
+    """Milliseconds of a time in microseconds.
+
+    Examples
+    --------
+    >>> to_ms(12500)
+    12.5
+    """
+    return ticks / US_PER_MS
+
+
+def to_cycles(ticks: int, frequency_hz: float) -> float:
+    """Cycles of the power frequency of a time in microseconds.
+
+    Examples
+    --------
+    >>> to_cycles(50000, 60)
+    3.0
+    """
+    return ticks * frequency_hz / 1e6
