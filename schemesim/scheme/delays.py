@@ -24,6 +24,7 @@ from __future__ import annotations
 import math
 import operator
 from abc import ABC, abstractmethod
+from collections.abc import Sequence
 from dataclasses import dataclass
 from statistics import NormalDist
 from typing import TYPE_CHECKING, Any
@@ -64,9 +65,10 @@ class Delay(ABC):
         """The time in microseconds when nothing is random; see the table of the module."""
 
     @property
-    @abstractmethod
     def is_fixed(self) -> bool:
         """Whether every uniform gives the same time."""
+        low, high = self._span()
+        return low == high
 
     @abstractmethod
     def _inverse(self, u: float) -> float:
@@ -149,11 +151,6 @@ class Fixed(Delay):
         """The time itself."""
         return self.us
 
-    @property
-    def is_fixed(self) -> bool:
-        """Always true."""
-        return True
-
     def _inverse(self, u: float) -> float:  # noqa: ARG002 - the same for every u
         return self.us
 
@@ -162,18 +159,7 @@ class Fixed(Delay):
 
 
 @dataclass(frozen=True, slots=True)
-class _Ranged(Delay):
-    """What every kind with a shortest and a longest time shares (the fields come from the kinds)."""
-
-    @property
-    def is_fixed(self) -> bool:
-        """True only where the shortest time is the longest."""
-        low, high = self._span()
-        return low == high
-
-
-@dataclass(frozen=True, slots=True)
-class Uniform(_Ranged):
+class Uniform(Delay):
     """Every time from `low_us` to `high_us` equally likely.
 
     Parameters
@@ -213,7 +199,7 @@ class Uniform(_Ranged):
 
 
 @dataclass(frozen=True, slots=True)
-class Triangular(_Ranged):
+class Triangular(Delay):
     """Density rising from `low_us` to `mode_us` and falling to `high_us`.
 
     Parameters
@@ -258,7 +244,7 @@ class Triangular(_Ranged):
 
 
 @dataclass(frozen=True, slots=True)
-class Normal(_Ranged):
+class Normal(Delay):
     """A normal distribution cut off below `low_us` and above `high_us`.
 
     Parameters
@@ -311,7 +297,7 @@ class Normal(_Ranged):
 
 
 @dataclass(frozen=True, slots=True)
-class LogNormal(_Ranged):
+class LogNormal(Delay):
     """A log-normal distribution cut off below `low_us` and above `high_us`.
 
     Parameters
@@ -343,7 +329,7 @@ class LogNormal(_Ranged):
     def __post_init__(self) -> None:
         errors = ErrorList()
         _take_times(self, errors, "low_us", "median_us", "high_us")
-        if self.median_us == 0 and not isinstance(self.median_us, bool):
+        if _whole(self.median_us) == 0:
             errors.add("LogNormal median_us", self.median_us, "a time over 0 (its logarithm is taken)")
         _take_spread(self, errors, "sigma", MAX_SIGMA, "use Fixed for a time without spread")
         errors.raise_if_any()
@@ -366,7 +352,7 @@ class LogNormal(_Ranged):
 
 
 @dataclass(frozen=True, slots=True)
-class Empirical(_Ranged):
+class Empirical(Delay):
     """Times that were observed, each one equally likely.
 
     Parameters
@@ -389,10 +375,11 @@ class Empirical(_Ranged):
     sample_us: tuple[int, ...]
 
     def __post_init__(self) -> None:
-        if isinstance(self.sample_us, (str, bytes)) or not hasattr(self.sample_us, "__iter__"):
-            raise reject("Empirical sample_us", self.sample_us, "a sequence of times in microseconds")
+        sample: object = self.sample_us
+        if not isinstance(sample, (Sequence, np.ndarray)) or isinstance(sample, (str, bytes)):
+            raise reject("Empirical sample_us", sample, "a sequence of times in microseconds")
         errors = ErrorList()
-        given = tuple(self.sample_us)
+        given = tuple(sample)
         if not given:
             errors.add("Empirical sample_us", given, "at least one time")
         whole = [_whole(value) for value in given]
@@ -487,7 +474,8 @@ def _take_times(delay: Delay, errors: ErrorList, *names: str) -> None:
         object.__setattr__(delay, name, time)
         if last is not None and time < last[1]:
             errors.add(f"{kind} {name}", time, f"at least {last[0]} = {last[1]}")
-        last = name, time
+        else:
+            last = name, time
 
 
 def _take_spread(delay: Delay, errors: ErrorList, name: str, most: float, tip: str) -> None:
