@@ -68,7 +68,7 @@ def uniform(seed: int, name: str, trial: int) -> float:
 
     Examples
     --------
-    >>> uniform(7, "north.CB1", 3) == uniforms(7, "north.CB1", 0, 10)[3]
+    >>> uniform(7, "north.CB1", 3) == uniforms(7, "north.CB1", 0, 10).tolist()[3]
     True
     """
     return float(uniforms(seed, name, trial, 1)[0])
@@ -117,7 +117,7 @@ def uniforms(seed: int, name: str, start: int, count: int) -> NDArray[np.float64
     source = np.random.Philox(key=_key(seed, name))
     source.advance(steps)
     words = source.random_raw(skip + count)[skip:]
-    return (words >> np.uint64(11)) * 2.0**-53
+    return (words >> np.uint64(11)).astype(np.float64) * np.float64(2.0**-53)
 
 
 def _key(seed: int, name: str) -> int:
