@@ -54,7 +54,13 @@ def wilson(successes: int, trials: int, confidence: float = 0.95) -> tuple[float
     if trials == 0:
         return 0.0, 1.0
     z = -NormalDist().inv_cdf((1.0 - confidence) / 2.0)
-    return _wilson_low(successes, trials, z), 1.0 - _wilson_low(trials - successes, trials, z)
+    failures = trials - successes
+    root = z * math.sqrt(z * z + 4.0 * successes * failures / trials)
+    above = 2.0 * successes + z * z + root
+    # The lower root of the quadratic is the product of the roots over the upper one: no digits cancel.
+    low = 2.0 * successes * (successes / trials) / above if successes else 0.0
+    high = min(above / (2.0 * (trials + z * z)), 1.0) if failures else 1.0
+    return low, high
 
 
 def clopper_pearson(successes: int, trials: int, confidence: float = 0.95) -> tuple[float, float]:
@@ -95,21 +101,13 @@ def clopper_pearson(successes: int, trials: int, confidence: float = 0.95) -> tu
     (0.0321, 0.3789)
     """
     successes, trials = _checked(successes, trials, confidence)
-    from scipy.special import betaincinv  # heavy: only when an interval is asked for
+    from scipy.special import betainccinv, betaincinv  # heavy: only when an interval is asked for
 
     tail = (1.0 - confidence) / 2.0
     failures = trials - successes
     low = float(betaincinv(successes, failures + 1, tail)) if successes else 0.0
-    high = 1.0 - float(betaincinv(failures, successes + 1, tail)) if failures else 1.0
+    high = float(betainccinv(successes + 1, failures, tail)) if failures else 1.0
     return low, high
-
-
-def _wilson_low(successes: int, trials: int, z: float) -> float:
-    """Lower root of Wilson's quadratic, as product of roots over the upper one: no digits cancel."""
-    failures = trials - successes
-    root = math.sqrt(z * z + 4.0 * successes * failures / trials)
-    below = 2.0 * successes + z * z + z * root
-    return 2.0 * successes * (successes / trials) / below if successes else 0.0
 
 
 def _checked(successes: int, trials: int, confidence: float) -> tuple[int, int]:
@@ -117,8 +115,9 @@ def _checked(successes: int, trials: int, confidence: float) -> tuple[int, int]:
     happened, tried = _count(errors, "successes", successes), _count(errors, "trials", trials)
     if happened is not None and tried is not None and happened > tried:
         errors.add("successes", happened, f"at most the number of trials, {tried}")
-    number = isinstance(confidence, (int, float)) and not isinstance(confidence, bool)
-    if not number or not 0.0 < confidence < 1.0:
+    level: object = confidence
+    is_number = isinstance(level, (int, float)) and not isinstance(level, bool)
+    if not is_number or not 0.0 < confidence < 1.0:
         errors.add("confidence", confidence, "a number between 0 and 1, e.g. 0.95")
     errors.raise_if_any()
     return happened or 0, tried or 0
