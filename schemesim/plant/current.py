@@ -56,9 +56,10 @@ class Neighbourhood:
     kept : iterable of str
         Devices (and sources with a trip) that may open or are measured.
     dispatch : str or None
-    feeds : bool
-        Without it, sources inside the fault's own isolation zone that are declared
-        equivalents feeding nothing are left out; ``idle`` names them.
+        Dispatch state; all sources by default.
+    idle : set of str
+        Sources left out: those inside the fault's own isolation zone that are declared
+        equivalents feeding nothing.
     """
 
     def __init__(
@@ -80,14 +81,8 @@ class Neighbourhood:
                 a, b = list(full[v])
                 self._links[name] = (a, b)
                 full.remove_node(v)
-        if fault is None:
-            full.add_edges_from((LOADS, ("section", s.name)) for s in plant.sections if s.load_mw > 0)
         self.target: Vertex = LOADS if self.fault is None else self.fault
         full.add_nodes_from((SOURCES, self.target))
-        terminals = {SOURCES, self.target}
-        for ends in self._links.values():
-            terminals.update(ends)
-        self._reduced = reduce_blocks(full, terminals)
         self._part: dict[Vertex, int] = {}
         self._load_mw: list[float] = []
         self._members: list[tuple[str, ...]] = []
@@ -96,6 +91,14 @@ class Neighbourhood:
             self._part.update(dict.fromkeys(part, index))
             self._load_mw.append(sum(plant.section[n].load_mw for n in names))
             self._members.append(tuple(names))
+        in_service = [s for s in plant.sources_in(dispatch) if s.name in idle]
+        self._idle = [self._part[("section", s.section)] for s in in_service]
+        if fault is None:  # after the parts: the common node of the loads supplies none of them
+            full.add_edges_from((LOADS, ("section", s.name)) for s in plant.sections if s.load_mw > 0)
+        terminals = {SOURCES, self.target}
+        for ends in self._links.values():
+            terminals.update(ends)
+        self._reduced = reduce_blocks(full, terminals)
 
     def supply(self, opened: Set[str]) -> Supply:
         """Whether the fault is fed and which kept devices carry, with some devices open."""
@@ -115,16 +118,18 @@ class Neighbourhood:
     def lost(self, opened: Set[str]) -> tuple[float, tuple[str, ...]]:
         """Load (MW) and sections that no closed path joins to a source any more.
 
-        Sections without a supply before the fault are not counted.
+        Sections without a supply before the fault are not counted; idle sources supplied
+        theirs until the fault.
         """
-        before, after = self._dead(frozenset()), self._dead(opened)
+        before, after = self._dead(frozenset(), self._idle), self._dead(opened)
         gone = sorted(after - before)
         names = sorted(name for index in gone for name in self._members[index])
         return sum(self._load_mw[index] for index in gone), tuple(names)
 
-    def _dead(self, opened: Set[str]) -> set[int]:
+    def _dead(self, opened: Set[str], supplied: Iterable[int] = ()) -> set[int]:
         joined: nx.Graph[int] = nx.Graph()
         joined.add_nodes_from(range(len(self._members)))
+        joined.add_edges_from((self._part[SOURCES], index) for index in supplied)
         for name, (a, b) in self._links.items():
             if name not in opened:
                 joined.add_edge(self._part[a], self._part[b])

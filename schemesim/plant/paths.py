@@ -72,6 +72,10 @@ class PathGraph:
         d = self.plant.device[device]
         return (side, self._at(side, d.a_at if side == d.a else d.b_at))
 
+    def points_of(self, section: str) -> tuple[tuple[str, float], ...]:
+        """The points of one section at which devices are attached."""
+        return tuple((section, p) for p in self._points[section])
+
     def distances(
         self, fault: Location, opened: Set[str], cutoff: float
     ) -> dict[tuple[str, float], int]:

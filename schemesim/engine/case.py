@@ -1,0 +1,358 @@
+"""A case: one initiating event bound to a program, cut down to what it can reach.
+
+Only blocks that may become true for this event and lead to a breaker that may open
+(or to an output the study observes) are kept, so a case costs its neighbourhood and
+not the size of the grid. Inputs that cannot change are folded into the gates.
+"""
+
+from __future__ import annotations
+
+from collections import deque
+from collections.abc import Mapping, Set
+from dataclasses import dataclass, field
+from typing import NamedTuple
+
+from schemesim.engine.program import Kind, Program, Question, spread
+from schemesim.engine.sensing import Event, Sensed, Sensing
+from schemesim.errors import nearest, reject
+from schemesim.plant.model import Location
+from schemesim.plant.zones import Duty, duty
+from schemesim.scheme.delays import Delay, Fixed
+from schemesim.scheme.model import Ask, Breaker, Contact, FailureMode, Gate, Latch, Sense, Timer
+
+NOTHING = Fixed(0)
+
+
+@dataclass(frozen=True, slots=True)
+class Topology:
+    """What a set of open breakers means for the case: conditions by sense block, fault fed or not."""
+
+    holds: tuple[tuple[int, bool], ...]
+    fed: bool
+
+
+class BreakerAsk(NamedTuple):
+    """A mode of a breaker, the questions that bring it, and its verdict where it is certain."""
+
+    mode: FailureMode
+    questions: tuple[int, ...]
+    certain: bool | None
+
+
+@dataclass(frozen=True, eq=False)
+class Case:
+    """An event bound to a program. Indices are local to the case, in the program's order.
+
+    Attributes
+    ----------
+    names, kind, inputs, consumers, order
+        As in the program; ``inputs`` hold only signals that can change.
+    k : tuple of int
+        How many inputs a gate still needs.
+    unless, given : tuple of tuple of int
+        Ask numbers of each gate.
+    asks : tuple of tuple of int
+        For each ask number the questions that bring it (indices into the program's).
+    certain : tuple of (bool or None)
+        For each ask number its verdict where no question is needed.
+    settles : mapping of question to the ask numbers it bears on
+    gates_asking : tuple of tuple of int
+        For each ask number the gates that depend on it.
+    rank : tuple of int
+        Role of each contact for this event (0 for other blocks).
+    on, off : tuple of Delay
+        Operate and reset, pick-up and drop-out, interrupting and auxiliary delays.
+    breakers : tuple of int
+        Blocks of breakers that may open.
+    reach_mask : tuple of int
+        For each block the breakers (bit = place in ``breakers``) and observed outputs (the
+        bits above) that its output may still influence.
+    """
+
+    program: Program
+    event: Event
+    dispatch: str | None
+    duty: Duty
+    sensed: Sensed
+    names: tuple[str, ...]
+    kind: tuple[Kind, ...]
+    inputs: tuple[tuple[tuple[int, bool], ...], ...]
+    consumers: tuple[tuple[int, ...], ...]
+    order: tuple[int, ...]
+    k: tuple[int, ...]
+    unless: tuple[tuple[int, ...], ...]
+    given: tuple[tuple[int, ...], ...]
+    asks: tuple[tuple[int, ...], ...]
+    certain: tuple[bool | None, ...]
+    settles: Mapping[int, tuple[int, ...]]
+    gates_asking: tuple[tuple[int, ...], ...]
+    rank: tuple[int, ...]
+    contacts: tuple[Contact | None, ...]
+    on: tuple[Delay, ...]
+    off: tuple[Delay, ...]
+    senses: tuple[int, ...]
+    breakers: tuple[int, ...]
+    breaker_asks: tuple[tuple[BreakerAsk, ...], ...]
+    closable: tuple[bool, ...]
+    coils: Mapping[int, int]
+    observed: tuple[int, ...]
+    reach_mask: tuple[int, ...]
+    index: Mapping[str, int]
+    _topologies: dict[int, Topology] = field(default_factory=dict)
+
+    @property
+    def questions(self) -> tuple[Question, ...]:
+        """Questions of the program; answers use their indices."""
+        return self.program.questions
+
+    def topology(self, open_mask: int) -> Topology:
+        """Conditions and supply with some of the case's breakers open; computed once for each set."""
+        known = self._topologies.get(open_mask)
+        if known is None:
+            opened = self.opened(open_mask)
+            holds, fed = self.sensed.state(opened)
+            known = Topology(tuple(zip(self.senses, holds, strict=True)), fed)
+            self._topologies[open_mask] = known
+        return known
+
+    def opened(self, open_mask: int) -> frozenset[str]:
+        """Names of the breakers in a mask."""
+        return frozenset(self.names[b] for bit, b in enumerate(self.breakers) if open_mask >> bit & 1)
+
+    @property
+    def topologies_met(self) -> int:
+        """How many topologies have been solved so far."""
+        return len(self._topologies)
+
+
+def bind(
+    program: Program,
+    event: Event,
+    sensing: Sensing,
+    *,
+    dispatch: str | None = None,
+    observe: Set[str] = frozenset(),
+) -> Case:
+    """Bind an initiating event to a program.
+
+    Parameters
+    ----------
+    program : Program
+    event : Location or NoFault
+    sensing : Sensing
+    dispatch : str or None
+    observe : set of str
+        Gates whose outputs the study observes besides breakers and times.
+
+    Raises
+    ------
+    InputError
+        If an observed name is no gate of the scheme, or the section or dispatch is not known.
+    """
+    for name in sorted(observe):
+        if not isinstance(program.scheme.block.get(name), Gate):
+            known = [b.name for b in program.scheme.blocks if isinstance(b, Gate)]
+            raise reject("observed output", name, "the name of a gate", tip=nearest(name, known))
+    if isinstance(event, Location) and event.section not in program.plant.section:
+        raise reject("section", event.section, "a section", tip=nearest(event.section, program.plant.section))
+    start = sensing.candidates(program, event, dispatch)
+    on = spread(program.blocks, program.inputs, program.consumers, start, program.free)
+    possible = on | program.free
+    openable = sorted(i for i in possible if program.kind[i] is Kind.BREAKER)
+    watched = sorted(program.index[name] for name in observe if program.index[name] in on)
+    wanted = _backward(program, possible, openable + watched)
+    chosen = sorted(wanted)
+    local = {g: n for n, g in enumerate(chosen)}
+    blocks = [program.blocks[g] for g in chosen]
+    senses = tuple(n for n, b in enumerate(blocks) if isinstance(b, Sense))
+    conditions = [b.condition for b in blocks if isinstance(b, Sense)]
+    sensed = sensing.bind(program, event, dispatch, conditions, [program.blocks[g].name for g in openable])
+    inputs, ks = _inputs(program, chosen, local)
+    consumers: list[set[int]] = [set() for _ in chosen]
+    for n, items in enumerate(inputs):
+        for j, _ in items:
+            consumers[j].add(n)
+    asks, certain, unless, given = _asks(program, blocks)
+    asking: list[set[int]] = [set() for _ in asks]
+    for n in range(len(blocks)):
+        for a in (*unless[n], *given[n]):
+            asking[a].add(n)
+    settles: dict[int, list[int]] = {}
+    for a, group in enumerate(asks):
+        for q in group:
+            settles.setdefault(q, []).append(a)
+    breakers = tuple(local[g] for g in openable)
+    devices = [b for b in blocks if isinstance(b, Breaker)]
+    closable = tuple(bool(b.close) for b in devices)
+    observed = tuple(local[g] for g in watched)
+    contacts = tuple(b.contact if isinstance(b, Gate) else None for b in blocks)
+    section = event.section if isinstance(event, Location) else None
+    job = (
+        Duty(frozenset(), frozenset())
+        if section is None
+        else duty(program.plant, program.zones, section, dispatch, program.scheme.intertripped(section))
+    )
+    return Case(
+        program=program,
+        event=event,
+        dispatch=dispatch,
+        duty=job,
+        sensed=sensed,
+        names=tuple(b.name for b in blocks),
+        kind=tuple(program.kind[g] for g in chosen),
+        inputs=inputs,
+        consumers=tuple(tuple(sorted(c)) for c in consumers),
+        order=tuple(program.order[g] for g in chosen),
+        k=ks,
+        unless=unless,
+        given=given,
+        asks=asks,
+        certain=certain,
+        settles={q: tuple(group) for q, group in settles.items()},
+        gates_asking=tuple(tuple(sorted(s)) for s in asking),
+        rank=tuple(_rank(c, section) for c in contacts),
+        contacts=contacts,
+        on=tuple(_on(b) for b in blocks),
+        off=tuple(_off(b) for b in blocks),
+        senses=senses,
+        breakers=breakers,
+        breaker_asks=tuple(_breaker_asks(program, blocks[b]) for b in breakers),
+        closable=closable,
+        coils={
+            n: sum(program.index[name] in local for name in b.coils)
+            for n, b in enumerate(blocks)
+            if isinstance(b, Breaker)
+        },
+        observed=observed,
+        reach_mask=_reach_mask(inputs, breakers, observed),
+        index={b.name: n for n, b in enumerate(blocks)},
+    )
+
+
+def _backward(program: Program, possible: Set[int], goals: list[int]) -> set[int]:
+    wanted, queue = set(goals), deque(goals)
+    while queue:
+        for j, _ in program.inputs[queue.popleft()]:
+            if j in possible and j not in wanted:
+                wanted.add(j)
+                queue.append(j)
+    return wanted
+
+
+def _inputs(
+    program: Program, chosen: list[int], local: dict[int, int]
+) -> tuple[tuple[tuple[tuple[int, bool], ...], ...], tuple[int, ...]]:
+    """Inputs that can change, and what gates still need; what cannot change is folded in.
+
+    A signal outside the case is false for good, but for the 52a of a breaker that stays closed.
+    """
+    inputs: list[tuple[tuple[int, bool], ...]] = []
+    ks: list[int] = []
+    for g in chosen:
+        block = program.blocks[g]
+        kept = tuple((local[j], inv) for j, inv in program.inputs[g] if j in local)
+        true = sum(
+            1
+            for j, inv in program.inputs[g]
+            if j not in local and inv != isinstance(program.blocks[j], Breaker)
+        )
+        inputs.append(kept)
+        ks.append(block.k - true if isinstance(block, Gate) else 1 - min(true, 1))
+    return tuple(inputs), tuple(ks)
+
+
+def _asks(
+    program: Program, blocks: list[Sense | Gate | Timer | Latch | Breaker]
+) -> tuple[
+    tuple[tuple[int, ...], ...],
+    tuple[bool | None, ...],
+    tuple[tuple[int, ...], ...],
+    tuple[tuple[int, ...], ...],
+]:
+    number: dict[Ask, int] = {}
+    asks: list[tuple[int, ...]] = []
+    certain: list[bool | None] = []
+
+    def numbered(group: tuple[Ask, ...]) -> tuple[int, ...]:
+        for ask in group:
+            if ask not in number:
+                number[ask] = len(asks)
+                questions, verdict = resolve(program, ask)
+                asks.append(questions)
+                certain.append(verdict)
+        return tuple(number[ask] for ask in sorted(group))
+
+    unless = tuple(numbered(b.unless) if isinstance(b, Gate) else () for b in blocks)
+    given = tuple(numbered(b.given) if isinstance(b, Gate) else () for b in blocks)
+    return tuple(asks), tuple(certain), unless, given
+
+
+def resolve(program: Program, ask: Ask) -> tuple[tuple[int, ...], bool | None]:
+    """Questions that settle an ask, or its certain verdict."""
+    if ask in program.constant:
+        return (), program.constant[ask]
+    questions = program.asks.get(ask, ())
+    return questions, None if questions else False
+
+
+def _breaker_asks(program: Program, block: object) -> tuple[BreakerAsk, ...]:
+    if not isinstance(block, Breaker) or not block.component:
+        return ()
+    modes = (FailureMode.DOES_NOT_OPEN, FailureMode.OPENS_LATE, FailureMode.DOES_NOT_INTERRUPT)
+    return tuple(BreakerAsk(m, *resolve(program, Ask(block.component, m))) for m in modes)
+
+
+def _rank(contact: Contact | None, section: str | None) -> int:
+    if contact is None:
+        return 0
+    if section is None or section in contact.protects:
+        return int(contact.role)
+    return int(max(contact.role, contact.beyond))
+
+
+def _on(block: object) -> Delay:
+    match block:
+        case Sense():
+            return block.operate
+        case Timer():
+            return block.pick_up
+        case Breaker():
+            return block.interrupting
+        case _:
+            return NOTHING
+
+
+def _off(block: object) -> Delay:
+    match block:
+        case Sense():
+            return block.reset
+        case Timer():
+            return block.drop_out
+        case Breaker():
+            return block.auxiliary
+        case _:
+            return NOTHING
+
+
+def _reach_mask(
+    inputs: tuple[tuple[tuple[int, bool], ...], ...],
+    breakers: tuple[int, ...],
+    observed: tuple[int, ...],
+) -> tuple[int, ...]:
+    """Which breakers and observed outputs each signal may influence (the way stops at a breaker)."""
+    mask = [0] * len(inputs)
+    bit = {b: 1 << n for n, b in enumerate(breakers)}
+    ends = set(breakers)
+    queue: deque[int] = deque()
+    for n, g in enumerate(observed):
+        mask[g] |= 1 << (len(breakers) + n)
+        queue.append(g)
+    queue.extend(breakers)
+    while queue:
+        i = queue.popleft()
+        spreading = bit[i] if i in ends else mask[i]
+        for j, _ in inputs[i]:
+            if mask[j] | spreading != mask[j]:
+                mask[j] |= spreading
+                queue.append(j)
+    return tuple(mask)

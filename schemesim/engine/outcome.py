@@ -1,0 +1,114 @@
+"""What one run leaves behind: openings, clearing, and the log."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import StrEnum
+
+from schemesim.scheme.model import Role
+
+
+class Status(StrEnum):
+    """How a run ended."""
+
+    CLEARED = "cleared"
+    NOT_CLEARED = "not cleared"
+    UNDETERMINED = "undetermined at the horizon"
+    NOT_FED = "not fed before any opening"
+    NO_FAULT = "no fault"
+
+
+@dataclass(frozen=True, slots=True, order=True)
+class Opening:
+    """A breaker (or a generator's own trip) that was committed to open.
+
+    Attributes
+    ----------
+    t_open_us : int
+        When its contacts have interrupted (or should have).
+    breaker : str
+    t_trip_us : int
+        When its coil was energised.
+    role : Role
+        Best role among what energised it.
+    via : str
+        The trip output that energised it.
+    interrupted : bool
+        False for a breaker that opens but does not interrupt.
+    """
+
+    t_open_us: int
+    breaker: str
+    t_trip_us: int
+    role: Role
+    via: str
+    interrupted: bool = True
+
+
+@dataclass(frozen=True, slots=True)
+class Outcome:
+    """Everything observed of a run; equal outcomes are the same to every study.
+
+    Attributes
+    ----------
+    status : Status
+    t_clear_us : int or None
+        First instant at which no closed path joined the fault to a source.
+    openings : tuple of Opening
+        In order of time.
+    operated : tuple of (str, int)
+        Observed trip outputs and the first time of each.
+    at_horizon : bool
+        Something was still pending at the horizon.
+    """
+
+    status: Status
+    t_clear_us: int | None
+    openings: tuple[Opening, ...]
+    operated: tuple[tuple[str, int], ...] = ()
+    at_horizon: bool = False
+
+    @property
+    def tripped(self) -> frozenset[str]:
+        """Names of everything that opened."""
+        return frozenset(o.breaker for o in self.openings)
+
+
+@dataclass(frozen=True, slots=True)
+class Row:
+    """One line of the log.
+
+    ``cause`` is the index of the row that led to this one (-1 for the first).
+    ``margin_us`` is set where a timer was stopped before it ran out: what was left.
+    """
+
+    index: int
+    t_us: int
+    pass_no: int
+    subject: str
+    kind: str
+    what: str
+    cause: int
+    margin_us: int | None = None
+
+
+@dataclass(frozen=True)
+class Run:
+    """A finished run: its outcome, the questions it asked, and its log if one was kept.
+
+    Attributes
+    ----------
+    asked : tuple of (int, bool)
+        Question index and answer in the order asked.
+    probabilities : tuple
+        Probability of a yes to each, given the answers before.
+    final_mask : int
+        Breakers of the case that no longer conduct, as a mask.
+    """
+
+    outcome: Outcome
+    asked: tuple[tuple[int, bool], ...]
+    probabilities: tuple[object, ...]
+    final_mask: int
+    events: int
+    log: tuple[Row, ...] = ()

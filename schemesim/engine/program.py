@@ -1,0 +1,283 @@
+"""The compiled program: names become indices once for a whole scheme.
+
+Order is canonical and never that of declaration: blocks that hold state come first by
+name, then gates by level (so that one sweep in index order settles the logic) and
+name. Questions stand in the order of their names, common causes before members.
+"""
+
+from __future__ import annotations
+
+from collections import deque
+from collections.abc import Mapping
+from dataclasses import dataclass
+from enum import IntEnum
+
+import networkx as nx
+
+from schemesim.errors import reject
+from schemesim.plant.model import Plant
+from schemesim.plant.paths import PathGraph
+from schemesim.plant.zones import Zones, isolation_zones
+from schemesim.scheme.conditions import Always, Current, External, OutOfZone
+from schemesim.scheme.model import (
+    MODES,
+    Ask,
+    Block,
+    Breaker,
+    FailureMode,
+    Gate,
+    Latch,
+    Not,
+    Probability,
+    Scheme,
+    Sense,
+    Timer,
+    inputs_of,
+    signal_of,
+)
+
+
+class Kind(IntEnum):
+    """Kind of a block in the compiled program."""
+
+    SENSE = 0
+    TIMER = 1
+    LATCH = 2
+    BREAKER = 3
+    GATE = 4
+
+
+_KINDS: Mapping[type, Kind] = {
+    Sense: Kind.SENSE,
+    Timer: Kind.TIMER,
+    Latch: Kind.LATCH,
+    Breaker: Kind.BREAKER,
+    Gate: Kind.GATE,
+}
+
+
+@dataclass(frozen=True, slots=True)
+class Question:
+    """One failure mode of one component, or one common cause, answered yes or no in a run.
+
+    ``component`` is empty for a common cause. ``probability`` is that of the mode before
+    anything is known; the engine conditions it on the modes already refused.
+    """
+
+    name: str
+    component: str
+    mode: str
+    probability: Probability
+
+
+@dataclass(frozen=True, eq=False)
+class Program:
+    """A scheme on a plant, compiled.
+
+    Attributes
+    ----------
+    plant, scheme, zones, paths
+        What it was compiled from.
+    blocks : tuple of Block
+        In canonical order; the position is the index of the block and of its signal.
+    inputs : tuple of tuples of (index, inverted)
+    consumers : tuple of tuples of int
+    order : tuple of int
+        Order in which a gate's questions are asked: nearest the breaker first, then by
+        role, then by name.
+    questions : tuple of Question
+    siblings : tuple of tuple of int
+        For each question those of the other modes of its component, which exclude it.
+    asks : mapping of Ask to the questions whose yes brings it (common causes first)
+    constant : mapping of Ask to its certain verdict (no question needed)
+    free : frozenset of int
+        Blocks that may become true wherever the fault is (current detectors and the like).
+    """
+
+    plant: Plant
+    scheme: Scheme
+    zones: Zones
+    paths: PathGraph
+    blocks: tuple[Block, ...]
+    index: Mapping[str, int]
+    kind: tuple[Kind, ...]
+    inputs: tuple[tuple[tuple[int, bool], ...], ...]
+    consumers: tuple[tuple[int, ...], ...]
+    order: tuple[int, ...]
+    questions: tuple[Question, ...]
+    siblings: tuple[tuple[int, ...], ...]
+    asks: Mapping[Ask, tuple[int, ...]]
+    constant: Mapping[Ask, bool]
+    free: frozenset[int]
+
+
+def compile_scheme(plant: Plant, scheme: Scheme) -> Program:
+    """Compile a scheme on a plant.
+
+    Raises
+    ------
+    InputError
+        If gates form a loop (it is named), a breaker block is neither a breaker nor a
+        source with a trip, or the same device is operated by two blocks.
+    """
+    operable = set(plant.breakers) | set(plant.tripping_sources)
+    for b in scheme.blocks:
+        if isinstance(b, Breaker) and b.name not in operable:
+            raise reject(f"breaker block {b.name!r}", b.name, "a breaker, or a source with a trip, of the plant")
+    level = _gate_levels(scheme)
+    blocks = tuple(
+        sorted(scheme.blocks, key=lambda b: (isinstance(b, Gate), level.get(b.name, 0), b.name))
+    )
+    index = {b.name: i for i, b in enumerate(blocks)}
+    inputs = tuple(
+        tuple((index[signal_of(item)], isinstance(item, Not)) for item in inputs_of(b)) for b in blocks
+    )
+    consumers: list[set[int]] = [set() for _ in blocks]
+    for i, items in enumerate(inputs):
+        for j, _ in items:
+            consumers[j].add(i)
+    questions, asks, constant = _questions(scheme)
+    kind = tuple(_KINDS[type(b)] for b in blocks)
+    return Program(
+        plant=plant,
+        scheme=scheme,
+        zones=isolation_zones(plant),
+        paths=PathGraph(plant),
+        blocks=blocks,
+        index=index,
+        kind=kind,
+        inputs=inputs,
+        consumers=tuple(tuple(sorted(c)) for c in consumers),
+        order=_asking_order(blocks, kind, inputs),
+        questions=questions,
+        siblings=_siblings(questions),
+        asks=asks,
+        constant=constant,
+        free=_free(blocks, inputs, consumers),
+    )
+
+
+def _gate_levels(scheme: Scheme) -> dict[str, int]:
+    graph: nx.DiGraph[str] = nx.DiGraph()
+    for b in scheme.blocks:
+        if isinstance(b, Gate):
+            graph.add_node(b.name)
+            for item in b.inputs:
+                if isinstance(scheme.block[signal_of(item)], Gate):
+                    graph.add_edge(signal_of(item), b.name)
+    if not nx.is_directed_acyclic_graph(graph):
+        loop = " -> ".join(str(edge[0]) for edge in nx.find_cycle(graph))
+        raise reject("gates", f"the loop {loop}", "no loop of gates alone: every loop holds a timer, latch or breaker")
+    level: dict[str, int] = {}
+    for name in nx.topological_sort(graph):
+        level[name] = 1 + max((level[p] for p in graph.predecessors(name)), default=0)
+    return level
+
+
+def _questions(
+    scheme: Scheme,
+) -> tuple[tuple[Question, ...], dict[Ask, tuple[int, ...]], dict[Ask, bool]]:
+    """Questions, the asks they settle, and the asks that are certain either way."""
+    questions: list[Question] = []
+    asks: dict[Ask, list[int]] = {}
+    constant: dict[Ask, bool] = {}
+    for cause in scheme.common_causes:
+        if cause.probability > 0:
+            for ask in cause.members:
+                asks.setdefault(ask, []).append(len(questions))
+            questions.append(Question(f"common cause {cause.name}", "", cause.name, cause.probability))
+    for c in scheme.components:
+        if c.name in scheme.out_of_service:
+            for mode in FailureMode:
+                ask = Ask(c.name, mode)
+                asks.pop(ask, None)
+                constant[ask] = mode is MODES[c.kind][0]
+            continue
+        for mode, p in sorted(c.modes):
+            ask = Ask(c.name, mode)
+            if p >= 1:
+                constant[ask] = True
+            elif p > 0:
+                asks.setdefault(ask, []).append(len(questions))
+                questions.append(Question(f"{c.name}: {mode}", c.name, str(mode), p))
+    return tuple(questions), {a: tuple(q) for a, q in asks.items()}, constant
+
+
+def _siblings(questions: tuple[Question, ...]) -> tuple[tuple[int, ...], ...]:
+    of: dict[str, list[int]] = {}
+    for i, q in enumerate(questions):
+        if q.component:
+            of.setdefault(q.component, []).append(i)
+    return tuple(tuple(j for j in of.get(q.component, ()) if j != i) for i, q in enumerate(questions))
+
+
+def _asking_order(
+    blocks: tuple[Block, ...], kind: tuple[Kind, ...], inputs: tuple[tuple[tuple[int, bool], ...], ...]
+) -> tuple[int, ...]:
+    """Rank of each block among those that may ask at the same time."""
+    far = len(blocks)
+    distance = [far] * far
+    queue = deque(i for i in range(far) if kind[i] is Kind.BREAKER)
+    for i in queue:
+        distance[i] = 0
+    while queue:
+        i = queue.popleft()
+        for j, _ in inputs[i]:
+            if distance[j] == far:
+                distance[j] = distance[i] + 1
+                queue.append(j)
+
+    def key(i: int) -> tuple[int, int, str]:
+        b = blocks[i]
+        role = int(b.contact.role) if isinstance(b, Gate) and b.contact else 0
+        return (distance[i], role, b.name)
+
+    order = [0] * far
+    for rank, i in enumerate(sorted(range(far), key=key)):
+        order[i] = rank
+    return tuple(order)
+
+
+def _free(
+    blocks: tuple[Block, ...],
+    inputs: tuple[tuple[tuple[int, bool], ...], ...],
+    consumers: list[set[int]],
+) -> frozenset[int]:
+    """Blocks that may become true through conditions that hold anywhere."""
+    anywhere = (Current, OutOfZone, Always, External)
+    start = [i for i, b in enumerate(blocks) if isinstance(b, Sense) and isinstance(b.condition, anywhere)]
+    return frozenset(spread(blocks, inputs, consumers, start, frozenset()))
+
+
+def spread(
+    blocks: tuple[Block, ...],
+    inputs: tuple[tuple[tuple[int, bool], ...], ...],
+    consumers: list[set[int]] | tuple[tuple[int, ...], ...],
+    start: list[int],
+    free: frozenset[int],
+) -> set[int]:
+    """Blocks that may become true once those in ``start`` may, those in ``free`` standing by.
+
+    An inverted input and the 52a contact of a breaker may always be true.
+    """
+    on = set(start)
+    queue = deque(start)
+    while queue:
+        for c in consumers[queue.popleft()]:
+            if c in on:
+                continue
+            block = blocks[c]
+            if isinstance(block, Gate):
+                possible = sum(
+                    1 for j, inv in inputs[c] if inv or j in on or j in free or isinstance(blocks[j], Breaker)
+                )
+                ok = possible >= block.k
+            elif isinstance(block, Latch):
+                j, inv = inputs[c][0]
+                ok = inv or j in on or j in free
+            else:
+                ok = any(inv or j in on or j in free for j, inv in inputs[c])
+            if ok:
+                on.add(c)
+                queue.append(c)
+    return on

@@ -1,0 +1,91 @@
+"""The log of a run: time, component, what happened, and the row that led to it."""
+
+from __future__ import annotations
+
+from schemesim.engine.case import Case
+from schemesim.engine.outcome import Row
+from schemesim.engine.program import Kind
+from schemesim.engine.rules import TRUE
+
+
+class Recorder:
+    """Keeps rows when asked to; otherwise costs next to nothing."""
+
+    def __init__(self, case: Case, keep: bool) -> None:
+        self.case, self.keep = case, keep
+        self.rows: list[Row] = []
+        self.topology_row = -1
+        self._now = 0
+        self._pass = 0
+
+    def at(self, now: int, pass_no: int) -> None:
+        """Set the instant and the pass of the rows to come."""
+        self._now, self._pass = now, pass_no
+
+    def begin(self) -> None:
+        """The initiating event."""
+        self.topology_row = self.row(str(self.case.event), "fault", "begins", -1)
+
+    def row(self, subject: str, kind: str, what: str, cause: int, margin_us: int | None = None) -> int:
+        """Add a row; returns its index, or -1 when no log is kept."""
+        if not self.keep:
+            return -1
+        self.rows.append(Row(len(self.rows), self._now, self._pass, subject, kind, what, cause, margin_us))
+        return len(self.rows) - 1
+
+    def changed(self, block: int, value: int, cause: int) -> int:
+        """A block that holds state changed its output."""
+        if not self.keep:
+            return -1
+        kind = self.case.kind[block]
+        up, down = _WORDS[kind]
+        return self.row(self.case.names[block], kind.name.lower(), up if value == TRUE else down, cause)
+
+    def gate(self, g: int, value: int, values: list[int], rows: list[int]) -> int:
+        """A gate became true, or ceased to be."""
+        if not self.keep:
+            return -1
+        inputs = self.case.inputs[g]
+        if value == TRUE:
+            cause = max((rows[j] for j, inv in inputs if (values[j] == TRUE) != inv), default=-1)
+        else:
+            cause = max((rows[j] for j, _ in inputs), default=-1)
+        contact = self.case.contacts[g]
+        kind = "gate" if contact is None else "trip output"
+        return self.row(self.case.names[g], kind, "operates" if value == TRUE else "resets", cause)
+
+    def started(self, block: int, rising: bool, delay_us: int, cause: int) -> int:
+        """A delay began to run."""
+        if not self.keep or delay_us == 0:
+            return cause
+        kind = self.case.kind[block]
+        what = "starts" if rising else "starts to reset"
+        return self.row(self.case.names[block], kind.name.lower(), what, cause)
+
+    def stopped(self, block: int, rising: bool, left_us: int, cause: int) -> None:
+        """A delay was stopped before it ran out: the margin is what was left of it."""
+        if self.keep:
+            kind = self.case.kind[block]
+            what = "stopped before operating" if rising else "held"
+            self.row(self.case.names[block], kind.name.lower(), what, cause, left_us)
+
+    def answer(self, question: str, yes: bool, cause: int) -> None:
+        """A question was answered."""
+        if self.keep:
+            self.row(question, "question", "yes" if yes else "no", cause)
+
+    def finish(self, at_horizon: bool, horizon_us: int) -> tuple[Row, ...]:
+        """The whole log."""
+        if at_horizon:
+            self._now = horizon_us
+            self.row("run", "run", "ends at the horizon with something pending", -1)
+        return tuple(self.rows)
+
+
+_WORDS = {
+    Kind.SENSE: ("picks up", "drops out"),
+    Kind.TIMER: ("operates", "resets"),
+    Kind.LATCH: ("seals in", "is reset"),
+    Kind.BREAKER: ("52a closed", "52a open"),
+    Kind.GATE: ("operates", "resets"),
+}
