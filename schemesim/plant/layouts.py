@@ -252,7 +252,7 @@ def _selected(
         if name not in chosen:
             tip = nearest(name, chosen)
             errors.add(f"selection of station {station!r}", name, "the name of a bay", tip=tip)
-        elif isinstance(bus, bool) or bus not in range(1, buses + 1):
+        elif type(bus) is not int or bus not in range(1, buses + 1):
             errors.add(f"bus of bay {name!r} of station {station!r}", bus, f"a number from 1 to {buses}")
         else:
             chosen[name] = bus

@@ -62,10 +62,10 @@ def protected_object(plant: Plant, element: str) -> ProtectedObject:
     -------
     ProtectedObject
         Terminals in the order of their names. A bus with several sections joined by
-        closed switches is one object, named by any of its sections.
+        closed switches is one object, named by any of its sections; a breaker with both its
+        sides inside bounds nothing, and its CTs are no terminals.
     """
-    terminals: set[Terminal] = set()
-    blind: list[str] = []
+    border: list[tuple[Device, str]] = []
     queue, seen = deque([element]), {element}
     while queue:
         here = queue.popleft()
@@ -73,17 +73,25 @@ def protected_object(plant: Plant, element: str) -> ProtectedObject:
             if not d.closed:
                 continue
             there = other_end(d, here)
-            if d.kind is DeviceKind.BREAKER:
-                found = _ct_at(plant, d, there) or _ct_at(plant, d, here)
-                if found is None:
-                    blind.append(d.name)
-                else:
-                    terminals.add(_oriented(found, d, here))
-            elif d.kind is DeviceKind.CT and not _stands_at_breaker(plant, d):
-                terminals.add(Terminal(d.name, here))
+            if d.kind is DeviceKind.BREAKER or (d.kind is DeviceKind.CT and not _stands_at_breaker(plant, d)):
+                border.append((d, here))
             elif there not in seen:
                 seen.add(there)
                 queue.append(there)
+    terminals: set[Terminal] = set()
+    blind: list[str] = []
+    for d, here in border:
+        there = other_end(d, here)
+        if there in seen:  # inside the object: a coupler between buses that a closed switch joins
+            continue
+        if d.kind is DeviceKind.CT:
+            terminals.add(Terminal(d.name, here))
+            continue
+        found = _ct_at(plant, d, there) or _ct_at(plant, d, here)
+        if found is None:
+            blind.append(d.name)
+        else:
+            terminals.add(_oriented(found, d, here))
     ordered = tuple(sorted(terminals))
     stops = {t.ct for t in ordered}.union(blind)
     return ProtectedObject(element, ordered, enclosed(plant, element, stops), tuple(sorted(set(blind))))
