@@ -215,11 +215,22 @@ class Logic:
         waiting: list[int] = []
         for b in self._touched:
             if self._is_live(b):
-                waiting.extend(j for j, _ in self.case.inputs[b] if self.value[j] == UNKNOWN)
+                waiting.extend(j for j in self._read_by(b) if self.value[j] == UNKNOWN)
         waiting.extend(g for g, bit in self._watch.items() if self._live & bit and self.value[g] == UNKNOWN)
         if not waiting:
             return None
         return min(self._open_gates(waiting), key=self.case.order.__getitem__)
+
+    def _read_by(self, block: int) -> list[int]:
+        """The inputs a sink depends on now: a latch at rest reads no reset until it is being set."""
+        inputs = self.case.inputs[block]
+        if self.case.kind[block] is Kind.LATCH and len(inputs) > 1:
+            if self.value[block] == TRUE:
+                return [inputs[1][0]]
+            if self.input_state(block, 1):
+                return []
+            return [inputs[0][0]] if self.input_state(block, 0) is not True else [inputs[1][0]]
+        return [j for j, _ in inputs]
 
     def _is_live(self, block: int) -> bool:
         if self.case.kind[block] is Kind.BREAKER:

@@ -115,7 +115,7 @@ class Equipment:
     def vt(self, builder: PlantBuilder, name: str, section: str) -> None:
         """Add a VT with this station's windings, if it has VTs."""
         if self.windings:
-            builder.add(VoltageTransformer(name=name, section=section, windings=self.windings))
+            builder.add(VoltageTransformer(name=name, section=section, station=self.station, windings=self.windings))
 
     def bus(self, builder: PlantBuilder, name: str) -> str:
         """Add a busbar and its VT; its name is returned."""

@@ -118,10 +118,11 @@ class Source:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class VoltageTransformer:
-    """A VT on a section, with named windings."""
+    """A VT on a section, with named windings; ``station`` tells the ends of a line apart."""
 
     name: str
     section: str
+    station: str = ""
     windings: tuple[str, ...] = ("1",)
 
 

@@ -1,0 +1,195 @@
+"""The wiring of a scheme in the making: components, blocks, and what trips which breaker."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+from schemesim.errors import ErrorList
+from schemesim.plant.model import Plant
+from schemesim.plant.zones import Zones, isolation_zones
+from schemesim.scheme.delays import Delay, Fixed
+from schemesim.scheme.failure_data import FailureData
+from schemesim.scheme.model import (
+    Ask,
+    Block,
+    Breaker,
+    CommonCause,
+    Component,
+    ComponentKind,
+    FailureMode,
+    Gate,
+    Input,
+    Scheme,
+)
+
+
+@dataclass(frozen=True, slots=True)
+class Host:
+    """What a function stands on: its relay, that relay's DC supply, its set and station."""
+
+    relay: str
+    dc: str
+    chain: str
+    station: str
+
+    @property
+    def asks(self) -> tuple[Ask, ...]:
+        """Failures that keep any output from leaving (rule R5)."""
+        return (Ask(self.relay, FailureMode.FAILURE_TO_OPERATE), Ask(self.dc, FailureMode.LOST))
+
+
+@dataclass(frozen=True, slots=True)
+class BreakerTimes:
+    """Times of a breaker."""
+
+    interrupting: Delay = Fixed(50_000)
+    auxiliary: Delay = Fixed(5_000)
+    late_by: Delay = Fixed(100_000)
+
+
+class SchemeBuilder:
+    """Collects a scheme; the same component asked for twice is one component.
+
+    ``trip`` wires a signal to a breaker's coil; ``build`` makes the coil gates
+    (contact AND DC AND coil, rule R6) and the breaker blocks.
+    """
+
+    def __init__(self, plant: Plant, data: FailureData | None = None) -> None:
+        self.plant = plant
+        self.zones: Zones = isolation_zones(plant)
+        self.data = data or FailureData()
+        self.errors = ErrorList()
+        self.components: dict[str, Component] = {}
+        self.blocks: dict[str, Block] = {}
+        self.trips: dict[str, dict[str, dict[str, None]]] = {}
+        self.initiates: dict[str, dict[str, None]] = {}
+        self.coil_dc: dict[tuple[str, str], str] = {}
+        self.breaker_times: dict[str, BreakerTimes] = {}
+        self.relay_groups: dict[str, list[str]] = {}
+        self.intertrips: dict[str, set[str]] = {}
+
+    # --- components -------------------------------------------------------------------
+
+    def component(self, name: str, kind: ComponentKind, station: str = "") -> str:
+        """Have a component with its failure data; returns its name."""
+        if name not in self.components:
+            self.components[name] = self.data.component(name, kind, station)
+        return name
+
+    def has(self, component: str, mode: FailureMode) -> bool:
+        """Whether a component can fail in a mode at all."""
+        return self.components[component].probability(mode) > 0
+
+    def relay(self, name: str, station: str, group: str = "") -> str:
+        """Have a relay; relays of one group share common causes."""
+        if name not in self.components and group:
+            self.relay_groups.setdefault(group, []).append(name)
+        return self.component(name, ComponentKind.RELAY, station)
+
+    def dc(self, station: str, label: str) -> str:
+        """Have a DC domain of a station (rule R14)."""
+        return self.component(f"{station}/DC {label}", ComponentKind.DC, station)
+
+    def host(self, relay: str, station: str, dc: str, chain: str, group: str = "") -> Host:
+        """Have a relay on a DC domain."""
+        return Host(self.relay(relay, station, group), self.dc(station, dc), chain, station)
+
+    def core(self, ct: str, label: str, need: str) -> Ask:
+        """Have a CT core; a core that is not there is noted as a mistake."""
+        device = self.plant.device[ct]
+        if label not in device.cores:
+            self.errors.add(f"{need} at CT {ct!r}", f"core {label!r}", f"one of its cores {list(device.cores)}")
+        name = self.component(f"{ct}/core {label}", ComponentKind.CT_CORE, device.station)
+        return Ask(name, FailureMode.OPEN)
+
+    def winding(self, station: str, element: str, label: str, need: str) -> Ask | None:
+        """Have a VT winding for an element at a station: on the element, else on a bus of the station."""
+        here = [v for v in self.plant.vts if v.station == station]
+        mine = [v for v in here if v.section == element] or here
+        if not mine:
+            self.errors.add(f"{need} at {station!r}", "no voltage transformer", f"a VT on {element!r} or a bus there")
+            return None
+        vt = mine[0]
+        if label not in vt.windings:
+            self.errors.add(f"{need} at VT {vt.name!r}", f"winding {label!r}", f"one of {list(vt.windings)}")
+        return Ask(
+            self.component(f"{vt.name}/winding {label}", ComponentKind.VT_WINDING, station), FailureMode.LOST
+        )
+
+    # --- blocks -----------------------------------------------------------------------
+
+    def add(self, block: Block) -> str:
+        """Add a block; returns its name, which is its signal."""
+        self.blocks[block.name] = block
+        return block.name
+
+    def any_of(self, name: str, signals: list[Input] | tuple[Input, ...]) -> Input:
+        """One signal that is true when any of these is; a single one is taken as it is."""
+        if len(signals) == 1:
+            return signals[0]
+        return self.add(Gate(name=name, inputs=tuple(signals)))
+
+    def trip(self, signal: str, breaker: str, coil: str, coil_dc: str, *, initiates: bool = True) -> None:
+        """Wire a trip to a coil of a breaker; by default it initiates breaker failure too."""
+        self.trips.setdefault(breaker, {}).setdefault(coil, {})[signal] = None
+        self.coil_dc.setdefault((breaker, coil), coil_dc)
+        if initiates:
+            self.initiates.setdefault(breaker, {})[signal] = None
+
+    def build(self, out_of_service: frozenset[str] = frozenset()) -> Scheme:
+        """The frozen scheme.
+
+        Raises
+        ------
+        InputError
+            With every mistake noted while the scheme was put together.
+        """
+        self.errors.raise_if_any()
+        for breaker, coils in sorted(self.trips.items()):
+            self._breaker(breaker, coils)
+        groups = {g: [self.components[n] for n in names] for g, names in self.relay_groups.items()}
+        changed, causes = self.data.share(groups)
+        components = {**self.components, **changed}
+        extra: list[CommonCause] = []
+        for cause in self.data.common_causes:
+            members = tuple(a for a in cause.members if a.component in components)
+            extra.append(replace(cause, members=members))
+        return Scheme(
+            components=tuple(components.values()),
+            blocks=tuple(self.blocks.values()),
+            common_causes=(*causes, *extra),
+            out_of_service=out_of_service,
+            intertrips=tuple((s, frozenset(names)) for s, names in self.intertrips.items()),
+        )
+
+    def _breaker(self, breaker: str, coils: dict[str, dict[str, None]]) -> None:
+        device = self.plant.device.get(breaker)
+        source = self.plant.source.get(breaker)
+        station = device.station if device else source.station if source else ""
+        signals: list[str] = []
+        for coil, trips in sorted(coils.items()):
+            unit = self.component(f"{breaker}/coil {coil}", ComponentKind.COIL, station)
+            supply = self.dc(station, self.coil_dc[(breaker, coil)])
+            signals.append(
+                self.add(
+                    Gate(
+                        name=f"{breaker}/coil {coil} energised",
+                        inputs=tuple(trips),
+                        unless=(
+                            Ask(unit, FailureMode.FAILURE_TO_OPERATE),
+                            Ask(supply, FailureMode.LOST),
+                        ),
+                    )
+                )
+            )
+        times = self.breaker_times.get(breaker, BreakerTimes())
+        self.add(
+            Breaker(
+                name=breaker,
+                coils=tuple(signals),
+                interrupting=times.interrupting,
+                auxiliary=times.auxiliary,
+                component=self.component(breaker, ComponentKind.BREAKER, station),
+                late_by=times.late_by,
+            )
+        )
