@@ -1,0 +1,89 @@
+"""Dress a whole plant with protection by policy, in one call.
+
+For every bus, line, transformer, generator and feeder the CTs that bound it are found
+from the plant, and the functions of its policy are composed on them. What trips what is
+derived from the isolation zones and never declared.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+from schemesim.errors import nearest
+from schemesim.plant.coverage import default_objects
+from schemesim.plant.model import Plant, SectionKind
+from schemesim.scheme.backup import dress_breaker_failure, dress_end_faults, dress_local_backup
+from schemesim.scheme.build import SchemeBuilder
+from schemesim.scheme.elements import Element, dress_line, dress_unit, element_of
+from schemesim.scheme.failure_data import FailureData
+from schemesim.scheme.model import Scheme
+from schemesim.scheme.policy import Policy
+
+
+def dress(
+    plant: Plant,
+    policy: Policy,
+    data: FailureData | None = None,
+    *,
+    exceptions: Mapping[str, Policy] | None = None,
+    out_of_service: frozenset[str] = frozenset(),
+) -> Scheme:
+    """The scheme of a plant under a policy.
+
+    Parameters
+    ----------
+    plant : Plant
+    policy : Policy
+        What every element gets.
+    data : FailureData or None
+        Failure data; orders of magnitude by default.
+    exceptions : mapping of name to Policy, or None
+        Another policy for an element (bus, line, transformer, generator, feeder), or for a
+        breaker's breaker-failure protection.
+    out_of_service : frozenset of str
+        Components out for work.
+
+    Returns
+    -------
+    Scheme
+
+    Raises
+    ------
+    InputError
+        With every mistake: a CT, core or winding that a function needs and that is not
+        there, an exception for something that is not in the plant.
+
+    Examples
+    --------
+    >>> from schemesim.plant.layouts import Bay, feeder, generator, single_bus
+    >>> from schemesim.plant.model import PlantBuilder
+    >>> b = PlantBuilder()
+    >>> generator(b, "G1", station="Alder")
+    >>> feeder(b, "F1", station="Alder", load_mw=10)
+    >>> single_bus(b, "Alder", [Bay("G1", "G1"), Bay("F1", "F1")])
+    >>> scheme = dress(b.build(), Policy())
+    >>> scheme.contacts["Alder/F1/1 50 trip"].function
+    '50'
+    """
+    b = SchemeBuilder(plant, data)
+    special = dict(exceptions or {})
+    objects = default_objects(plant)
+    known = [o.element for o in objects] + list(plant.breakers)
+    for name in sorted(set(special) - set(known)):
+        tip = nearest(name, known)
+        b.errors.add("exception to the policy", name, "the name of an element or a breaker", tip=tip)
+    elements: list[Element] = []
+    for o in objects:
+        element = element_of(b, o, special.get(o.element, policy))
+        if element is not None:
+            elements.append(element)
+    for e in elements:
+        if e.kind is SectionKind.LINE:
+            dress_line(b, e)
+        else:
+            dress_unit(b, e)
+        dress_local_backup(b, e)
+    cts = {t.breaker: t for e in elements for t in e.object.terminals if t.breaker}
+    dress_end_faults(b, elements, {name: special.get(name, policy) for name in plant.breakers})
+    dress_breaker_failure(b, cts, {name: special.get(name, policy) for name in plant.breakers})
+    return b.build(out_of_service)

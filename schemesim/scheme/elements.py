@@ -1,0 +1,428 @@
+"""Main protection of elements: differential units, lines, feeders, and what they trip."""
+
+from __future__ import annotations
+
+from collections import deque
+from dataclasses import dataclass
+
+from schemesim.plant.model import DeviceKind, SectionKind
+from schemesim.plant.terminals import ProtectedObject, Terminal, other_end
+from schemesim.scheme import functions as fn
+from schemesim.scheme.build import Host, SchemeBuilder
+from schemesim.scheme.conditions import Direction, InZone, Reach
+from schemesim.scheme.delays import Delay
+from schemesim.scheme.functions import AT_ONCE, ChannelPath, DistanceNeeds
+from schemesim.scheme.model import (
+    Ask,
+    ComponentKind,
+    Contact,
+    FailureMode,
+    Gate,
+    Input,
+    Role,
+)
+from schemesim.scheme.policy import LineScheme, Policy, ProtectionSet
+
+FUNCTION = {
+    SectionKind.BUS: "87B",
+    SectionKind.TRANSFORMER: "87T",
+    SectionKind.GENERATOR: "87G",
+    SectionKind.FEEDER: "50",
+}
+
+
+@dataclass(frozen=True)
+class Side:
+    """One end of an element: its station, the CTs there and the breakers to trip."""
+
+    station: str
+    terminals: tuple[Terminal, ...]
+    breakers: tuple[str, ...]
+
+
+@dataclass(frozen=True)
+class Element:
+    """An element to protect, with its policy and what follows from the plant."""
+
+    object: ProtectedObject
+    policy: Policy
+    kind: SectionKind
+    sides: tuple[Side, ...]
+    nearby: frozenset[str]
+    targets: tuple[str, ...]
+
+    @property
+    def name(self) -> str:
+        """Name of the element."""
+        return self.object.element
+
+    def contact(self, function: str, role: Role, host: Host, protects: frozenset[str] | None = None) -> Contact:
+        """The mark of a trip output of this element."""
+        return Contact(
+            function, role, self.object.zone if protects is None else protects, Role.REMOTE,
+            relay=host.relay, chain=host.chain, element=self.name, station=host.station,
+        )  # fmt: skip
+
+
+def element_of(b: SchemeBuilder, o: ProtectedObject, policy: Policy) -> Element | None:
+    """The element of a protected object; border breakers without a CT are mistakes."""
+    zone = b.zones.of[o.element]
+    border = b.zones.border[zone]
+    kind = b.plant.section[o.element].kind
+    if not border:
+        return None
+    for name in o.blind:
+        if policy.sets:
+            b.errors.add(f"protection of {o.element!r}", f"no CT at breaker {name!r}", "a CT beside the breaker")
+    if not o.terminals:
+        return None
+    own = tuple(s.name for s in b.plant.sources if s.trips and s.section in b.zones.members[zone])
+    nearby = frozenset().union(*(b.zones.members[z] for name in border for z in b.zones.sides[name]))
+    return Element(
+        object=o,
+        policy=policy,
+        kind=kind,
+        sides=_sides(b, o, zone),
+        nearby=nearby - b.zones.members[zone] - o.zone,
+        targets=tuple(sorted(border)) + own,
+    )
+
+
+def _sides(b: SchemeBuilder, o: ProtectedObject, zone: str) -> tuple[Side, ...]:
+    """Terminals grouped by the end of the element at which they stand."""
+    ends: dict[float, set[str]] = {}
+    for d in b.plant.at_section[o.element]:
+        if d.closed:
+            ends.setdefault(d.a_at if d.a == o.element else d.b_at, set()).add(d.name)
+    sides: list[Side] = []
+    for _, devices in sorted(ends.items()):
+        terminals, breakers = _behind(b, o, devices)
+        if terminals:
+            station = b.plant.device[terminals[0].ct].station
+            mine = tuple(x for x in breakers if x in b.zones.border[zone])
+            sides.append(Side(station, terminals, mine))
+    return tuple(sides)
+
+
+def _behind(b: SchemeBuilder, o: ProtectedObject, devices: set[str]) -> tuple[tuple[Terminal, ...], tuple[str, ...]]:
+    """Terminals and breakers met when leaving an element through some of its devices."""
+    by_ct = {t.ct: t for t in o.terminals}
+    by_breaker = {t.breaker: t for t in o.terminals if t.breaker}
+    found: set[Terminal] = set()
+    breakers: set[str] = set()
+    queue: deque[str] = deque([o.element])
+    seen = {o.element}
+    while queue:
+        here = queue.popleft()
+        for d in b.plant.at_section[here]:
+            if not d.closed or (here == o.element and d.name not in devices):
+                continue
+            if d.kind is DeviceKind.BREAKER:
+                breakers.add(d.name)
+                if d.name in by_breaker:
+                    found.add(by_breaker[d.name])
+                continue
+            if d.name in by_ct and not by_ct[d.name].breaker:
+                found.add(by_ct[d.name])
+            there = other_end(d, here)
+            if there not in seen:
+                seen.add(there)
+                queue.append(there)
+    return tuple(sorted(found)), tuple(sorted(breakers))
+
+
+# --- tripping ---------------------------------------------------------------------------
+
+
+def trip_targets(b: SchemeBuilder, e: Element, signal: str, station: str, coil: str, channel: str) -> None:
+    """Trip every target of an element at a station, and by intertrip those elsewhere with no relay of its own."""
+    stations = {s.station for s in e.sides}
+    coil_dc = e.policy.dc_of_coil(coil)
+    for target in e.targets:
+        where = station_of(b, target)
+        if where == station:
+            b.trip(signal, target, coil_of(b, target, coil), coil_dc)
+        elif e.policy.intertrip and (where not in stations or e.kind is not SectionKind.LINE):
+            receipt = transfer_trip(b, signal, station, where, channel, e.policy)
+            b.trip(receipt, target, coil_of(b, target, coil), coil_dc)
+
+
+def coil_of(b: SchemeBuilder, target: str, coil: str) -> str:
+    """The coil of a target; a source's own trip has one only."""
+    return coil if target in b.plant.device else "1"
+
+
+def station_of(b: SchemeBuilder, target: str) -> str:
+    """Station of a breaker or of a source."""
+    device = b.plant.device.get(target)
+    return device.station if device is not None else b.plant.source[target].station
+
+
+def transfer_trip(
+    b: SchemeBuilder, signal: str, station: str, where: str, channel: str, policy: Policy, dc: str = "1"
+) -> str:
+    """Direct transfer trip: a trip sent over a channel to another station; returns the trip output there."""
+    first, second = sorted((station, where))
+    unit = b.component(f"{first}-{second}/channel {channel}", ComponentKind.CHANNEL, station)
+    path = ChannelPath(
+        unit, b.dc(station, dc), b.dc(where, dc), policy.times.channel, policy.times.channel_late_by
+    )
+    name = f"{signal} to {where}"
+    receipt = fn.received(b, f"{name} received", signal, path)
+    mark = Contact("transfer trip", Role.MAIN, beyond=Role.MAIN, station=where, element=where)
+    return b.add(
+        Gate(name=name, inputs=(receipt,), unless=(Ask(b.dc(where, dc), FailureMode.LOST),), contact=mark)
+    )
+
+
+# --- units: bus, transformer, generator, feeder -------------------------------------------
+
+
+def dress_unit(b: SchemeBuilder, e: Element) -> None:
+    """Main protection of a bus, transformer or generator (differential) or feeder (overcurrent)."""
+    p, function = e.policy, FUNCTION[e.kind]
+    station = e.sides[0].station if e.sides else ""
+    outputs: list[tuple[ProtectionSet, str]] = []
+    for s in p.sets:
+        base = f"{station}/{e.name}/{s.label}"
+        host = b.host(f"{station}/{e.name}/relay {s.label}", station, s.dc, s.label, f"{station}/{e.name}")
+        cores = [(t, b.core(t.ct, s.core, f"{function} set {s.label} of {e.name!r}")) for t in e.object.terminals]
+        if e.kind is SectionKind.FEEDER:
+            times = p.times.overcurrent
+            element = fn.sense(b, f"{base} 50", InZone(e.object.zone, tuple(t.ct for t, _ in cores)), times)
+            unless = tuple(core for _, core in cores)
+            signal: Input = element
+        else:
+            times, unless = p.times.differential, ()
+            signal = fn.differential(b, f"{base} {function}", e.object.zone, cores, e.nearby, host, times)
+        mark = e.contact(function, Role.MAIN, host)
+        outputs.append((s, fn.trip_output(b, f"{base} {function} trip", (signal,), host, mark, times, unless=unless)))
+    through_lockout = p.lockout and e.kind is not SectionKind.FEEDER
+    for signal_out, coil, dc, lockout, channel in _voted(b, e, f"{station}/{e.name}", outputs):
+        out = signal_out
+        if through_lockout:
+            unit = b.component(f"{station}/{e.name}/86 {lockout}", ComponentKind.LOCKOUT, station)
+            name = f"{station}/{e.name}/86 {lockout}"
+            out = fn.lockout(b, name, out, unit, b.dc(station, dc), p.times.lockout)
+        trip_targets(b, e, out, station, coil, channel)
+    if p.remote_backup and e.kind in (SectionKind.TRANSFORMER, SectionKind.GENERATOR) and p.sets:
+        _timed_backup(b, e, station)
+
+
+def _voted(
+    b: SchemeBuilder, e: Element, base: str, outputs: list[tuple[ProtectionSet, str]]
+) -> list[tuple[str, str, str, str, str]]:
+    """Trips to wire: (signal, coil, DC, lockout, channel); sets on one lockout and coil share the wire."""
+    if e.policy.votes > 1:
+        voted = fn.vote(b, f"{base}/{e.policy.votes}oo{len(outputs)}", [o for _, o in outputs], e.policy.votes)
+        coils = sorted({s.coil for s, _ in outputs})
+        return [(voted, c, *_of_coil(outputs, c)) for c in coils]
+    wires: dict[tuple[str, str, str, str], list[Input]] = {}
+    for s, out in outputs:
+        wires.setdefault((s.coil, s.dc, s.lockout, s.channel), []).append(out)
+    return [
+        (str(b.any_of(f"{base}/trip coil {key[0]} lockout {key[2]} dc {key[1]} channel {key[3]}", outs)), *key)
+        for key, outs in sorted(wires.items())
+    ]
+
+
+def _of_coil(outputs: list[tuple[ProtectionSet, str]], coil: str) -> tuple[str, str, str]:
+    s = next(s for s, _ in outputs if s.coil == coil)
+    return s.dc, s.lockout, s.channel
+
+
+def _timed_backup(b: SchemeBuilder, e: Element, station: str) -> None:
+    """Timed overcurrent of transformers (through them) and generators (out of them) for the buses beyond."""
+    p = e.policy
+    s = p.sets[0]
+    host = b.host(f"{station}/{e.name}/relay timed", station, s.dc, "timed")
+    length = b.plant.section[e.name].length
+    sides = e.sides
+    for n, side in enumerate(sides):
+        base = f"{station}/{e.name}/timed {n + 1} 51"
+        unless = tuple(b.core(t.ct, s.core, f"51 of {e.name!r}") for t in side.terminals)
+        direction = Direction.REVERSE if e.kind is SectionKind.GENERATOR else Direction.FORWARD
+        element = fn.sense(b, base, Reach(side.terminals, length, direction), p.times.overcurrent)
+        waited = fn.delayed(b, f"{base} timer", element, p.reaches.transformer_backup_delay)
+        mark = e.contact("51", Role.LOCAL, host)
+        out = fn.trip_output(b, f"{base} trip", (waited,), host, mark, p.times.overcurrent, unless=unless)
+        trip_targets(b, e, out, station, s.coil, s.channel)
+
+
+# --- lines --------------------------------------------------------------------------------
+
+
+@dataclass(frozen=True)
+class _LineEnd:
+    """One set at one end of a line, in the making."""
+
+    side: Side
+    host: Host
+    needs: DistanceNeeds
+    base: str
+
+
+def dress_line(b: SchemeBuilder, e: Element) -> None:
+    """Main protection of a line: stepped distance at each end, and the scheme of each set across them."""
+    p = e.policy
+    outputs: dict[tuple[int, str], list[str]] = {}
+    for s in p.sets:
+        ends = [_line_end(b, e, s, side) for side in e.sides]
+        zone_2: list[Input] = []
+        zone_1: list[Input] = []
+        for n, end in enumerate(ends):
+            out = outputs.setdefault((n, s.label), [])
+            one = _zone(b, e, end, "21-1", p.reaches.zone_1, p.reaches.over_reach)
+            two = _zone(b, e, end, "21-2", p.reaches.zone_2, p.reaches.over_reach)
+            zone_1.append(one)
+            zone_2.append(two)
+            out.append(_zone_trip(b, e, end, "21-1", one, AT_ONCE, Role.MAIN))
+            out.append(_zone_trip(b, e, end, "21-2", two, p.reaches.zone_2_delay, Role.MAIN_TIMED))
+            if p.remote_backup:
+                three = _zone(b, e, end, "21-3", p.reaches.zone_3, 1.0)
+                out.append(_zone_trip(b, e, end, "21-3", three, p.reaches.zone_3_delay, Role.MAIN_TIMED))
+        for n, trip in enumerate(_line_scheme(b, e, s, ends, zone_1, zone_2)):
+            if trip:
+                outputs[(n, s.label)].append(trip)
+    for n, side in enumerate(e.sides):
+        _wire_end(b, e, side, n, outputs)
+
+
+def _wire_end(
+    b: SchemeBuilder, e: Element, side: Side, n: int, outputs: dict[tuple[int, str], list[str]]
+) -> None:
+    p = e.policy
+    base = f"{side.station}/{e.name}"
+    if p.votes > 1:
+        merged = [str(b.any_of(f"{base}/{s.label} trip", list(outputs[(n, s.label)]))) for s in p.sets]
+        voted = fn.vote(b, f"{base}/{p.votes}oo{len(merged)}", merged, p.votes)
+        wires = [(voted, s) for s in p.sets]
+    else:
+        wires = [(out, s) for s in p.sets for out in outputs[(n, s.label)]]
+    for signal, s in wires:
+        for breaker in side.breakers:
+            b.trip(signal, breaker, s.coil, p.dc_of_coil(s.coil))
+        near = [t for t in e.targets if t not in b.plant.device and station_of(b, t) == side.station]
+        for source in near:
+            b.trip(signal, source, "1", p.dc_of_coil(s.coil))
+        elsewhere = {x for other in e.sides for x in other.breakers}
+        for target in e.targets:
+            if target in b.plant.device and target not in elsewhere and p.intertrip:
+                where = station_of(b, target)
+                if where == side.station:
+                    b.trip(signal, target, s.coil, p.dc_of_coil(s.coil))
+                else:
+                    receipt = transfer_trip(b, signal, side.station, where, s.channel, p)
+                    b.trip(receipt, target, s.coil, p.dc_of_coil(s.coil))
+
+
+def _line_end(b: SchemeBuilder, e: Element, s: ProtectionSet, side: Side) -> _LineEnd:
+    group = f"{side.station}/{e.name}"
+    host = b.host(f"{group}/relay {s.label}", side.station, s.dc, s.label, group)
+    what = f"distance set {s.label} of {e.name!r}"
+    cores = tuple(b.core(t.ct, s.core, what) for t in side.terminals)
+    winding = b.winding(side.station, e.name, s.winding, what)
+    needs = DistanceNeeds(side.terminals, cores, winding, e.policy.vt_supervision)
+    return _LineEnd(side, host, needs, f"{group}/{s.label}")
+
+
+def _zone(b: SchemeBuilder, e: Element, end: _LineEnd, label: str, share: float, over: float) -> Input:
+    length = b.plant.section[e.name].length
+    times = e.policy.times.distance
+    return fn.distance_zone(
+        b, f"{end.base} {label}", share * length, end.needs, end.host, times, over_reach=over
+    )
+
+
+def _zone_trip(
+    b: SchemeBuilder, e: Element, end: _LineEnd, label: str, element: Input, delay: Delay, role: Role
+) -> str:
+    waited = fn.delayed(b, f"{end.base} {label} timer", element, delay)
+    mark = e.contact(label, role, end.host)
+    times = e.policy.times.distance
+    return fn.trip_output(b, f"{end.base} {label} trip", (waited,), end.host, mark, times, unless=end.needs.unless)
+
+
+def _line_scheme(
+    b: SchemeBuilder,
+    e: Element,
+    s: ProtectionSet,
+    ends: list[_LineEnd],
+    zone_1: list[Input],
+    zone_2: list[Input],
+) -> list[str]:
+    """The trip output of a set's scheme at each end ('' for none)."""
+    if s.line is LineScheme.DISTANCE or len(ends) < 2:
+        return ["" for _ in ends]
+    if s.line is LineScheme.DIFFERENTIAL:
+        return _line_differential(b, e, s, ends)
+    unit = b.component(f"{e.name}/channel {s.channel}", ComponentKind.CHANNEL)
+    reverse: list[Input] = []
+    length = b.plant.section[e.name].length
+    for end in ends:
+        if s.line is LineScheme.BLOCKING or (e.policy.echo and s.line is LineScheme.PERMISSIVE_OVERREACH):
+            name, reach = f"{end.base} 21 reverse", e.policy.reaches.reverse * length
+            times = e.policy.times.distance
+            reverse.append(fn.distance_zone(b, name, reach, end.needs, end.host, times, direction=Direction.REVERSE))
+    what = {LineScheme.PERMISSIVE_UNDERREACH: zone_1, LineScheme.BLOCKING: reverse}.get(s.line, zone_2)
+    sends: list[Input] = []
+    for end, element in zip(ends, what, strict=True):
+        asks = (*end.host.asks, *end.needs.unless)
+        sends.append(b.add(Gate(name=f"{end.base} 85 send", inputs=(element,), unless=asks)))
+    receipts: list[list[str]] = []
+    for n, here in enumerate(ends):
+        got = []
+        for m, there in enumerate(ends):
+            if m != n:
+                path = ChannelPath(
+                    unit, there.host.dc, here.host.dc, e.policy.times.channel,
+                    e.policy.times.channel_late_by, _signal(zone_2[n]),
+                )  # fmt: skip
+                sent = [sends[m]]
+                if e.policy.echo and s.line is LineScheme.PERMISSIVE_OVERREACH:
+                    sent.append(f"{there.base} 85 echo")
+                name = f"{here.base} 85 from {there.side.station}"
+                got.append(fn.received(b, name, b.any_of(f"{name} sent by", sent), path))
+        receipts.append(got)
+    trips: list[str] = []
+    for n, end in enumerate(ends):
+        if e.policy.echo and s.line is LineScheme.PERMISSIVE_OVERREACH:
+            receipt = str(b.any_of(f"{end.base} 85 receipt", list(receipts[n])))
+            fn.echo(b, f"{end.base} 85 echo wanted", receipt, zone_2[n], reverse[n], e.policy.times.echo_pulse)
+            b.add(Gate(name=f"{end.base} 85 echo", inputs=(f"{end.base} 85 echo wanted",), unless=end.host.asks))
+        name = f"{end.base} 85"
+        if s.line is LineScheme.BLOCKING:
+            block = str(b.any_of(f"{name} block", list(receipts[n])))
+            signal = fn.blocking(b, name, zone_2[n], block, e.policy.times.coordinating)
+        else:
+            inputs = (zone_2[n], *receipts[n])
+            signal = b.add(Gate(name=name, inputs=inputs, k=len(inputs)))
+        mark = e.contact("85-21", Role.MAIN, end.host)
+        times = e.policy.times.distance
+        trips.append(
+            fn.trip_output(b, f"{end.base} 85 trip", (signal,), end.host, mark, times, unless=end.needs.unless)
+        )
+    return trips
+
+
+def _line_differential(b: SchemeBuilder, e: Element, s: ProtectionSet, ends: list[_LineEnd]) -> list[str]:
+    """Line differential over a channel: it stops on loss of the channel or of any end's relay (R16)."""
+    unit = b.component(f"{e.name}/channel {s.channel}", ComponentKind.CHANNEL)
+    trips: list[str] = []
+    for end in ends:
+        what = f"87L set {s.label} of {e.name!r}"
+        cores = [(t, b.core(t.ct, s.core, what)) for other in ends for t in other.side.terminals]
+        name = f"{end.base} 87L"
+        times = e.policy.times.differential
+        element = fn.differential(b, name, e.object.zone, cores, e.nearby, end.host, times)
+        unless = [Ask(unit, FailureMode.LOST), Ask(unit, FailureMode.LATE)]
+        for other in ends:
+            if other is not end:
+                unless += other.host.asks
+        mark = e.contact("87L", Role.MAIN, end.host)
+        trips.append(fn.trip_output(b, f"{name} trip", (element,), end.host, mark, times, unless=unless))
+    return trips
+
+
+def _signal(item: Input) -> str:
+    return item if isinstance(item, str) else item.signal
