@@ -98,6 +98,7 @@ class Case:
     observed: tuple[int, ...]
     reach_mask: tuple[int, ...]
     index: Mapping[str, int]
+    at_rest: tuple[tuple[int, ...], frozenset[int]] | None = None
     _topologies: dict[int, Topology] = field(default_factory=dict)
 
     @property
@@ -158,8 +159,9 @@ def bind(
     start = sensing.candidates(program, event, dispatch)
     on = spread(program.blocks, program.inputs, program.consumers, start, program.free)
     possible = on | program.free
-    openable = sorted(i for i in possible if program.kind[i] is Kind.BREAKER)
-    watched = sorted(program.index[name] for name in observe if program.index[name] in on)
+    shut = _shut(program, dispatch)
+    openable = sorted(i for i in possible if i in shut)
+    watched = sorted(program.index[name] for name in observe if program.index[name] in possible)
     wanted = _backward(program, possible, openable + watched)
     chosen = sorted(wanted)
     local = {g: n for n, g in enumerate(chosen)}
@@ -167,7 +169,7 @@ def bind(
     senses = tuple(n for n, b in enumerate(blocks) if isinstance(b, Sense))
     conditions = [b.condition for b in blocks if isinstance(b, Sense)]
     sensed = sensing.bind(program, event, dispatch, conditions, [program.blocks[g].name for g in openable])
-    inputs, ks = _inputs(program, chosen, local)
+    inputs, ks = _inputs(program, chosen, local, shut)
     consumers: list[set[int]] = [set() for _ in chosen]
     for n, items in enumerate(inputs):
         for j, _ in items:
@@ -229,33 +231,44 @@ def bind(
     )
 
 
+def _shut(program: Program, dispatch: str | None) -> frozenset[int]:
+    """Breaker blocks that are closed before the event, and sources with a trip that are in service."""
+    running = {s.name for s in program.plant.sources_in(dispatch)}
+    running.update(d.name for d in program.plant.devices if d.closed)
+    return frozenset(i for i, b in enumerate(program.blocks) if isinstance(b, Breaker) and b.name in running)
+
+
 def _backward(program: Program, possible: Set[int], goals: list[int]) -> set[int]:
     wanted, queue = set(goals), deque(goals)
     while queue:
         for j, _ in program.inputs[queue.popleft()]:
-            if j in possible and j not in wanted:
+            if j in possible and j not in wanted and program.kind[j] is not Kind.BREAKER:
                 wanted.add(j)
                 queue.append(j)
     return wanted
 
 
 def _inputs(
-    program: Program, chosen: list[int], local: dict[int, int]
+    program: Program, chosen: list[int], local: dict[int, int], shut: Set[int]
 ) -> tuple[tuple[tuple[tuple[int, bool], ...], ...], tuple[int, ...]]:
     """Inputs that can change, and what gates still need; what cannot change is folded in.
 
     A signal outside the case is false for good, but for the 52a of a breaker that stays closed.
+    A latch keeps the places of its inputs: where one is true for good it reads the latch's
+    own output inverted, which sets it whenever it is reset, or resets it for good.
     """
     inputs: list[tuple[tuple[int, bool], ...]] = []
     ks: list[int] = []
     for g in chosen:
         block = program.blocks[g]
         kept = tuple((local[j], inv) for j, inv in program.inputs[g] if j in local)
-        true = sum(
-            1
-            for j, inv in program.inputs[g]
-            if j not in local and inv != isinstance(program.blocks[j], Breaker)
-        )
+        true = sum(1 for j, inv in program.inputs[g] if j not in local and inv != (j in shut))
+        if isinstance(block, Latch):
+            own = local[g]
+            places = [
+                (local[j], inv) if j in local else (own, inv != (j in shut)) for j, inv in program.inputs[g]
+            ]
+            kept = tuple(p for n, p in enumerate(places) if n == 0 or p != (own, False))
         inputs.append(kept)
         ks.append(block.k - true if isinstance(block, Gate) else 1 - min(true, 1))
     return tuple(inputs), tuple(ks)
@@ -298,7 +311,8 @@ def resolve(program: Program, ask: Ask) -> tuple[tuple[int, ...], bool | None]:
 def _breaker_asks(program: Program, block: object) -> tuple[BreakerAsk, ...]:
     if not isinstance(block, Breaker) or not block.component:
         return ()
-    modes = (FailureMode.DOES_NOT_OPEN, FailureMode.OPENS_LATE, FailureMode.DOES_NOT_INTERRUPT)
+    late = (FailureMode.OPENS_LATE,) if block.late_by is not None else ()
+    modes = (FailureMode.DOES_NOT_OPEN, *late, FailureMode.DOES_NOT_INTERRUPT)
     return tuple(BreakerAsk(m, *resolve(program, Ask(block.component, m))) for m in modes)
 
 

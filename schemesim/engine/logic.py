@@ -17,6 +17,9 @@ from schemesim.engine.record import Recorder
 from schemesim.engine.rules import FALSE, TRUE, UNKNOWN
 from schemesim.scheme.model import FailureMode, Probability, Role
 
+WANTS_ANSWER = -1
+"""Stands for the role of a gate that is unknown for want of an answer only."""
+
 Commitment = tuple[int, Role, str, int]
 """Breaker block, best role, the trip output that did it, and the log row of its coil."""
 
@@ -43,7 +46,8 @@ class Logic:
         self._touched: set[int] = set()
         self._dirty: list[int] = []
         self._queued = [False] * n
-        self._quiesce()
+        self._open: set[int] = set()
+        self._rest()
 
     # --- signals ------------------------------------------------------------------------
 
@@ -102,14 +106,23 @@ class Logic:
                 self._live &= ~bit
         return commitments
 
-    def _quiesce(self) -> None:
-        """The state before the event: breakers closed, nothing sensed, timers at rest."""
+    def _rest(self) -> None:
+        """Take the state before the event: breakers closed, nothing sensed, timers at rest."""
+        known = self.case.at_rest
+        if known is None:
+            self._come_to_rest()
+            known = (tuple(self.value), frozenset(self._open))
+            object.__setattr__(self.case, "at_rest", known)
+        self.value = list(known[0])
+        self._open = set(known[1])
+        self._touched.update(i for i, k in enumerate(self.case.kind) if k not in (Kind.GATE, Kind.SENSE))
+
+    def _come_to_rest(self) -> None:
         for b in self.case.breakers:
             self.value[b] = TRUE
         for _ in range(len(self.value) + 1):
-            for i, kind in enumerate(self.case.kind):
-                if kind is Kind.GATE:
-                    self.value[i] = self._evaluate(i)[0]
+            self._dirty = [i for i, kind in enumerate(self.case.kind) if kind is Kind.GATE]
+            self._propagate()
             again = False
             for i, kind in enumerate(self.case.kind):
                 if kind in (Kind.TIMER, Kind.LATCH) and self.value[i] == FALSE:
@@ -119,7 +132,6 @@ class Logic:
                         again = True
             if not again:
                 break
-        self._touched.update(i for i, k in enumerate(self.case.kind) if k not in (Kind.GATE, Kind.SENSE))
 
     def _spread(self, block: int) -> None:
         for c in self.case.consumers[block]:
@@ -137,6 +149,10 @@ class Logic:
             self._queued[g] = False
             new, rank = self._evaluate(g)
             old = value[g]
+            if new == UNKNOWN and rank == WANTS_ANSWER:
+                self._open.add(g)
+            elif g in self._open:
+                self._open.discard(g)
             if new != old:
                 value[g] = new
                 self.rank[g] = rank
@@ -145,7 +161,10 @@ class Logic:
                 self._spread(g)
 
     def _evaluate(self, g: int) -> tuple[int, int]:
-        """Value and role of a gate from its inputs and the answers known."""
+        """Value and role of a gate from its inputs and the answers known.
+
+        The role of an unknown gate is ``WANTS_ANSWER`` where only an answer is missing.
+        """
         case, value, verdict = self.case, self.value, self._verdict
         for a in case.unless[g]:
             if verdict[a] == TRUE:
@@ -162,15 +181,16 @@ class Logic:
         if true + unknown < k:
             return FALSE, 0
         given = case.given[g]
-        verdicts = [verdict[a] for a in given]
-        if given and all(v == FALSE for v in verdicts):
+        verdicts = [verdict[a] for a in given] if given else []
+        if given and TRUE not in verdicts and UNKNOWN not in verdicts:
             return FALSE, 0
         if true < k:
             return UNKNOWN, 0
-        if any(verdict[a] == UNKNOWN for a in case.unless[g]):
-            return UNKNOWN, 0
+        for a in case.unless[g]:
+            if verdict[a] == UNKNOWN:
+                return UNKNOWN, WANTS_ANSWER
         if given and TRUE not in verdicts:
-            return UNKNOWN, 0
+            return UNKNOWN, WANTS_ANSWER
         own = case.rank[g]
         if k <= 0:
             return TRUE, own
@@ -183,12 +203,10 @@ class Logic:
 
     def _ready_breaker(self) -> int | None:
         """The first touched breaker with a coil energised and not yet dealt with."""
-        ready = [
-            b
-            for b in self._touched
-            if self.case.kind[b] is Kind.BREAKER and b not in self.mode_of and self.tripping(b)
-        ]
-        return min(ready, default=None)
+        for b in self.case.breakers:
+            if b in self._touched and b not in self.mode_of and self.tripping(b):
+                return b
+        return None
 
     def _better(self, block: int) -> int | None:
         """A gate still unknown at this instant that would trip the breaker in a better role (ties)."""
@@ -205,21 +223,35 @@ class Logic:
             seen.add(g)
             contact = self.case.contacts[g]
             if contact is not None and self.value[g] == UNKNOWN and self.case.rank[g] < best:
-                found.extend(self._open_gates([g]))
+                found.extend(self._open_behind(g))
             elif contact is None:
                 stack.extend(j for j, inverted in self.case.inputs[g] if not inverted)
         return min(found, key=self.case.order.__getitem__, default=None)
 
     def _next_gate(self) -> int | None:
-        """The gate whose question comes next: one that a live sink waits for."""
-        waiting: list[int] = []
-        for b in self._touched:
-            if self._is_live(b):
-                waiting.extend(j for j in self._read_by(b) if self.value[j] == UNKNOWN)
-        waiting.extend(g for g, bit in self._watch.items() if self._live & bit and self.value[g] == UNKNOWN)
-        if not waiting:
-            return None
-        return min(self._open_gates(waiting), key=self.case.order.__getitem__)
+        """The gate whose question comes next: the first in order that a live sink waits for."""
+        for g in sorted(self._open, key=self.case.order.__getitem__):
+            if self._is_live(g) and self._is_awaited(g):
+                return g
+        return None
+
+    def _is_awaited(self, g: int) -> bool:
+        """Whether a live sink reads this unknown signal, directly or through gates it leaves unknown."""
+        case = self.case
+        seen = {g}
+        stack = [g]
+        while stack:
+            signal = stack.pop()
+            if signal in self._watch and self._live & self._watch[signal]:
+                return True
+            for c in case.consumers[signal]:
+                if case.kind[c] is Kind.GATE:
+                    if self.value[c] == UNKNOWN and c not in self._open and c not in seen:
+                        seen.add(c)
+                        stack.append(c)
+                elif c in self._touched and self._is_live(c) and signal in self._read_by(c):
+                    return True
+        return False
 
     def _read_by(self, block: int) -> list[int]:
         """The inputs a sink depends on now: a latch at rest reads no reset until it is being set."""
@@ -237,28 +269,20 @@ class Logic:
             return bool(self._live & self._bit[block])
         return bool(self._live & self.case.reach_mask[block])
 
-    def _open_gates(self, signals: list[int]) -> list[int]:
-        """Gates that are unknown for want of an answer, behind these unknown signals."""
+    def _open_behind(self, signal: int) -> list[int]:
+        """Gates that are unknown for want of an answer, behind this unknown signal."""
         found: list[int] = []
         seen: set[int] = set()
-        stack = list(signals)
+        stack = [signal]
         while stack:
             g = stack.pop()
             if g in seen:
                 continue
             seen.add(g)
-            true = 0
-            unknown = []
-            for j, inverted in self.case.inputs[g]:
-                v = self.value[j]
-                if v == UNKNOWN:
-                    unknown.append(j)
-                elif (v == TRUE) != inverted:
-                    true += 1
-            if true >= self.case.k[g]:
+            if g in self._open:
                 found.append(g)
             else:
-                stack.extend(unknown)
+                stack.extend(j for j, _ in self.case.inputs[g] if self.value[j] == UNKNOWN)
         return found
 
     def _ask_gate(self, g: int) -> None:

@@ -8,13 +8,13 @@ name. Questions stand in the order of their names, common causes before members.
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Mapping
+from collections.abc import Mapping, Set
 from dataclasses import dataclass
 from enum import IntEnum
 
 import networkx as nx
 
-from schemesim.errors import reject
+from schemesim.errors import ErrorList, reject
 from schemesim.plant.model import Plant
 from schemesim.plant.paths import PathGraph
 from schemesim.plant.zones import Zones, isolation_zones
@@ -118,12 +118,9 @@ def compile_scheme(plant: Plant, scheme: Scheme) -> Program:
     ------
     InputError
         If gates form a loop (it is named), a breaker block is neither a breaker nor a
-        source with a trip, or the same device is operated by two blocks.
+        source with a trip, or a coil is fed by an auxiliary contact with no gate between.
     """
-    operable = set(plant.breakers) | set(plant.tripping_sources)
-    for b in scheme.blocks:
-        if isinstance(b, Breaker) and b.name not in operable:
-            raise reject(f"breaker block {b.name!r}", b.name, "a breaker, or a source with a trip, of the plant")
+    _check_breakers(plant, scheme)
     level = _gate_levels(scheme)
     blocks = tuple(
         sorted(scheme.blocks, key=lambda b: (isinstance(b, Gate), level.get(b.name, 0), b.name))
@@ -155,6 +152,19 @@ def compile_scheme(plant: Plant, scheme: Scheme) -> Program:
         constant=constant,
         free=_free(blocks, inputs, consumers),
     )
+
+
+def _check_breakers(plant: Plant, scheme: Scheme) -> None:
+    errors = ErrorList()
+    operable = set(plant.breakers) | set(plant.tripping_sources)
+    for b in scheme.blocks:
+        if isinstance(b, Breaker):
+            if b.name not in operable:
+                errors.add(f"breaker block {b.name!r}", b.name, "a breaker, or a source with a trip, of the plant")
+            for name in inputs_of(b):
+                if isinstance(scheme.block[signal_of(name)], Breaker):
+                    errors.add(f"coil of breaker {b.name!r}", signal_of(name), "a gate, timer or latch between")
+    errors.raise_if_any()
 
 
 def _gate_levels(scheme: Scheme) -> dict[str, int]:
@@ -243,9 +253,13 @@ def _free(
     inputs: tuple[tuple[tuple[int, bool], ...], ...],
     consumers: list[set[int]],
 ) -> frozenset[int]:
-    """Blocks that may become true through conditions that hold anywhere."""
+    """Blocks that may become true through conditions that hold anywhere, or are true at rest."""
     anywhere = (Current, OutOfZone, Always, External)
-    start = [i for i, b in enumerate(blocks) if isinstance(b, Sense) and isinstance(b.condition, anywhere)]
+    start = [
+        i
+        for i, b in enumerate(blocks)
+        if (isinstance(b.condition, anywhere) if isinstance(b, Sense) else _may(blocks, inputs, i, frozenset()))
+    ]
     return frozenset(spread(blocks, inputs, consumers, start, frozenset()))
 
 
@@ -256,28 +270,32 @@ def spread(
     start: list[int],
     free: frozenset[int],
 ) -> set[int]:
-    """Blocks that may become true once those in ``start`` may, those in ``free`` standing by.
-
-    An inverted input and the 52a contact of a breaker may always be true.
-    """
+    """Blocks that may become true once those in ``start`` may, those in ``free`` standing by."""
     on = set(start)
     queue = deque(start)
     while queue:
         for c in consumers[queue.popleft()]:
-            if c in on:
-                continue
-            block = blocks[c]
-            if isinstance(block, Gate):
-                possible = sum(
-                    1 for j, inv in inputs[c] if inv or j in on or j in free or isinstance(blocks[j], Breaker)
-                )
-                ok = possible >= block.k
-            elif isinstance(block, Latch):
-                j, inv = inputs[c][0]
-                ok = inv or j in on or j in free
-            else:
-                ok = any(inv or j in on or j in free for j, inv in inputs[c])
-            if ok:
+            if c not in on and _may(blocks, inputs, c, on, free):
                 on.add(c)
                 queue.append(c)
     return on
+
+
+def _may(
+    blocks: tuple[Block, ...],
+    inputs: tuple[tuple[tuple[int, bool], ...], ...],
+    i: int,
+    on: Set[int],
+    free: Set[int] = frozenset(),
+) -> bool:
+    """Whether a block may become true (a breaker: be tripped) if those in ``on`` and ``free`` may.
+
+    An inverted input and the 52a contact of a breaker may always be true.
+    """
+    block, items = blocks[i], inputs[i]
+    if isinstance(block, Latch):
+        items = items[:1]
+    elif isinstance(block, Breaker):
+        items = items[: len(block.coils)]
+    possible = sum(1 for j, inv in items if inv or j in on or j in free or isinstance(blocks[j], Breaker))
+    return possible >= (block.k if isinstance(block, Gate) else 1)
