@@ -10,7 +10,10 @@ from __future__ import annotations
 from collections import deque
 from collections.abc import Mapping, Set
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import NamedTuple
+
+import networkx as nx
 
 from schemesim.engine.program import Kind, Program, Question, spread
 from schemesim.engine.sensing import Event, Sensed, Sensing
@@ -98,7 +101,6 @@ class Case:
     observed: tuple[int, ...]
     reach_mask: tuple[int, ...]
     index: Mapping[str, int]
-    at_rest: tuple[tuple[int, ...], frozenset[int]] | None = None
     _topologies: dict[int, Topology] = field(default_factory=dict)
 
     @property
@@ -119,6 +121,31 @@ class Case:
     def opened(self, open_mask: int) -> frozenset[str]:
         """Names of the breakers in a mask."""
         return frozenset(self.names[b] for bit, b in enumerate(self.breakers) if open_mask >> bit & 1)
+
+    def shut(self, breaker: str) -> bool:
+        """Whether a breaker block is closed before the event."""
+        return self.program.index[breaker] in _shut(self.program, self.dispatch)
+
+    @cached_property
+    def resting(self) -> tuple[tuple[int, ...], ...]:
+        """Timers, latches and gates that may be true before the event, causes before effects.
+
+        Blocks that form a loop stand together; all others are false at rest.
+        """
+        may = set(self.breakers)
+        queue = deque(i for i, kind in enumerate(self.kind) if kind in (Kind.GATE, Kind.TIMER, Kind.LATCH))
+        while queue:
+            i = queue.popleft()
+            items = self.inputs[i][:1] if self.kind[i] is Kind.LATCH else self.inputs[i]
+            if i not in may and sum(1 for j, inv in items if inv or j in may) >= self.k[i]:
+                may.add(i)
+                queue.extend(c for c in self.consumers[i] if self.kind[c] is not Kind.BREAKER)
+        graph: nx.DiGraph[int] = nx.DiGraph()
+        graph.add_nodes_from(sorted(may.difference(self.breakers)))
+        graph.add_edges_from((j, i) for i in graph for j, _ in self.inputs[i] if j in graph)
+        groups: nx.DiGraph[int] = nx.condensation(graph)
+        members = {n: tuple(sorted(groups.nodes[n]["members"])) for n in groups}
+        return tuple(members[n] for n in nx.lexicographical_topological_sort(groups, key=lambda n: members[n]))
 
     @property
     def topologies_met(self) -> int:
@@ -265,10 +292,11 @@ def _inputs(
         true = sum(1 for j, inv in program.inputs[g] if j not in local and inv != (j in shut))
         if isinstance(block, Latch):
             own = local[g]
-            places = [
-                (local[j], inv) if j in local else (own, inv != (j in shut)) for j, inv in program.inputs[g]
-            ]
-            kept = tuple(p for n, p in enumerate(places) if n == 0 or p != (own, False))
+            kept = tuple(
+                (local[j], inv) if j in local else (own, True)
+                for n, (j, inv) in enumerate(program.inputs[g])
+                if n == 0 or j in local or inv != (j in shut)
+            )
         inputs.append(kept)
         ks.append(block.k - true if isinstance(block, Gate) else 1 - min(true, 1))
     return tuple(inputs), tuple(ks)

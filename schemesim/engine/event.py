@@ -22,7 +22,7 @@ from schemesim.engine.record import Recorder
 from schemesim.engine.rules import FALSE, MAX_PASSES, TRUE
 from schemesim.engine.sensing import NoFault
 from schemesim.engine.times import DelayTimes
-from schemesim.errors import RunError, reject
+from schemesim.errors import RunError, nearest, reject
 from schemesim.scheme.conditions import External
 from schemesim.scheme.delays import Delay
 from schemesim.scheme.model import Breaker, FailureMode, Role, Sense
@@ -120,9 +120,22 @@ class EventRun:
     # --- what a process of the user's own may use -----------------------------------
 
     def value(self, name: str) -> bool:
-        """Whether a signal is true now (false also for blocks this event cannot reach)."""
+        """Whether a signal is true now.
+
+        A block that this event cannot reach is false, but for the 52a of a closed breaker.
+
+        Raises
+        ------
+        InputError
+            If there is no block of that name.
+        """
         i = self.case.index.get(name)
-        return i is not None and self.logic.value[i] == TRUE
+        if i is not None:
+            return self.logic.value[i] == TRUE
+        block = self.case.program.scheme.block.get(name)
+        if block is None:
+            raise reject("signal", name, "the name of a block", tip=nearest(name, self.case.program.index))
+        return isinstance(block, Breaker) and self.case.shut(name)
 
     def force(self, name: str, state: bool) -> None:
         """Set the condition of a sense block that is declared ``External``.
@@ -149,7 +162,7 @@ class EventRun:
             if when == float("inf"):
                 break
             if when > self.horizon_us:
-                at_horizon = self._pending > 0
+                at_horizon = any(map(self._is_pending, range(len(self._token))))
                 break
             env.step()
             if self._pending == 0 and not self._called and not self._own:
@@ -162,6 +175,11 @@ class EventRun:
             events=self._events,
             log=self.record.finish(at_horizon, self.horizon_us),
         )
+
+    def _is_pending(self, block: int) -> bool:
+        """Something is due that still matters: a breaker that moves, or an output that may trip one."""
+        moving = self._stage.get(block) in ("opening", "closing")
+        return self._token[block] != 0 and (moving or self.logic.matters(block))
 
     def _outcome(self, at_horizon: bool) -> Outcome:
         if isinstance(self.case.event, NoFault):
@@ -235,6 +253,7 @@ class EventRun:
         changed = self._pass == 0 and now == 0
         if changed:
             self.record.begin()
+            self.logic.rest()
         for block in expired:
             changed |= self._expire(block)
         sensed = self._sense(now) if changed or self._forced else ()
@@ -263,6 +282,7 @@ class EventRun:
         if stage == "auxiliary":
             self._stage[block] = "open"
             self.logic.change(block, FALSE, self._start_row[block])
+            self.logic.touch(block)
             return False
         self._stage[block] = "closed"
         self._open_mask &= ~bit
@@ -322,7 +342,7 @@ class EventRun:
             kind = case.kind[block]
             if kind is Kind.TIMER:
                 state = logic.input_state(block, 0)
-                if state is not None:
+                if state is not None and case.inputs[block]:
                     source = case.inputs[block][0][0]
                     self._follow_input(block, state, logic.row[source], logic.rank[source])
             elif kind is Kind.LATCH:

@@ -20,6 +20,8 @@ from schemesim.scheme.model import FailureMode, Probability, Role
 WANTS_ANSWER = -1
 """Stands for the role of a gate that is unknown for want of an answer only."""
 
+_NEVER = len(Role)
+
 Commitment = tuple[int, Role, str, int]
 """Breaker block, best role, the trip output that did it, and the log row of its coil."""
 
@@ -47,7 +49,9 @@ class Logic:
         self._dirty: list[int] = []
         self._queued = [False] * n
         self._open: set[int] = set()
-        self._rest()
+        self._shown = [False] * n
+        for b in case.breakers:
+            self.value[b] = TRUE
 
     # --- signals ------------------------------------------------------------------------
 
@@ -77,10 +81,18 @@ class Logic:
         """Whether a coil of the breaker is energised."""
         return any(self.value[j] == TRUE for j, _ in self._coils(block))
 
+    def touch(self, block: int) -> None:
+        """The block has to look at its inputs again in this pass."""
+        self._touched.add(block)
+
     def unresolve(self, block: int) -> None:
         """The breaker has closed again: its trips matter once more."""
         self.mode_of.pop(block, None)
         self._touched.add(block)
+
+    def matters(self, block: int) -> bool:
+        """Whether the output of a block may still influence an opening or an observed output."""
+        return bool(self._live & self.case.reach_mask[block])
 
     # --- settling -----------------------------------------------------------------------
 
@@ -106,32 +118,39 @@ class Logic:
                 self._live &= ~bit
         return commitments
 
-    def _rest(self) -> None:
-        """Take the state before the event: breakers closed, nothing sensed, timers at rest."""
-        known = self.case.at_rest
-        if known is None:
-            self._come_to_rest()
-            known = (tuple(self.value), frozenset(self._open))
-            object.__setattr__(self.case, "at_rest", known)
-        self.value = list(known[0])
-        self._open = set(known[1])
+    def rest(self) -> None:
+        """Take the state before the event: breakers closed, nothing sensed, and what reads true has operated.
+
+        Timers and latches that would read an unknown ask as they do in a run.
+        """
+        for group in self.case.resting:
+            for _ in range(2 * len(group)):
+                if not any([self._rest(i) for i in group]):
+                    break
         self._touched.update(i for i, k in enumerate(self.case.kind) if k not in (Kind.GATE, Kind.SENSE))
 
-    def _come_to_rest(self) -> None:
-        for b in self.case.breakers:
-            self.value[b] = TRUE
-        for _ in range(len(self.value) + 1):
-            self._dirty = [i for i, kind in enumerate(self.case.kind) if kind is Kind.GATE]
-            self._propagate()
-            again = False
-            for i, kind in enumerate(self.case.kind):
-                if kind in (Kind.TIMER, Kind.LATCH) and self.value[i] == FALSE:
-                    reset = kind is Kind.LATCH and len(self.case.inputs[i]) > 1 and self.input_state(i, 1)
-                    if self.input_state(i, 0) and not reset:
-                        self.value[i] = TRUE
-                        again = True
-            if not again:
+    def _rest(self, i: int) -> bool:
+        """Bring one block to its state of rest; True if it changed."""
+        old, rank = self.value[i], 0
+        if self.case.kind[i] is Kind.GATE:
+            self._take(i)
+            self._shown[i] = self.value[i] == TRUE
+            return self.value[i] != old
+        while self.matters(i):
+            unknown = [j for j in self._read_by(i) if self.value[j] == UNKNOWN]
+            if not unknown:
                 break
+            behind = [g for j in unknown for g in self._open_behind(j)]
+            self._ask_gate(min(behind, key=self.case.order.__getitem__))
+            self._propagate(at_rest=True)
+        state = self.input_state(i, 0)
+        if self.case.kind[i] is Kind.LATCH:
+            reset = len(self.case.inputs[i]) > 1 and self.input_state(i, 1)
+            state = not reset and (state or old == TRUE)
+        if self.case.inputs[i]:
+            rank = self.rank[self.case.inputs[i][0][0]]
+        self.value[i], self.rank[i] = (TRUE, rank) if state else (FALSE, 0)
+        return self.value[i] != old
 
     def _spread(self, block: int) -> None:
         for c in self.case.consumers[block]:
@@ -142,23 +161,29 @@ class Logic:
             else:
                 self._touched.add(c)
 
-    def _propagate(self) -> None:
-        dirty, value = self._dirty, self.value
+    def _propagate(self, at_rest: bool = False) -> None:
+        dirty = self._dirty
         while dirty:
             g = heapq.heappop(dirty)
             self._queued[g] = False
-            new, rank = self._evaluate(g)
-            old = value[g]
-            if new == UNKNOWN and rank == WANTS_ANSWER:
-                self._open.add(g)
-            elif g in self._open:
-                self._open.discard(g)
-            if new != old:
-                value[g] = new
-                self.rank[g] = rank
-                if new == TRUE or old == TRUE:
-                    self.row[g] = self.record.gate(g, new, value, self.row)
+            if self._take(g):
+                true = self.value[g] == TRUE
+                if self._shown[g] != true and self.value[g] != UNKNOWN:
+                    self._shown[g] = true
+                    if not at_rest:
+                        self.row[g] = self.record.gate(g, self.value[g], self.value, self.row)
                 self._spread(g)
+
+    def _take(self, g: int) -> bool:
+        """Evaluate a gate; True if its value changed, or the role in which it is true."""
+        new, rank = self._evaluate(g)
+        old, before = self.value[g], self.rank[g]
+        if new == UNKNOWN and rank == WANTS_ANSWER:
+            self._open.add(g)
+        else:
+            self._open.discard(g)
+        self.value[g], self.rank[g] = new, rank
+        return new != old or (new == TRUE and rank != before)
 
     def _evaluate(self, g: int) -> tuple[int, int]:
         """Value and role of a gate from its inputs and the answers known.
@@ -211,22 +236,40 @@ class Logic:
     def _better(self, block: int) -> int | None:
         """A gate still unknown at this instant that would trip the breaker in a better role (ties)."""
         best = min(self.rank[j] for j, _ in self._coils(block) if self.value[j] == TRUE)
-        if best == 0:
+        if best == 0 or not self._open:
             return None
+        could: dict[int, int] = {}
         seen: set[int] = set()
         stack = [j for j, _ in self._coils(block)]
         found: list[int] = []
         while stack:
             g = stack.pop()
-            if g in seen or self.case.kind[g] is not Kind.GATE:
+            if g in seen or self.case.kind[g] is not Kind.GATE or self._could(g, could) >= best:
                 continue
             seen.add(g)
-            contact = self.case.contacts[g]
-            if contact is not None and self.value[g] == UNKNOWN and self.case.rank[g] < best:
-                found.extend(self._open_behind(g))
-            elif contact is None:
-                stack.extend(j for j, inverted in self.case.inputs[g] if not inverted)
+            if g in self._open:
+                found.append(g)
+            for j, inverted in self.case.inputs[g]:
+                if not inverted:
+                    stack.append(j)
+                elif self.value[g] == UNKNOWN and self.value[j] == UNKNOWN:
+                    found.extend(self._open_behind(j))
         return min(found, key=self.case.order.__getitem__, default=None)
+
+    def _could(self, g: int, memo: dict[int, int]) -> int:
+        """Best role a signal has if everything unknown turns out true."""
+        if g not in memo:
+            case, value = self.case, self.value
+            if value[g] == FALSE or case.kind[g] is not Kind.GATE:
+                memo[g] = _NEVER if value[g] == FALSE else self.rank[g]
+            else:
+                ranks = sorted(
+                    0 if inverted else self._could(j, memo)
+                    for j, inverted in case.inputs[g]
+                    if value[j] == UNKNOWN or (value[j] == TRUE) != inverted
+                )
+                memo[g] = max(case.rank[g], ranks[case.k[g] - 1] if case.k[g] > 0 else 0)
+        return memo[g]
 
     def _next_gate(self) -> int | None:
         """The gate whose question comes next: the first in order that a live sink waits for."""
@@ -256,9 +299,11 @@ class Logic:
     def _read_by(self, block: int) -> list[int]:
         """The inputs a sink depends on now: a latch at rest reads no reset until it is being set."""
         inputs = self.case.inputs[block]
-        if self.case.kind[block] is Kind.LATCH and len(inputs) > 1:
+        if self.case.kind[block] is Kind.LATCH:
             if self.value[block] == TRUE:
-                return [inputs[1][0]]
+                return [inputs[1][0]] if len(inputs) > 1 else []
+            if len(inputs) == 1:
+                return [inputs[0][0]]
             if self.input_state(block, 1):
                 return []
             return [inputs[0][0]] if self.input_state(block, 0) is not True else [inputs[1][0]]

@@ -83,7 +83,7 @@ class LogicalSensing:
         if isinstance(event, NoFault):
             return senses.no_fault.get(event.component, [])
         found = set(senses.by_section.get(event.section, ()))
-        if senses.longest > 0:
+        if senses.by_point:
             near = program.paths.distances(event, frozenset(), senses.longest)
             for point, distance in near.items():
                 for i, reach in senses.by_point.get(point, ()):
