@@ -282,7 +282,8 @@ def _inputs(
 
     A signal outside the case is false for good, but for the 52a of a breaker that stays closed.
     A latch keeps the places of its inputs: where one is true for good it reads the latch's
-    own output inverted, which sets it whenever it is reset, or resets it for good.
+    own output inverted, which sets it whenever it is reset, or resets it for good; where one
+    is false for good it reads its own output, which sets nothing (or there is no reset).
     """
     inputs: list[tuple[tuple[int, bool], ...]] = []
     ks: list[int] = []
@@ -293,7 +294,7 @@ def _inputs(
         if isinstance(block, Latch):
             own = local[g]
             kept = tuple(
-                (local[j], inv) if j in local else (own, True)
+                (local[j], inv) if j in local else (own, inv != (j in shut))
                 for n, (j, inv) in enumerate(program.inputs[g])
                 if n == 0 or j in local or inv != (j in shut)
             )

@@ -52,8 +52,8 @@ class Naive:
         self.program, self.event, self.yes = program, event, yes
         self.scheme, self.observe, self.horizon_us = program.scheme, observe, horizon_us
         self.blocks: dict[str, Block] = dict(self.scheme.block)
-        self.value = {name: False for name in self.blocks}
-        self.rank = {name: 0 for name in self.blocks}
+        self.value = dict.fromkeys(self.blocks, False)
+        self.rank = dict.fromkeys(self.blocks, 0)
         self.pending: dict[str, tuple[int, bool]] = {}
         self.stage: dict[str, str] = {}
         self.interrupts: dict[str, bool] = {}

@@ -134,7 +134,7 @@ def _condition(rng: Random, plant: Plant, components: list[Component]) -> Condit
         way = rng.choice(list(Direction))
         return Reach((Terminal(ct.name, rng.choice((ct.a, ct.b))),), rng.choice((0.0, 8.0, 15.0, 50.0)), way)
     if pick == 6:
-        return Current(tuple(d.name for d in rng.sample(cts, rng.randint(1, 2)) if d) if len(cts) > 1 else (ct.name,))
+        return Current(tuple(d.name for d in rng.sample(cts, rng.randint(1, min(2, len(cts))))))
     if pick == 7:
         return Undervoltage(rng.choice(names), rng.choice((0.0, 8.0, 50.0)))
     if pick == 8:
@@ -233,9 +233,13 @@ def random_scheme(rng: Random, plant: Plant, size: int) -> Scheme:
         )
         for _ in range(rng.randint(1, 1 + size))
     ]
-    pool = senses + rng.sample(make.breakers, min(2, len(make.breakers)))
+    contacts52 = rng.sample(make.breakers, min(2, len(make.breakers))) if rng.random() < 0.4 else []
+    closed = {d.name for d in plant.devices if d.closed}
+    pool = senses + contacts52
+    middle: list[str] = []
     for _ in range(rng.randint(0, size)):
-        pool.append(make.middle(pool, []))
+        middle.append(make.middle(pool + middle, []))
+    pool += middle
     first = (Role.MAIN, Role.MAIN_TIMED, Role.LOCAL)
     trips = [make.gate(pool, make.contact(first)) for _ in range(rng.randint(1, 1 + size))]
     later: list[str] = []
@@ -253,12 +257,8 @@ def random_scheme(rng: Random, plant: Plant, size: int) -> Scheme:
             for _ in range(rng.randint(1, 2))
         )
         modes = [c.name for c in make.components if c.kind is ComponentKind.BREAKER]
-        close = rng.choice(pool[len(senses) + 2 :] + later) if rng.random() < 0.25 and len(pool) > len(senses) + 2 else ""
-        device = plant.device.get(name)
-        if device is not None and not device.closed:
-            close = ""
-        if close in plant.device or close in plant.source:
-            close = ""
+        commands = [c for c in middle + later if rng.random() < 0.3]
+        close = rng.choice(commands) if commands and name in closed else ""
         make.add(
             Breaker(
                 name=name,
