@@ -119,7 +119,7 @@ def random_plant(rng: Random, size: int) -> Plant:
 
 
 def _delay(rng: Random) -> Fixed:
-    return Fixed(rng.choice((0, 10_000, 10_000, 20_000, 30_000, 50_000)))
+    return Fixed(rng.choice((0, 0, 10_000, 10_000, 20_000, 30_000, 50_000, 100_000)))
 
 
 def _condition(rng: Random, plant: Plant, components: list[Component]) -> Condition:
