@@ -21,7 +21,8 @@ from typing import TYPE_CHECKING, Any
 from schemesim.engine.case import Case
 from schemesim.scheme.model import Probability
 from schemesim.study.brackets import Bracket, exactly
-from schemesim.study.tree import Happens, Tree, explore, question_index
+from schemesim.study.odds import question_index
+from schemesim.study.tree import Happens, Tree, explore
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -149,7 +150,8 @@ def p_component_failed(tree: Tree, component: str, event: Happens) -> Bracket:
     """P(component failed | event): how probable any failure of a component is once the event has happened.
 
     A component not asked about in a leaf has failed there with the probability it has
-    once the modes refused are excluded: the outcome does not depend on it.
+    once the modes refused are excluded: the outcome does not depend on it. Only the
+    component's own modes count; a common cause is a question of its own.
 
     Parameters
     ----------

@@ -15,7 +15,7 @@ needed and which are intended.
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 from schemesim.engine.case import Case
@@ -23,7 +23,8 @@ from schemesim.engine.outcome import Outcome, Status
 from schemesim.errors import reject
 from schemesim.scheme.model import Probability, Role
 from schemesim.study.brackets import Bracket, Expectation, exactly
-from schemesim.study.tree import End, Tree, add
+from schemesim.study.odds import add
+from schemesim.study.tree import End, Tree
 
 
 def p_cleared(tree: Tree) -> Bracket:
@@ -221,8 +222,3 @@ def nominal(tree: Tree) -> Outcome | None:
         if not any(answer for _, answer in leaf.asked):
             return tree.ends[leaf.end].outcome
     return None
-
-
-def any_of(outcomes: Iterable[Outcome], event: Callable[[Outcome], bool]) -> bool:
-    """Whether an event happens in any of these outcomes."""
-    return any(event(o) for o in outcomes)

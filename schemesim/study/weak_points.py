@@ -7,9 +7,8 @@ from dataclasses import dataclass
 from fractions import Fraction
 
 from schemesim.engine.case import Case
-from schemesim.engine.outcome import Status
 from schemesim.scheme.model import Probability
-from schemesim.study.measures import cleared_by_time, excess
+from schemesim.study.measures import cleared_by_time, excess, nominal
 from schemesim.study.tree import Happens, Tree
 
 
@@ -44,7 +43,10 @@ class SinglePoint:
 
 
 def single_points(tree: Tree, case: Case, limit_us: int | None = None) -> tuple[SinglePoint, ...]:
-    """Every failure that alone leaves the fault uncleared, late, or cleared with breakers beyond the intended.
+    """Every failure that alone leaves the fault uncleared, late, or with more breakers opened beyond the intended.
+
+    Each is judged against the run without a failure: what is late, or opens too much, with
+    no failure at all is a fault of the design and no single point of failure.
 
     A tree explored with ``complete=1`` holds all of them; another only those as probable
     as its unexplored mass lets one see.
@@ -62,15 +64,20 @@ def single_points(tree: Tree, case: Case, limit_us: int | None = None) -> tuple[
         Not cleared first, then late, then more breakers; the more probable first.
     """
     found = []
+    base = nominal(tree)
+    late_anyway = base is not None and limit_us is not None and not cleared_by_time(base, limit_us)
+    more_anyway = 0 if base is None else excess(case, base)
+    stays_anyway = base is not None and base.t_clear_us is None
     for leaf in tree.leaves:
         failures = [q for q in leaf.yes if q not in tree.given]
         if len(failures) != 1:
             continue
         outcome = tree.ends[leaf.end].outcome
-        stays = outcome.status in (Status.NOT_CLEARED, Status.UNDETERMINED)
-        late = outcome.status is Status.CLEARED and limit_us is not None and not cleared_by_time(outcome, limit_us)
+        stays = outcome.t_clear_us is None and not stays_anyway
+        in_time = outcome.t_clear_us is None or limit_us is None or outcome.t_clear_us <= limit_us
+        late = not in_time and not late_anyway
         more = excess(case, outcome)
-        if stays or late or more:
+        if stays or late or more > more_anyway:
             question = tree.questions[failures[0]]
             found.append(SinglePoint(question.name, question.probability, stays, late, more))
     return tuple(sorted(found, key=lambda s: (not s.not_cleared, not s.late, -s.probability, s.failure)))

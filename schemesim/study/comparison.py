@@ -1,0 +1,152 @@
+"""Variants side by side: what each protection policy buys over the first.
+
+A variant is called better or worse in a measure only where the brackets of the two do
+not overlap; otherwise the study does not tell them apart.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from schemesim.errors import reject
+from schemesim.study.brackets import Bracket
+from schemesim.study.locations import LocationStudy
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+_MORE_IS_BETTER = frozenset({"p_cleared", "p_within_limit", "p_by_main", "p_selective"})
+_LESS_IS_BETTER = frozenset(
+    {
+        "breakers_mean",
+        "breakers_excess",
+        "load_lost_mw_mean",
+        "uncleared_per_yr",
+        "late_or_uncleared_per_yr",
+        "fault_needless_trips_per_yr",
+        "no_fault_trips_per_yr",
+        "needless_trips_per_yr",
+        "single_points",
+    }
+)
+
+
+@dataclass(frozen=True, slots=True)
+class Compared:
+    """One measure of one variant beside that of the base.
+
+    Attributes
+    ----------
+    measure, variant : str
+    value : Bracket
+    difference : Bracket
+        Variant less base.
+    verdict : str
+        ``"better"``, ``"worse"``, ``"higher"``, ``"lower"`` (where neither is better),
+        ``"same"`` (one and the same value) or ``"not told apart"``; empty for the base.
+    """
+
+    measure: str
+    variant: str
+    value: Bracket
+    difference: Bracket
+    verdict: str
+
+
+@dataclass(frozen=True)
+class Comparison:
+    """Every measure of every variant; the first variant is the base."""
+
+    base: str
+    variants: tuple[str, ...]
+    rows: tuple[Compared, ...]
+
+    def of(self, measure: str, variant: str) -> Compared:
+        """One cell.
+
+        Raises
+        ------
+        InputError
+            If there is no such measure or variant.
+        """
+        for row in self.rows:
+            if (row.measure, row.variant) == (measure, variant):
+                return row
+        raise reject("comparison", (measure, variant), "a measure and a variant that were compared")
+
+    def table(self) -> pd.DataFrame:
+        """One row for each measure, low, high and verdict of each variant side by side."""
+        import pandas as pd  # heavy: only when a table is asked for
+
+        lines: dict[str, dict[str, object]] = {}
+        for row in self.rows:
+            line = lines.setdefault(row.measure, {"measure": row.measure})
+            line[f"{row.variant} low"] = float(row.value.low)
+            line[f"{row.variant} high"] = float(row.value.high)
+            if row.variant != self.base:
+                line[f"{row.variant} vs {self.base}"] = row.verdict
+        return pd.DataFrame(list(lines.values()))
+
+    def __repr__(self) -> str:
+        lines = []
+        for measure in dict.fromkeys(row.measure for row in self.rows):
+            lines.append(measure)
+            for variant in self.variants:
+                row = self.of(measure, variant)
+                lines.append(f"  {variant:24} {row.value!r:32} {row.verdict}".rstrip())
+        return "\n".join(lines)
+
+    def _repr_html_(self) -> str:
+        return str(self.table().to_html(index=False))
+
+
+def compare(studies: Mapping[str, LocationStudy]) -> Comparison:
+    """Put the studies of several variants side by side; the first is the base.
+
+    Parameters
+    ----------
+    studies : mapping of variant name to LocationStudy
+        Of the same locations, with the same limit and frequencies.
+
+    Raises
+    ------
+    InputError
+        With fewer than one study, or studies of different locations, limits or frequencies.
+    """
+    if not studies:
+        raise reject("studies", "none", "at least one")
+    base_name, base = next(iter(studies.items()))
+    for name, study in studies.items():
+        same_places = [r.location for r in study.results] == [r.location for r in base.results]
+        if not same_places or study.options.limit_us != base.options.limit_us or study.frequencies != base.frequencies:
+            raise reject(f"study {name!r}", "another", f"the locations, limit and frequencies of {base_name!r}")
+    figures = {name: _figures(study) for name, study in studies.items()}
+    rows = []
+    for measure, before in figures[base_name].items():
+        for name in studies:
+            value = figures[name].get(measure)
+            if value is not None:
+                verdict = "" if name == base_name else _verdict(measure, before, value)
+                rows.append(Compared(measure, name, value, value - before, verdict))
+    return Comparison(base_name, tuple(studies), tuple(rows))
+
+
+def _figures(study: LocationStudy) -> dict[str, Bracket]:
+    figures = study.measures()
+    if all(r.stopped != "budget" for r in study.results):
+        count = len(study.single_points)
+        figures["single_points"] = Bracket(count, count)
+    return figures
+
+
+def _verdict(measure: str, before: Bracket, after: Bracket) -> str:
+    if before.overlaps(after):
+        return "same" if before == after and before.width == 0 else "not told apart"
+    higher = after.low > before.high
+    if measure in _MORE_IS_BETTER:
+        return "better" if higher else "worse"
+    if measure in _LESS_IS_BETTER:
+        return "worse" if higher else "better"
+    return "higher" if higher else "lower"
