@@ -96,6 +96,17 @@ def read_tree(path: FilePath | str) -> Tree:
         With every mistake: a file that cannot be read or is no text, bad syntax, or
         anything of YAML that is refused here (see the head of this module).
     """
+    return read_text(text_of(path), str(path))
+
+
+def text_of(path: FilePath | str) -> str:
+    """The text of a regular file: UTF-8, at most ``MAX_BYTES``.
+
+    Raises
+    ------
+    InputError
+        For a file that cannot be read, is too large or is no text.
+    """
     file = str(path)
     expected = "a readable text file"
     try:
@@ -119,11 +130,10 @@ def read_tree(path: FilePath | str) -> Tree:
     if raw.startswith((b"\xff\xfe", b"\xfe\xff")):
         raise file_error(file, "UTF-16", "UTF-8 text", line=1)
     try:
-        text = raw.decode("utf-8")
+        return raw.decode("utf-8")
     except UnicodeDecodeError as error:
         line = len(re.findall(rb"\r\n|\r|\n", raw[: error.start])) + 1
         raise file_error(file, raw[error.start : error.start + 1], "UTF-8 text", line=line) from None
-    return read_text(text, file)
 
 
 def read_text(text: str, file: str) -> Tree:
