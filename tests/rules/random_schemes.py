@@ -317,7 +317,7 @@ def states(program: Program) -> list[tuple[frozenset[str], Fraction]]:
             continue
         some = [(f"{c.name}: {m}", Fraction(p)) for m, p in c.modes if 0 < p < 1]
         if some:
-            rest = 1 - sum(p for _, p in some)
+            rest = Fraction(1) - sum((p for _, p in some), Fraction(0))
             parts.append([*((frozenset({n}), p) for n, p in some), (frozenset(), rest)])
     out = []
     for choice in product(*parts):
