@@ -32,7 +32,7 @@ class Bracket:
     --------
     >>> cleared = Bracket(0.9997123, 0.9997154)
     >>> cleared
-    0.999712…0.999716
+    0.9997123…0.9997154
     >>> cleared.contains(0.999713), cleared.overlaps(Bracket(0.9, 0.95))
     (True, False)
     """
@@ -186,8 +186,8 @@ def show(low: Number, high: Number) -> str:
     place = Decimal(1).scaleb(math.floor(math.log10(b - a)))
     if b - a < 5 * float(place):
         place = place.scaleb(-1)
-    x = Decimal(a).quantize(place, ROUND_FLOOR)
-    y = Decimal(b).quantize(place, ROUND_CEILING)
+    x = Decimal(repr(a)).quantize(place, ROUND_FLOOR)
+    y = Decimal(repr(b)).quantize(place, ROUND_CEILING)
     return f"{_plain(x)}…{_plain(y)}"
 
 
