@@ -189,7 +189,7 @@ def test_r04_keeping_a_log_and_cutting_to_a_case_lose_nothing(s: Sample, seed: i
     assert logged.asked == plain.asked
     assert not plain.log
     assert uncut.outcome == plain.outcome
-    assert uncut.asked == plain.asked
+    assert set(plain.asked) <= set(uncut.asked)  # what leads nowhere for this event is asked only uncut
 
 
 @few
