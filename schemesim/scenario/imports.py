@@ -13,6 +13,7 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path as FilePath
 from pathlib import PurePosixPath
+
 from schemesim.errors import InputError, Problem, nearest
 from schemesim.scenario.locate import Data, Path, Place, Tree
 from schemesim.scenario.problems import known_keys, subject_of

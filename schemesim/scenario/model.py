@@ -114,7 +114,8 @@ class ListedRun:
     @property
     def questions(self) -> tuple[str, ...]:
         """Names of the questions answered yes."""
-        return (*(f"{a.component}: {a.mode}" for a in self.failures), *self.common_causes)
+        causes = (f"common cause {name}" for name in self.common_causes)
+        return (*(f"{a.component}: {a.mode}" for a in self.failures), *causes)
 
 
 @dataclass(frozen=True)
@@ -194,7 +195,7 @@ class Scenario:
         out = self.out_of_service | out_of_service
         key = ("scheme", name, out)
         if key not in self._made:
-            plain = ("scheme", name, frozenset())
+            plain: tuple[str, str, frozenset[str]] = ("scheme", name, frozenset())
             if plain not in self._made:
                 special = {e: self.policies[p] for e, p in self.exceptions.items()}
                 self._made[plain] = dress(self.plant, self.policies[name], self.data, exceptions=special)

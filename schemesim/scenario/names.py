@@ -64,8 +64,13 @@ class Names:
 
 
 def check_names(tree: Tree, problems: list[Problem]) -> Names:
-    """Collect the names of a file; names given twice and references that lead nowhere are noted."""
+    """Collect the names of a file; names given twice and references that lead nowhere are noted.
+
+    Where ``problems`` came up already, lists may be missing from the tree.
+    """
+    missing = bool(problems)
     names = _collect(tree, problems)
+    names.open_ended |= missing
     _Checker(tree, names, problems).check()
     return names
 
@@ -117,6 +122,9 @@ def _collect(tree: Tree, problems: list[Problem]) -> Names:
         into.setdefault(name, path)
 
     for table in _NAMED:
+        given = at(tree.data, ("plant", table))
+        if given is not None and not (isinstance(given, list) and all(isinstance(x, dict) for x in given)):
+            names.open_ended = True
         into = names.sections if table in _SECTIONS else names.others
         into = names.sources if table in ("infeeds", "sources") else into
         for path, item in items(tree, "plant", table):
