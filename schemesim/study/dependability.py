@@ -188,7 +188,7 @@ def study_dependability(
     for at in program.plant.locations() if locations is None else locations:
         wanted = frozenset(n for n in chosen if at.section in contacts[n].protects)
         unwanted = frozenset(n for n in mains if at.section not in contacts[n].protects)
-        weight = 1.0 if frequencies is None else frequencies.get(at, 0.0)
+        weight = 1 if frequencies is None else frequencies.get(at, 0.0)
         case = bind(program, at, sensing, dispatch=dispatch, observe=wanted | unwanted)
         if not case.topology(0).fed:
             continue

@@ -72,8 +72,8 @@ class LocationStudy:
     def weight(self, result: LocationResult) -> float:
         """Faults per year at a location (1 without frequencies; 0 where no source feeds the fault)."""
         if not result.fed:
-            return 0.0
-        return 1.0 if self.frequencies is None else self.frequencies.get(result.location, 0.0)
+            return 0
+        return 1 if self.frequencies is None else self.frequencies.get(result.location, 0.0)
 
     def weighted(self, value: Callable[[LocationResult], Bracket]) -> Bracket:
         """The mean of a bracket over the locations, weighted by fault frequency."""

@@ -1,0 +1,139 @@
+"""Monte Carlo: seeded counts that add up however the trials are split, and tell the tree's story."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from concurrent.futures import ProcessPoolExecutor, ThreadPoolExecutor
+from fractions import Fraction
+from typing import Any
+
+import pytest
+
+from schemesim.engine.case import Case
+from schemesim.engine.outcome import Outcome
+from schemesim.errors import InputError
+from schemesim.scheme.delays import Uniform
+from schemesim.scheme.model import Role
+from schemesim.study.measures import breakers_mean, cleared_by
+from schemesim.study.montecarlo import Counts, simulate
+from schemesim.study.tree import explore
+from tests.unit.small_schemes import as_float, brute_force, case_of, feeder_scheme, voting_scheme
+
+SEED = 20_240
+TRIALS = 6_000
+
+
+def measures(case: Case) -> dict[str, Callable[[Outcome], bool]]:
+    """What both the tree and the trials tell."""
+    out: dict[str, Callable[[Outcome], bool]] = {
+        "cleared": lambda o: o.t_clear_us is not None,
+        "in 200 ms": lambda o: o.t_clear_us is not None and o.t_clear_us <= 200_000,
+        "selective": lambda o: o.tripped <= case.duty.intended,
+        "no breaker": lambda o: not o.tripped,
+        "two breakers": lambda o: len(o.tripped) == 2,
+    }
+    for role in (Role.MAIN, Role.BREAKER_FAILURE, Role.REMOTE):
+        out[role.label] = lambda o, role=role: cleared_by(case, o) is role  # type: ignore[misc]
+    return out
+
+
+@pytest.fixture(scope="module")
+def case() -> Case:
+    return case_of(feeder_scheme(as_float))
+
+
+@pytest.fixture(scope="module")
+def counts(case: Case) -> Counts:
+    return simulate(case, TRIALS, SEED)
+
+
+@pytest.mark.parametrize("scheme", [feeder_scheme, voting_scheme], ids=["feeder", "voting"])
+def test_trials_and_tree_tell_one_story(scheme: Any) -> None:
+    """99.9 % family-wise over every measure both give (Clopper–Pearson covers never less)."""
+    case = case_of(scheme(as_float))
+    tree, trials = explore(case, epsilon=1e-4), simulate(case, TRIALS, SEED)
+    events = measures(case)
+    assert trials.trials == TRIALS
+    for name, event in events.items():
+        share = trials.share(event, 1 - 0.001 / len(events), "clopper_pearson")
+        bracket = tree.bracket(event)
+        assert share.low <= bracket.high, name
+        assert bracket.low <= share.high, name
+
+
+def test_trials_against_brute_force(case: Case, counts: Counts) -> None:
+    truth = brute_force(case)
+    assert set(dict(counts.ends)) <= set(truth)  # nothing that cannot be
+    for end, p in truth.items():
+        share = counts.share(lambda o, end=end: o == end.outcome, 1 - 0.001 / len(truth), "clopper_pearson")  # type: ignore[misc]
+        same = sum(q for e, q in truth.items() if e.outcome == end.outcome)
+        assert share.low <= same <= share.high, p
+
+
+def test_mean_of_the_trials(case: Case, counts: Counts) -> None:
+    tree = explore(case, epsilon=0)
+    mean = counts.mean(lambda e: len(e.outcome.tripped), 0.999)
+    exact = breakers_mean(tree, case).bracket
+    assert mean.low <= exact.high
+    assert exact.low <= mean.high
+    assert mean.low < mean.estimate < mean.high < mean.low + 0.1
+
+
+@pytest.mark.parametrize("delay", [None, Uniform(40_000, 60_000)], ids=["fixed", "random"])
+def test_chunks_add_up_to_one_run(delay: Uniform | None) -> None:
+    case = case_of(feeder_scheme(as_float, delay))
+    whole = simulate(case, 300, SEED)
+    parts = [simulate(case, n, SEED, first, chunk=7) for first, n in ((0, 100), (100, 1), (101, 199))]
+    assert parts[0] + parts[1] + parts[2] == whole
+    assert (parts[2] + parts[0]) + parts[1] == whole
+    assert whole.ranges == ((0, 300),)
+    assert simulate(case, 300, SEED + 1).ends != whole.ends
+
+
+def test_random_delays_are_drawn() -> None:
+    """Main trips at 20 ms, its breaker takes 40 to 60 ms; half of the trials or more are such."""
+    counts = simulate(case_of(feeder_scheme(as_float, Uniform(40_000, 60_000))), 50, 1)
+    times = [e.outcome.t_clear_us for e, _ in counts.ends if e.outcome.t_clear_us]
+    early = [t for t in times if t <= 80_000]
+    assert len(early) > 25
+    assert len(set(early)) > 20
+    assert min(early) >= 60_000
+
+
+@pytest.mark.parametrize("pool", [ThreadPoolExecutor, ProcessPoolExecutor])
+def test_any_executor_gives_the_same(pool: Any, case: Case) -> None:
+    with pool(2) as executor:
+        assert simulate(case, 120, SEED, executor=executor, chunk=50) == simulate(case, 120, SEED)
+
+
+def test_no_trials(case: Case) -> None:
+    none = simulate(case, 0, SEED)
+    assert none.trials == 0
+    share = none.share(lambda _: True)
+    assert (share.low, share.high) == (0, 1)
+    with pytest.raises(InputError, match="trials"):
+        none.mean(lambda _: 1.0)
+
+
+def test_counts_refuse_what_does_not_add(case: Case) -> None:
+    one = simulate(case, 10, SEED)
+    with pytest.raises(InputError, match="not counted before"):
+        _ = one + simulate(case, 1, SEED, 9)
+    with pytest.raises(InputError, match="seed"):
+        _ = one + simulate(case, 1, SEED + 1, 10)
+    with pytest.raises(InputError, match="counts of 'F1'"):
+        _ = one + simulate(case_of(feeder_scheme(as_float), "F2"), 1, SEED, 10)
+    with pytest.raises(InputError, match="interval"):
+        one.share(lambda _: True, method="normal")  # type: ignore[arg-type]  # that is the test
+
+
+@pytest.mark.parametrize("bad", [{"trials": -1}, {"seed": -1}, {"trials": 1.5}, {"first_trial": -1}, {"chunk": 0}])
+def test_bad_numbers_are_refused(bad: dict[str, Any], case: Case) -> None:
+    options = {"trials": 1, "seed": 0, **bad}
+    with pytest.raises(InputError, match=next(iter(bad))):
+        simulate(case, **options)
+
+
+def test_fractions_are_drawn_too() -> None:
+    counts = simulate(case_of(feeder_scheme(Fraction)), 50, SEED)
+    assert counts == simulate(case_of(feeder_scheme(as_float)), 50, SEED)
