@@ -11,7 +11,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from schemesim.errors import reject
-from schemesim.study.brackets import Bracket
+from schemesim.study.brackets import Bracket, exactly
 from schemesim.study.locations import LocationStudy
 
 if TYPE_CHECKING:
@@ -29,6 +29,8 @@ _LESS_IS_BETTER = frozenset(
         "no_fault_trips_per_yr",
         "needless_trips_per_yr",
         "single_points",
+        "single_points_not_cleared",
+        "single_points_late",
     }
 )
 
@@ -136,8 +138,13 @@ def compare(studies: Mapping[str, LocationStudy]) -> Comparison:
 def _figures(study: LocationStudy) -> dict[str, Bracket]:
     figures = study.measures()
     if all(r.stopped != "budget" for r in study.results):
-        count = len(study.single_points)
-        figures["single_points"] = Bracket(count, count)
+        points = [p for r in study.results for p in r.single_points]
+        for name, chosen in (
+            ("single_points", points),
+            ("single_points_not_cleared", [p for p in points if p.not_cleared]),
+            ("single_points_late", [p for p in points if p.late]),
+        ):
+            figures[name] = exactly(len({p.failure for p in chosen}))
     return figures
 
 

@@ -175,6 +175,8 @@ def test_variants_side_by_side() -> None:
     # The one relay is a single point of failure, the duplicated one is none. (A slow one is still in time.)
     assert found.of("single_points", "single").value == exactly(5)
     assert found.of("single_points", "duplicate").value == exactly(4)
+    assert found.of("single_points_late", "duplicate").value == exactly(4)
+    assert found.of("single_points_not_cleared", "no breaker failure").value == exactly(0)  # the infeed's timer is left
     table = found.table()
     assert table["duplicate vs single"].notna().all()
     assert "better" in repr(found)
