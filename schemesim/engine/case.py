@@ -34,6 +34,16 @@ class Topology:
     fed: bool
 
 
+class AtRest(NamedTuple):
+    """The state before the event, where it needs no answer: kept once for all runs of a case."""
+
+    value: tuple[int, ...]
+    rank: tuple[int, ...]
+    shown: tuple[bool, ...]
+    open: frozenset[int]
+    touched: frozenset[int]
+
+
 class BreakerAsk(NamedTuple):
     """A mode of a breaker, the questions that bring it, and its verdict where it is certain."""
 
@@ -101,7 +111,9 @@ class Case:
     observed: tuple[int, ...]
     reach_mask: tuple[int, ...]
     index: Mapping[str, int]
+    at_rest: list[AtRest] = field(default_factory=list)
     _topologies: dict[int, Topology] = field(default_factory=dict)
+    _changes: dict[tuple[int, int], tuple[tuple[int, bool], ...]] = field(default_factory=dict)
 
     @property
     def questions(self) -> tuple[Question, ...]:
@@ -116,6 +128,18 @@ class Case:
             holds, fed = self.sensed.state(opened)
             known = Topology(tuple(zip(self.senses, holds, strict=True)), fed)
             self._topologies[open_mask] = known
+        return known
+
+    def changes(self, before: int, after: int) -> tuple[tuple[int, bool], ...]:
+        """Sense blocks whose condition differs between two topologies, with the new truth.
+
+        ``before`` is -1 for the time before the event, when nothing is sensed.
+        """
+        known = self._changes.get((before, after))
+        if known is None:
+            old = dict(self.topology(before).holds) if before >= 0 else {}
+            known = tuple((b, t) for b, t in self.topology(after).holds if t != old.get(b, False))
+            self._changes[(before, after)] = known
         return known
 
     def opened(self, open_mask: int) -> frozenset[str]:

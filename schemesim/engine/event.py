@@ -105,6 +105,7 @@ class EventRun:
         self._holds = [False] * n
         self._forced: dict[int, bool] = {}
         self._open_mask = 0
+        self._sensed_mask = -1
         self._breaker_bit = {b: 1 << i for i, b in enumerate(case.breakers)}
         self._stage: dict[int, str] = {}
         self._interrupts: dict[int, bool] = {}
@@ -295,11 +296,11 @@ class EventRun:
         """Evaluate sensing on the present topology (rules R8, R9); returns senses whose condition changed."""
         state = self.case.topology(self._open_mask)
         changed = []
-        for block, truth in state.holds:
-            holds = self._forced.get(block, truth)
-            if holds != self._holds[block]:
-                self._holds[block] = holds
+        for block, truth in (*self.case.changes(self._sensed_mask, self._open_mask), *self._forced.items()):
+            if truth != self._holds[block]:
+                self._holds[block] = truth
                 changed.append(block)
+        self._sensed_mask = self._open_mask
         if now == 0 and self._pass == 0:
             self._fed = state.fed
         elif self._fed and not state.fed:
@@ -310,7 +311,7 @@ class EventRun:
         elif state.fed and not self._fed:
             self._fed = True
             self.record.row(str(self.case.event), "fault", "fed again", self.record.topology_row)
-        return tuple(changed)
+        return tuple(sorted(changed))
 
     def _commit(self, block: int, role: Role, via: str, row: int, now: int) -> None:
         """A coil is energised: the breaker opens even if the trip falls away (rule R6)."""

@@ -11,7 +11,7 @@ from __future__ import annotations
 import heapq
 
 from schemesim.engine.answers import Answers
-from schemesim.engine.case import Case
+from schemesim.engine.case import AtRest, Case
 from schemesim.engine.program import Kind
 from schemesim.engine.record import Recorder
 from schemesim.engine.rules import FALSE, TRUE, UNKNOWN
@@ -121,13 +121,36 @@ class Logic:
     def rest(self) -> None:
         """Take the state before the event: breakers closed, nothing sensed, and what reads true has operated.
 
-        Timers and latches that would read an unknown ask as they do in a run.
+        Timers and latches that would read an unknown ask as they do in a run. A case whose
+        state of rest needs no answer keeps it: it is the same for every run.
         """
+        if self.case.at_rest:
+            kept = self.case.at_rest[0]
+            self.value, self.rank, self._shown = list(kept.value), list(kept.rank), list(kept.shown)
+            self._open, self._touched = set(kept.open), set(kept.touched)
+            return
         for group in self.case.resting:
             for _ in range(2 * len(group)):
                 if not any([self._rest(i) for i in group]):
                     break
-        self._touched.update(i for i, k in enumerate(self.case.kind) if k not in (Kind.GATE, Kind.SENSE))
+        self._touched.update(i for i in range(len(self.value)) if self._unsettled(i))
+        if not self.asked:
+            self.case.at_rest.append(
+                AtRest(
+                    tuple(self.value), tuple(self.rank), tuple(self._shown),
+                    frozenset(self._open), frozenset(self._touched),
+                )  # fmt: skip
+            )
+
+    def _unsettled(self, i: int) -> bool:
+        """Whether a sink at rest has to look at its inputs when the event begins."""
+        kind = self.case.kind[i]
+        if kind in (Kind.GATE, Kind.SENSE):
+            return False
+        inputs = self.case.inputs[i]
+        if kind is Kind.TIMER and inputs:
+            return self.input_state(i, 0) != (self.value[i] == TRUE)
+        return not inputs or any(self.value[j] != FALSE or inverted for j, inverted in inputs)
 
     def _rest(self, i: int) -> bool:
         """Bring one block to its state of rest; True if it changed."""
