@@ -58,11 +58,17 @@ class Problem:
 
 
 class InputError(SchemesimError, ValueError):
-    """One or more mistakes in the input; ``problems`` lists them all."""
+    """One or more mistakes in the input; ``problems`` lists them all.
+
+    It can be made again from its ``args``, as pickling and SimPy's processes do.
+    """
 
     def __init__(self, problems: Iterable[Problem]) -> None:
         self.problems = tuple(problems)
-        super().__init__("\n".join(str(p) for p in self.problems))
+        super().__init__(self.problems)
+
+    def __str__(self) -> str:
+        return "\n".join(str(p) for p in self.problems)
 
 
 class RunError(SchemesimError, RuntimeError):

@@ -7,7 +7,7 @@ import pytest
 from schemesim.engine.program import compile_scheme
 from schemesim.engine.rules import MAX_PASSES
 from schemesim.errors import InputError, RunError
-from schemesim.scheme.model import Gate, Latch, Not, Scheme
+from schemesim.scheme.model import Block, Gate, Latch, Not, Scheme
 from tests.rules.hand import at, breaker, case, gate, openings, play, radial, sense, timer, times, trip
 
 
@@ -58,7 +58,7 @@ def test_r02_expiry_topology_sensing_logic_starts_in_one_pass() -> None:
 def test_r02_an_instant_may_hold_many_passes_short_of_the_bound() -> None:
     count = MAX_PASSES - 10
     chain = [timer(f"t{n}", f"t{n - 1}" if n else "oc") for n in range(count)]
-    blocks = [sense("oc", "F1.CT", 0), *chain, gate("coil", f"t{count - 1}"), breaker("F1.CB", "coil")]
+    blocks: list[Block] = [sense("oc", "F1.CT", 0), *chain, gate("coil", f"t{count - 1}"), breaker("F1.CB", "coil")]
     run = play(case(radial(), blocks))
     assert openings(run) == {"F1.CB": (0, 50)}
 

@@ -35,7 +35,7 @@ def test_r03_a_microsecond_later_it_has_been_stopped() -> None:
 
 def test_r03_a_drop_out_that_runs_out_at_the_instant_its_input_rises_has_dropped_out() -> None:
     """pulse 20..40; t operates at 20 and holds for 25 ms, until 65; again rises at 65: t is off, then on again."""
-    blocks = [
+    blocks: list[Block] = [
         *pulse(20),
         timer("again", "oc", 45),
         gate("both", "pulse", "again"),
@@ -78,13 +78,13 @@ def test_r03_a_detector_that_drops_out_when_the_timer_runs_out_has_dropped_out()
 def test_r03_names_decide_nothing_but_the_order_of_rows(names: tuple[str, ...]) -> None:
     """Three timers due at 50 on a pulse that falls at 50 have all operated, whatever they are called."""
     ts = [timer(n, "pulse", 30) for n in names]
-    blocks = [*pulse(30), *ts, trip("x", *names, k=3), gate("coil", "x"), breaker("F1.CB", "coil")]
+    blocks: list[Block] = [*pulse(30), *ts, trip("x", *names, k=3), gate("coil", "x"), breaker("F1.CB", "coil")]
     assert openings(play(case(radial(), blocks))) == {"F1.CB": (50, 100)}
 
 
 def test_r03_set_and_reset_at_one_instant_reset_wins() -> None:
     """Both inputs rise at 30: the latch stays off. Reset first falls at 40 with set still there: it seals in."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         timer("s", "oc", 10),
         timer("end", "oc", 20),

@@ -50,7 +50,7 @@ def back_up() -> list[Block]:
 
 def test_r04_nothing_is_asked_of_an_element_that_does_not_pick_up() -> None:
     """A fault on F2: the elements of F1 see nothing, and the fault is nobody's to clear."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t", "oc", unless=fails("R1")),
         gate("coil", "t"),
@@ -62,7 +62,7 @@ def test_r04_nothing_is_asked_of_an_element_that_does_not_pick_up() -> None:
 
 def test_r04_a_trip_toward_a_committed_breaker_asks_nothing() -> None:
     """R1 at 20 and R2 at 40 on one coil. R1 well: committed at 20, R2 is never asked. R1 fails: R2 is asked at 40."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc1", "F1.CT", 20),
         sense("oc2", "F1.CT", 40),
         trip("t1", "oc1", unless=fails("R1")),
@@ -84,7 +84,7 @@ def test_r04_it_is_asked_where_something_else_starts_from_it() -> None:
 
     R2 well: F1.CB is open at 70, the detector (reset 10) off at 80; the timer would run out at 40 + 60.
     """
-    blocks = [
+    blocks: list[Block] = [
         sense("oc1", "F1.CT", 20),
         sense("oc2", "F1.CT", 40),
         trip("t1", "oc1", unless=fails("R1")),
@@ -104,7 +104,7 @@ def test_r04_it_is_asked_where_something_else_starts_from_it() -> None:
 
 def test_r04_a_delayed_element_is_asked_when_its_time_has_run_out() -> None:
     """The back-up on IN picks up at 20; R9 is asked at 420, and only if the fault is still there."""
-    main = [
+    main: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t1", "oc", unless=fails("R1")),
         gate("coil", "t1"),
@@ -128,7 +128,7 @@ def test_r04_a_breaker_is_asked_when_its_coil_is_energised() -> None:
         Component("CB9", ComponentKind.BREAKER, ((stuck, 0.1),)),
         relay("R9"),
     ]
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t1", "oc"),
         gate("coil", "t1"),
@@ -146,7 +146,7 @@ def test_r04_a_breaker_is_asked_when_its_coil_is_energised() -> None:
 def test_r04_a_mode_without_an_effect_is_not_asked() -> None:
     """A breaker with no lateness stated cannot open late: nothing depends on the answer."""
     late = FailureMode.OPENS_LATE
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t1", "oc"),
         gate("coil", "t1"),
@@ -191,7 +191,7 @@ def test_r04_a_tie_goes_to_main_though_the_back_up_stands_nearer_the_coil() -> N
     Nearest first, the back-up's relay RB is asked before RM; the breaker is not committed
     before the main trip's answers are in, since it would be main at the same instant.
     """
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("b", "oc", unless=fails("RB"), role=Role.LOCAL),
         trip("m", "oc", unless=fails("RM"), role=Role.MAIN),
@@ -209,7 +209,7 @@ def test_r04_a_tie_goes_to_main_though_the_back_up_stands_nearer_the_coil() -> N
 
 def test_r04_a_tie_over_two_coils_goes_to_main_once_its_coil_is_known_to_be_well() -> None:
     """Main on coil 2, whose own failure is a question; the back-up on coil 1 that asks nothing."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("b", "oc", role=Role.LOCAL),
         trip("m", "oc", role=Role.MAIN),
@@ -225,7 +225,7 @@ def test_r04_a_tie_over_two_coils_goes_to_main_once_its_coil_is_known_to_be_well
 
 
 def test_r04_a_component_of_many_functions_is_asked_once() -> None:
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t1", "oc", unless=fails("R1")),
         trip("t2", "oc", unless=fails("R1")),
@@ -242,7 +242,7 @@ def test_r04_a_component_of_many_functions_is_asked_once() -> None:
 
 def test_r04_one_failure_may_suppress_and_be_required() -> None:
     """t1 needs R1 well, t2 needs R1 failed: exactly one of them trips."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t1", "oc", unless=fails("R1")),
         trip("t2", "oc", given=fails("R1")),
@@ -261,7 +261,7 @@ def test_r04_one_failure_may_suppress_and_be_required() -> None:
 
 def test_r04_an_inversion_turns_a_suppressed_output_into_a_trip() -> None:
     """Blocked unless the blocking relay fails: its question decides, whichever way."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         gate("block", "oc", unless=fails("RB")),
         trip("t", "oc", Not("block"), k=2),
@@ -276,7 +276,7 @@ def test_r04_an_inversion_turns_a_suppressed_output_into_a_trip() -> None:
 
 def test_r04_two_out_of_three_asks_no_more_than_it_needs() -> None:
     """Three relays vote. A and B well: C is not asked. A fails: B and C are."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         *(gate(f"v{r}", "oc", unless=fails(f"R{r}")) for r in "abc"),
         trip("vote", "va", "vb", "vc", k=2),
@@ -297,7 +297,7 @@ def test_r04_two_out_of_three_asks_no_more_than_it_needs() -> None:
 
 def test_r04_a_latch_that_is_sealed_in_asks_nothing_more() -> None:
     """Set by R1 at 20 and for good; R2 would set it again at 40: not asked."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc1", "F1.CT", 20),
         sense("oc2", "F1.CT", 40),
         gate("s1", "oc1", unless=fails("R1")),
@@ -316,7 +316,7 @@ def test_r04_a_latch_that_is_sealed_in_asks_nothing_more() -> None:
 
 def test_r04_a_common_cause_is_asked_before_the_members_own_part_and_joined_by_or() -> None:
     cause = CommonCause("settings", (Ask("R1", FAILS), Ask("R2", FAILS)), Fraction(1, 100))
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t1", "oc", unless=fails("R1")),
         trip("t2", "oc", unless=fails("R2")),
@@ -341,7 +341,7 @@ def test_r04_exclusive_modes_renormalise_and_end_with_a_yes() -> None:
     stuck, late = FailureMode.DOES_NOT_OPEN, FailureMode.OPENS_LATE
     carries = FailureMode.DOES_NOT_INTERRUPT
     modes = ((stuck, Fraction(1, 4)), (late, Fraction(1, 4)), (carries, Fraction(1, 2)))
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t", "oc"),
         gate("coil", "t"),
@@ -355,7 +355,7 @@ def test_r04_exclusive_modes_renormalise_and_end_with_a_yes() -> None:
 
 def test_r04_certain_failures_and_items_out_of_service_ask_nothing() -> None:
     """R1 fails for certain, R2 is out for work: R3 alone is a question."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         *(trip(f"t{n}", "oc", unless=fails(f"R{n}")) for n in (1, 2, 3)),
         gate("coil", "t1", "t2", "t3"),
@@ -369,7 +369,7 @@ def test_r04_certain_failures_and_items_out_of_service_ask_nothing() -> None:
 
 def test_r04_what_the_study_observes_is_asked_though_the_breaker_is_committed() -> None:
     """t2 adds nothing to the openings, but the study wants to know whether it operated."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc1", "F1.CT", 20),
         sense("oc2", "F1.CT", 40),
         trip("t1", "oc1"),
@@ -386,7 +386,7 @@ def test_r04_what_the_study_observes_is_asked_though_the_breaker_is_committed() 
 
 def test_r04_an_answer_given_for_what_is_not_asked_changes_nothing() -> None:
     """R2 in the example of the committed breaker, whatever is answered for it."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc1", "F1.CT", 20),
         sense("oc2", "F1.CT", 40),
         trip("t1", "oc1", unless=fails("R1")),

@@ -37,7 +37,7 @@ def full_path() -> Case:
         Component("C1", ComponentKind.COIL, ((FAILS, 1e-3),)),
         Component("CB1", ComponentKind.BREAKER, ((STUCK, 1e-2),)),
     ]
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t", "oc", unless=(*fails("R1"), *DC)),
         gate("coil", "t", unless=(*fails("C1"), *DC)),
@@ -67,7 +67,7 @@ def test_r06_a_second_coil_opens_it_unless_the_mechanism_is_stuck() -> None:
         Component("C2", ComponentKind.COIL, ((FAILS, 1e-3),)),
         Component("CB1", ComponentKind.BREAKER, ((STUCK, 1e-2),)),
     ]
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t", "oc"),
         gate("coil1", "t", unless=fails("C1")),
@@ -83,7 +83,7 @@ def test_r06_a_second_coil_opens_it_unless_the_mechanism_is_stuck() -> None:
 
 def test_r06_an_energised_coil_commits_the_breaker_though_the_trip_falls_away() -> None:
     """The trip is a pulse of 5 ms, from 20 to 25; the breaker opens at 70 all the same."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         timer("over", "oc", 5),
         trip("t", "oc", Not("over"), k=2),
@@ -97,7 +97,7 @@ def test_r06_an_energised_coil_commits_the_breaker_though_the_trip_falls_away() 
 
 def test_r06_a_pulse_of_no_length_commits_too() -> None:
     """The trip lasts one pass of the instant 20: t operates in pass 0, over in pass 1 ends it."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         timer("over", "oc", 0),
         trip("t", "oc", Not("over"), k=2),
@@ -112,7 +112,7 @@ def test_r06_a_pulse_of_no_length_commits_too() -> None:
 def test_r05_one_battery_takes_everything_that_hangs_on_it() -> None:
     """DC of F1 also feeds its second set; the back-up at IN hangs on another one: 20 + 400, open at 470."""
     components = [Component("DC", ComponentKind.DC, ((LOST, 1e-4),))]
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t1", "oc", unless=DC),
         trip("t2", "oc", unless=DC),

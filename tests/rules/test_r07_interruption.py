@@ -1,10 +1,13 @@
-"""R7: a breaker carries until its interrupting time; one that opens but does not interrupt shows 52b and still carries."""
+"""R7: a breaker carries until its interrupting time.
+
+One that opens but does not interrupt shows 52b and still carries.
+"""
 
 from __future__ import annotations
 
 from schemesim.engine.case import Case
 from schemesim.engine.outcome import Status
-from schemesim.scheme.model import Component, ComponentKind, FailureMode, Not, Role
+from schemesim.scheme.model import Block, Component, ComponentKind, FailureMode, Not, Role
 from tests.rules.hand import at, breaker, case, gate, openings, play, radial, sense, timer, times, trip
 
 CARRIES, LATE = FailureMode.DOES_NOT_INTERRUPT, FailureMode.OPENS_LATE
@@ -13,7 +16,7 @@ CARRIES, LATE = FailureMode.DOES_NOT_INTERRUPT, FailureMode.OPENS_LATE
 def failing() -> Case:
     """F1 trips at 20. Two back-ups at IN: by current after 150 ms from 20, by 52a after 150 ms from 20."""
     modes = ((CARRIES, 0.01), (LATE, 0.01))
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t", "oc"),
         gate("coil", "t"),
@@ -64,7 +67,7 @@ def test_r07_one_that_opens_but_does_not_interrupt_shows_52b_and_still_carries()
 
 def test_r07_52b_as_an_inverted_input_follows_the_auxiliary_contact() -> None:
     """A timer of 100 ms on 52b starts at 75 and runs out at 175; it trips IN.CB, open at 225."""
-    blocks = [
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t", "oc"),
         gate("coil", "t"),

@@ -74,7 +74,7 @@ def test_r08_a_source_in_the_zone_of_the_fault_is_cleared_by_its_own_trip() -> N
     """A generator on F1 with a trip (field, prime mover) of 200 ms from 20: cleared at 220, not at 70."""
     plant = radial()
     plant = Plant(plant.sections, plant.devices, (*plant.sources, Source(name="G1", section="F1", trips=True)))
-    blocks = [
+    blocks: list[Block] = [
         *each_end({"F1.CB": 50}),
         sense("87", InZone(frozenset({"F1"}), ("F1.CT",))),
         trip("G1.t", "87"),
@@ -96,7 +96,7 @@ def test_r08_a_breaker_open_before_the_event_neither_feeds_nor_trips() -> None:
     plant = radial()
     devices = tuple(replace(d, closed=d.name != "F1.CB") for d in plant.devices)
     plant = Plant(plant.sections, devices, plant.sources)
-    blocks = [
+    blocks: list[Block] = [
         sense("87", InZone(frozenset({"B"}), ("IN.CT",))),
         trip("t87", "87"),
         trip("if closed", "87", "F1.CB", k=2),
@@ -126,7 +126,7 @@ def test_r17_a_fault_where_two_protected_zones_overlap_trips_both(
 
     Between CB and CT, on F1.c, both see the fault: both trip, none waits for the other.
     """
-    blocks = [
+    blocks: list[Block] = [
         sense("87B", InZone(frozenset({"B", "F1.c"}), ("IN.CT",)), 25, 0),
         sense("87F", InZone(frozenset({"F1", "F1.c"}), ("IN.CT",)), 20, 0),
         trip("tB", "87B"),

@@ -22,8 +22,8 @@ def tripped(end: str, by: str, opens: float = 50) -> list[Block]:
 
 
 def test_r09_an_element_resets_when_its_infeed_goes() -> None:
-    """F1 opens at 70; the back-up at IN, picked up at 20 with 400 ms to run, loses its current: off at 80, margin 340."""
-    blocks = [
+    """F1 opens at 70; the back-up at IN (on at 20, 400 ms to run) loses its current: off at 80, margin 340."""
+    blocks: list[Block] = [
         sense("oc", "F1.CT"),
         trip("t", "oc"),
         gate("coil", "t"),
@@ -48,7 +48,7 @@ def test_r09_an_element_that_saw_the_fault_behind_it_sees_it_ahead_after_another
     R: behind it. L1b trips at 20 and opens at 70; now the only way is L2, S, L1: 110 km ahead.
     It picks up at 70 + 20 = 90 and trips L2b, open at 140. L1a is slow (100 ms): open at 120, too late.
     """
-    blocks = [
+    blocks: list[Block] = [
         *tripped("L1a", "a", opens=100),
         forward("a", "L1a", 110),
         *tripped("L1b", "b"),
@@ -64,7 +64,7 @@ def test_r09_an_element_that_saw_the_fault_behind_it_sees_it_ahead_after_another
 
 def test_r09_it_resets_if_the_fault_is_cleared_before_it_has_operated() -> None:
     """The same with L1a opening at 80: the element saw the fault ahead from 70 to 80, 10 of its 20 ms."""
-    blocks = [
+    blocks: list[Block] = [
         *tripped("L1a", "a", opens=60),
         forward("a", "L1a", 110),
         *tripped("L1b", "b"),
@@ -101,7 +101,7 @@ def test_r09_a_reverse_element_holds_and_lets_go_the_other_way_round() -> None:
     90; with it, the fault is cleared at 120 (L1a) and z2 is off at 130 before the block falls away.
     """
     reverse = sense("rev", Reach((Terminal("L2b.CT", "L2"),), 150.0, Direction.REVERSE), 5, 10)
-    blocks = [
+    blocks: list[Block] = [
         *tripped("L1a", "a", opens=100),
         forward("a", "L1a", 110),
         *tripped("L1b", "b"),
