@@ -9,10 +9,12 @@ from schemesim.plant.terminals import Terminal
 from schemesim.plant.zones import around
 from schemesim.scheme import functions as fn
 from schemesim.scheme.build import SchemeBuilder
-from schemesim.scheme.conditions import Direction, InZone, Reach
-from schemesim.scheme.elements import Element, Side, coil_of, station_of, transfer_trip
-from schemesim.scheme.model import ComponentKind, Role
+from schemesim.scheme.conditions import Direction, InZone
+from schemesim.scheme.elements import Element
+from schemesim.scheme.functions import DistanceNeeds
+from schemesim.scheme.model import ComponentKind, Input, Role
 from schemesim.scheme.policy import Policy, Start
+from schemesim.scheme.tripping import Path, in_station, path_of, station_of, trip_all
 
 
 def dress_local_backup(b: SchemeBuilder, e: Element) -> None:
@@ -28,39 +30,34 @@ def dress_local_backup(b: SchemeBuilder, e: Element) -> None:
     for n, side in enumerate(e.sides):
         group = f"{side.station}/{e.name}"
         host = b.host(f"{group}/relay local {n + 1}", side.station, lb.dc, "local")
-        unless = [b.core(t.ct, lb.core, f"local back-up of {e.name!r}") for t in side.terminals]
-        cts = tuple(t.ct for t in side.terminals)
+        what = f"local back-up of {e.name!r}"
+        line = e.kind is SectionKind.LINE
+        needs = DistanceNeeds(
+            side.terminals,
+            tuple(b.core(t.ct, lb.core, what) for t in side.terminals),
+            b.winding(side.station, e.name, lb.winding, what) if line else None,
+            e.policy.vt_supervision,
+        )
         base = f"{group}/local {n + 1}"
-        if e.kind is SectionKind.LINE:
-            winding = b.winding(side.station, e.name, lb.winding, f"local back-up of {e.name!r}")
-            if winding is not None:
-                unless.append(winding)
+        element: Input
+        if line:
             reach = 1.1 * b.plant.section[e.name].length
-            element = fn.sense(b, f"{base} 67", Reach(side.terminals, reach, Direction.FORWARD), times)
+            element = fn.distance_zone(b, f"{base} 67", reach, needs, host, times)
         else:
-            element = fn.sense(b, f"{base} 67", InZone(e.object.zone, cts), times)
+            element = fn.sense(b, f"{base} 67", InZone(e.object.zone, tuple(t.ct for t in side.terminals)), times)
         waited = fn.delayed(b, f"{base} 67 timer", element, lb.delay)
         mark = e.contact("67", Role.LOCAL, host)
-        forward = fn.trip_output(b, f"{base} 67 trip", (waited,), host, mark, times, unless=unless)
-        back = fn.sense(b, f"{base} 67 reverse", Reach(side.terminals, 0.0, Direction.REVERSE), times)
+        forward = fn.trip_output(b, f"{base} 67 trip", (waited,), host, mark, times, unless=needs.unless)
+        back = fn.distance_zone(b, f"{base} 67 reverse", 0.0, needs, host, times, direction=Direction.REVERSE)
         waited = fn.delayed(b, f"{base} 67 reverse timer", back, lb.bus_delay)
-        mark = e.contact("67 reverse", Role.LOCAL, host, _behind(b, side))
-        reverse = fn.trip_output(b, f"{base} 67 reverse trip", (waited,), host, mark, times, unless=unless)
+        mark = e.contact("67 reverse", Role.LOCAL, host, e.object.zone | in_station(b, side.station))
+        reverse = fn.trip_output(b, f"{base} 67 reverse trip", (waited,), host, mark, times, unless=needs.unless)
         for signal in (forward, reverse):
-            _local(b, e, side, signal, lb.coil)
-
-
-def _local(b: SchemeBuilder, e: Element, side: Side, signal: str, coil: str) -> None:
-    for target in e.targets:
-        mine = target in side.breakers or (target not in b.plant.device and station_of(b, target) == side.station)
-        if mine:
-            b.trip(signal, target, coil_of(b, target, coil), e.policy.dc_of_coil(coil))
-
-
-def _behind(b: SchemeBuilder, side: Side) -> frozenset[str]:
-    """Sections of the zones on both sides of the breakers of a side."""
-    zones = {z for name in side.breakers for z in b.zones.sides[name]}
-    return frozenset().union(*(b.zones.members[z] for z in zones))
+            for breaker in side.breakers:
+                b.trip(signal, breaker, lb.coil, e.policy.dc_of_coil(lb.coil))
+        units = [t for t in e.targets if t not in b.plant.device and station_of(b, t) == side.station]
+        for unit in units:  # a fault behind its breaker is no reason to trip a unit
+            b.trip(forward, unit, lb.coil, e.policy.dc_of_coil(lb.coil))
 
 
 def dress_end_faults(b: SchemeBuilder, elements: Sequence[Element], policies: Mapping[str, Policy]) -> None:
@@ -84,13 +81,20 @@ def dress_end_faults(b: SchemeBuilder, elements: Sequence[Element], policies: Ma
         out = fn.end_fault(b, breaker, ct, core, host, policy.times.end_fault, policy.times.overcurrent)
         own = [x.name for x in b.plant.sources if x.trips and b.zones.of[x.section] == ct_zone]
         others = sorted(b.zones.border[ct_zone] - {breaker})
-        _trip_all(b, out, [*others, *own], device.station, s.coil, s.channel, policy)
+        trip_all(b, out, device.station, [*others, *own], path_of(s), policy)
 
 
 def dress_breaker_failure(
-    b: SchemeBuilder, cts: Mapping[str, Terminal], policies: Mapping[str, Policy]
+    b: SchemeBuilder, elements: Sequence[Element], policies: Mapping[str, Policy]
 ) -> None:
-    """Breaker failure of every breaker that anything trips (rules R11, R12)."""
+    """Breaker failure of every breaker that anything trips (rules R11, R12).
+
+    Its detector measures a CT beside the breaker (the first by name where there are two): where
+    that CT stands on one side only, current in the dead zone between counts as the breaker's.
+    """
+    cts: dict[str, str] = {}
+    for t in sorted(t for e in elements for t in e.object.terminals):
+        cts.setdefault(t.breaker, t.ct)
     initiated = {breaker: tuple(sorted(signals)) for breaker, signals in b.initiates.items()}
     for breaker, signals in sorted(initiated.items()):
         if breaker not in b.plant.device:
@@ -104,11 +108,12 @@ def dress_breaker_failure(
             continue
         station = b.plant.device[breaker].station
         host = b.host(f"{breaker}/BF relay", station, bf.dc, "breaker failure")
-        core = b.core(cts[breaker].ct, bf.core, f"breaker failure of {breaker!r}")
+        core = b.core(cts[breaker], bf.core, f"breaker failure of {breaker!r}")
         b.component(breaker, ComponentKind.BREAKER, station)
         out, retrip = fn.breaker_failure(
             b,
             breaker,
+            cts[breaker],
             signals,
             core,
             host,
@@ -125,28 +130,5 @@ def dress_breaker_failure(
         zones = b.zones.sides.get(breaker, ())
         own = [s.name for s in b.plant.sources if s.trips and b.zones.of[s.section] in zones]
         targets = [*sorted(around(b.zones, breaker)), *own]
-        _trip_all(
-            b, out, targets, station, bf.coil, bf.channel, policy, remote=bf.transfer_trip, initiates=False
-        )
-
-
-def _trip_all(
-    b: SchemeBuilder,
-    signal: str,
-    targets: Sequence[str],
-    station: str,
-    coil: str,
-    channel: str,
-    policy: Policy,
-    *,
-    remote: bool = True,
-    initiates: bool = True,
-) -> None:
-    """Trip breakers here directly and those elsewhere by transfer trip, one for each station."""
-    for target in targets:
-        where = station_of(b, target)
-        if where != station and not remote:
-            continue
-        wire = signal if where == station else transfer_trip(b, signal, station, where, channel, policy)
-        dc = policy.dc_of_coil(coil)
-        b.trip(wire, target, coil_of(b, target, coil), dc, initiates=initiates)
+        path = Path(bf.coil, bf.dc, bf.lockout, bf.channel)
+        trip_all(b, out, station, targets, path, policy, remote=bf.transfer_trip, initiates=False)

@@ -4,12 +4,13 @@ from __future__ import annotations
 
 from dataclasses import dataclass, replace
 
-from schemesim.errors import ErrorList
+from schemesim.errors import ErrorList, reject
 from schemesim.plant.model import Plant
 from schemesim.plant.zones import Zones, isolation_zones
 from schemesim.scheme.delays import Delay, Fixed
 from schemesim.scheme.failure_data import FailureData
 from schemesim.scheme.model import (
+    MODES,
     Ask,
     Block,
     Breaker,
@@ -54,8 +55,11 @@ class SchemeBuilder:
     (contact AND DC AND coil, rule R6) and the breaker blocks.
     """
 
-    def __init__(self, plant: Plant, data: FailureData | None = None) -> None:
+    def __init__(
+        self, plant: Plant, data: FailureData | None = None, out_of_service: frozenset[str] = frozenset()
+    ) -> None:
         self.plant = plant
+        self.out_of_service = out_of_service
         self.zones: Zones = isolation_zones(plant)
         self.data = data or FailureData()
         self.errors = ErrorList()
@@ -77,8 +81,9 @@ class SchemeBuilder:
         return name
 
     def has(self, component: str, mode: FailureMode) -> bool:
-        """Whether a component can fail in a mode at all."""
-        return self.components[component].probability(mode) > 0
+        """Whether a component can fail in a mode at all, or is out of service in it."""
+        c = self.components[component]
+        return c.probability(mode) > 0 or (component in self.out_of_service and mode is MODES[c.kind][0])
 
     def relay(self, name: str, station: str, group: str = "") -> str:
         """Have a relay; relays of one group share common causes."""
@@ -119,8 +124,15 @@ class SchemeBuilder:
     # --- blocks -----------------------------------------------------------------------
 
     def add(self, block: Block) -> str:
-        """Add a block; returns its name, which is its signal."""
-        self.blocks[block.name] = block
+        """Add a block; returns its name, which is its signal. The same block may be added twice.
+
+        Raises
+        ------
+        InputError
+            If another block has the name already.
+        """
+        if self.blocks.setdefault(block.name, block) != block:
+            raise reject("block name", block.name, "a name that stands for one thing only")
         return block.name
 
     def any_of(self, name: str, signals: list[Input] | tuple[Input, ...]) -> Input:
@@ -132,11 +144,13 @@ class SchemeBuilder:
     def trip(self, signal: str, breaker: str, coil: str, coil_dc: str, *, initiates: bool = True) -> None:
         """Wire a trip to a coil of a breaker; by default it initiates breaker failure too."""
         self.trips.setdefault(breaker, {}).setdefault(coil, {})[signal] = None
-        self.coil_dc.setdefault((breaker, coil), coil_dc)
+        fed = self.coil_dc.setdefault((breaker, coil), coil_dc)
+        if fed != coil_dc:
+            self.errors.add(f"coil {coil} of {breaker!r}", f"DC {coil_dc!r}", f"DC {fed!r} as in another policy")
         if initiates:
             self.initiates.setdefault(breaker, {})[signal] = None
 
-    def build(self, out_of_service: frozenset[str] = frozenset()) -> Scheme:
+    def build(self) -> Scheme:
         """The frozen scheme.
 
         Raises
@@ -158,7 +172,7 @@ class SchemeBuilder:
             components=tuple(components.values()),
             blocks=tuple(self.blocks.values()),
             common_causes=(*causes, *extra),
-            out_of_service=out_of_service,
+            out_of_service=self.out_of_service,
             intertrips=tuple((s, frozenset(names)) for s, names in self.intertrips.items()),
         )
 

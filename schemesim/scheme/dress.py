@@ -65,7 +65,7 @@ def dress(
     >>> scheme.contacts["Alder/F1/1 50 trip"].function
     '50'
     """
-    b = SchemeBuilder(plant, data)
+    b = SchemeBuilder(plant, data, out_of_service)
     special = dict(exceptions or {})
     objects = default_objects(plant)
     known = [o.element for o in objects] + list(plant.breakers)
@@ -83,7 +83,10 @@ def dress(
         else:
             dress_unit(b, e)
         dress_local_backup(b, e)
-    cts = {t.breaker: t for e in elements for t in e.object.terminals if t.breaker}
-    dress_end_faults(b, elements, {name: special.get(name, policy) for name in plant.breakers})
-    dress_breaker_failure(b, cts, {name: special.get(name, policy) for name in plant.breakers})
-    return b.build(out_of_service)
+    of_breaker = {name: special.get(name, policy) for name in plant.breakers}
+    b.breaker_times = {name: p.times.breaker for name, p in of_breaker.items()}
+    for s in plant.sources:
+        b.breaker_times[s.name] = special.get(s.section, policy).times.breaker
+    dress_end_faults(b, elements, of_breaker)
+    dress_breaker_failure(b, elements, of_breaker)
+    return b.build()

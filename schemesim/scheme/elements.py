@@ -22,6 +22,7 @@ from schemesim.scheme.model import (
     Role,
 )
 from schemesim.scheme.policy import LineScheme, Policy, ProtectionSet
+from schemesim.scheme.tripping import Path, in_station, locked_out, path_of, station_of, trip_all
 
 FUNCTION = {
     SectionKind.BUS: "87B",
@@ -89,11 +90,16 @@ def element_of(b: SchemeBuilder, o: ProtectedObject, policy: Policy) -> Element 
 
 
 def _sides(b: SchemeBuilder, o: ProtectedObject, zone: str) -> tuple[Side, ...]:
-    """Terminals grouped by the end of the element at which they stand."""
-    ends: dict[float, set[str]] = {}
+    """Terminals grouped by the end of the element at which they stand.
+
+    A line has an end for each place and station, a transformer one for each device it is joined by.
+    """
+    ends: dict[tuple[float, str], set[str]] = {}
+    by = {SectionKind.LINE: "station", SectionKind.TRANSFORMER: "name"}.get(b.plant.section[o.element].kind)
     for d in b.plant.at_section[o.element]:
         if d.closed:
-            ends.setdefault(d.a_at if d.a == o.element else d.b_at, set()).add(d.name)
+            at = d.a_at if d.a == o.element else d.b_at
+            ends.setdefault((at, getattr(d, by) if by else ""), set()).add(d.name)
     sides: list[Side] = []
     for _, devices in sorted(ends.items()):
         terminals, breakers = _behind(b, o, devices)
@@ -131,50 +137,6 @@ def _behind(b: SchemeBuilder, o: ProtectedObject, devices: set[str]) -> tuple[tu
     return tuple(sorted(found)), tuple(sorted(breakers))
 
 
-# --- tripping ---------------------------------------------------------------------------
-
-
-def trip_targets(b: SchemeBuilder, e: Element, signal: str, station: str, coil: str, channel: str) -> None:
-    """Trip every target of an element at a station, and by intertrip those elsewhere with no relay of its own."""
-    stations = {s.station for s in e.sides}
-    coil_dc = e.policy.dc_of_coil(coil)
-    for target in e.targets:
-        where = station_of(b, target)
-        if where == station:
-            b.trip(signal, target, coil_of(b, target, coil), coil_dc)
-        elif e.policy.intertrip and (where not in stations or e.kind is not SectionKind.LINE):
-            receipt = transfer_trip(b, signal, station, where, channel, e.policy)
-            b.trip(receipt, target, coil_of(b, target, coil), coil_dc)
-
-
-def coil_of(b: SchemeBuilder, target: str, coil: str) -> str:
-    """The coil of a target; a source's own trip has one only."""
-    return coil if target in b.plant.device else "1"
-
-
-def station_of(b: SchemeBuilder, target: str) -> str:
-    """Station of a breaker or of a source."""
-    device = b.plant.device.get(target)
-    return device.station if device is not None else b.plant.source[target].station
-
-
-def transfer_trip(
-    b: SchemeBuilder, signal: str, station: str, where: str, channel: str, policy: Policy, dc: str = "1"
-) -> str:
-    """Direct transfer trip: a trip sent over a channel to another station; returns the trip output there."""
-    first, second = sorted((station, where))
-    unit = b.component(f"{first}-{second}/channel {channel}", ComponentKind.CHANNEL, station)
-    path = ChannelPath(
-        unit, b.dc(station, dc), b.dc(where, dc), policy.times.channel, policy.times.channel_late_by
-    )
-    name = f"{signal} to {where}"
-    receipt = fn.received(b, f"{name} received", signal, path)
-    mark = Contact("transfer trip", Role.MAIN, beyond=Role.MAIN, station=where, element=where)
-    return b.add(
-        Gate(name=name, inputs=(receipt,), unless=(Ask(b.dc(where, dc), FailureMode.LOST),), contact=mark)
-    )
-
-
 # --- units: bus, transformer, generator, feeder -------------------------------------------
 
 
@@ -198,37 +160,30 @@ def dress_unit(b: SchemeBuilder, e: Element) -> None:
         mark = e.contact(function, Role.MAIN, host)
         outputs.append((s, fn.trip_output(b, f"{base} {function} trip", (signal,), host, mark, times, unless=unless)))
     through_lockout = p.lockout and e.kind is not SectionKind.FEEDER
-    for signal_out, coil, dc, lockout, channel in _voted(b, e, f"{station}/{e.name}", outputs):
-        out = signal_out
-        if through_lockout:
-            unit = b.component(f"{station}/{e.name}/86 {lockout}", ComponentKind.LOCKOUT, station)
-            name = f"{station}/{e.name}/86 {lockout}"
-            out = fn.lockout(b, name, out, unit, b.dc(station, dc), p.times.lockout)
-        trip_targets(b, e, out, station, coil, channel)
+    base = f"{station}/{e.name}"
+    wires = _voted(b, e, base, outputs)
+    if through_lockout:
+        wires = locked_out(b, base, station, wires, p.times.lockout)
+    for out, path in wires:
+        trip_all(b, out, station, e.targets, path, p, remote=p.intertrip)
     if p.remote_backup and e.kind in (SectionKind.TRANSFORMER, SectionKind.GENERATOR) and p.sets:
         _timed_backup(b, e, station)
 
 
 def _voted(
     b: SchemeBuilder, e: Element, base: str, outputs: list[tuple[ProtectionSet, str]]
-) -> list[tuple[str, str, str, str, str]]:
-    """Trips to wire: (signal, coil, DC, lockout, channel); sets on one lockout and coil share the wire."""
+) -> list[tuple[str, Path]]:
+    """Trips to wire and their paths; sets on one path share the wire."""
     if e.policy.votes > 1:
         voted = fn.vote(b, f"{base}/{e.policy.votes}oo{len(outputs)}", [o for _, o in outputs], e.policy.votes)
-        coils = sorted({s.coil for s, _ in outputs})
-        return [(voted, c, *_of_coil(outputs, c)) for c in coils]
-    wires: dict[tuple[str, str, str, str], list[Input]] = {}
+        return [(voted, path) for path in sorted({path_of(s) for s, _ in outputs})]
+    wires: dict[Path, list[Input]] = {}
     for s, out in outputs:
-        wires.setdefault((s.coil, s.dc, s.lockout, s.channel), []).append(out)
+        wires.setdefault(path_of(s), []).append(out)
     return [
-        (str(b.any_of(f"{base}/trip coil {key[0]} lockout {key[2]} dc {key[1]} channel {key[3]}", outs)), *key)
-        for key, outs in sorted(wires.items())
+        (str(b.any_of(f"{base}/trip coil {p.coil} lockout {p.lockout} dc {p.dc} channel {p.channel}", outs)), p)
+        for p, outs in sorted(wires.items())
     ]
-
-
-def _of_coil(outputs: list[tuple[ProtectionSet, str]], coil: str) -> tuple[str, str, str]:
-    s = next(s for s, _ in outputs if s.coil == coil)
-    return s.dc, s.lockout, s.channel
 
 
 def _timed_backup(b: SchemeBuilder, e: Element, station: str) -> None:
@@ -244,9 +199,9 @@ def _timed_backup(b: SchemeBuilder, e: Element, station: str) -> None:
         direction = Direction.REVERSE if e.kind is SectionKind.GENERATOR else Direction.FORWARD
         element = fn.sense(b, base, Reach(side.terminals, length, direction), p.times.overcurrent)
         waited = fn.delayed(b, f"{base} timer", element, p.reaches.transformer_backup_delay)
-        mark = e.contact("51", Role.LOCAL, host)
+        mark = e.contact("51", Role.LOCAL, host, e.object.zone | in_station(b, station))
         out = fn.trip_output(b, f"{base} trip", (waited,), host, mark, p.times.overcurrent, unless=unless)
-        trip_targets(b, e, out, station, s.coil, s.channel)
+        trip_all(b, out, station, e.targets, path_of(s), p, remote=p.intertrip)
 
 
 # --- lines --------------------------------------------------------------------------------
@@ -299,21 +254,17 @@ def _wire_end(
         wires = [(voted, s) for s in p.sets]
     else:
         wires = [(out, s) for s in p.sets for out in outputs[(n, s.label)]]
+    theirs = {t for other in e.sides for t in _own_targets(b, e, other)}
+    mine = _own_targets(b, e, side)
+    targets = [t for t in e.targets if t in mine or t not in theirs]
     for signal, s in wires:
-        for breaker in side.breakers:
-            b.trip(signal, breaker, s.coil, p.dc_of_coil(s.coil))
-        near = [t for t in e.targets if t not in b.plant.device and station_of(b, t) == side.station]
-        for source in near:
-            b.trip(signal, source, "1", p.dc_of_coil(s.coil))
-        elsewhere = {x for other in e.sides for x in other.breakers}
-        for target in e.targets:
-            if target in b.plant.device and target not in elsewhere and p.intertrip:
-                where = station_of(b, target)
-                if where == side.station:
-                    b.trip(signal, target, s.coil, p.dc_of_coil(s.coil))
-                else:
-                    receipt = transfer_trip(b, signal, side.station, where, s.channel, p)
-                    b.trip(receipt, target, s.coil, p.dc_of_coil(s.coil))
+        trip_all(b, signal, side.station, targets, path_of(s), p, remote=p.intertrip)
+
+
+def _own_targets(b: SchemeBuilder, e: Element, side: Side) -> frozenset[str]:
+    """What the relays of one end of a line trip at their station: its breakers, and sources inside the line's zone."""
+    near = (t for t in e.targets if t not in b.plant.device and station_of(b, t) == side.station)
+    return frozenset((*near, *side.breakers))
 
 
 def _line_end(b: SchemeBuilder, e: Element, s: ProtectionSet, side: Side) -> _LineEnd:
@@ -395,7 +346,10 @@ def _line_scheme(
             block = str(b.any_of(f"{name} block", list(receipts[n])))
             signal = fn.blocking(b, name, zone_2[n], block, e.policy.times.coordinating)
         else:
-            inputs = (zone_2[n], *receipts[n])
+            received = list(receipts[n])
+            if s.line is LineScheme.PERMISSIVE_UNDERREACH:  # one end that sees it in zone 1 is proof enough
+                received = [str(b.any_of(f"{name} permitted", list(receipts[n])))]
+            inputs = (zone_2[n], *received)
             signal = b.add(Gate(name=name, inputs=inputs, k=len(inputs)))
         mark = e.contact("85-21", Role.MAIN, end.host)
         times = e.policy.times.distance

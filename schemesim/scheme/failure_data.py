@@ -11,6 +11,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from fnmatch import fnmatchcase
 
+from schemesim.errors import reject
 from schemesim.scheme.model import (
     MODES,
     Ask,
@@ -93,6 +94,10 @@ class FailureData:
     overrides: tuple[Override, ...] = ()
     relay_beta: float = 0.0
     common_causes: tuple[CommonCause, ...] = ()
+
+    def __post_init__(self) -> None:
+        if not 0 <= self.relay_beta <= 1:
+            raise reject("relay_beta", self.relay_beta, "a share from 0 to 1")
 
     def component(self, name: str, kind: ComponentKind, station: str = "") -> Component:
         """The component with its data."""

@@ -204,7 +204,7 @@ class ChannelPath:
 
 
 def received(b: SchemeBuilder, name: str, sent: Input, path: ChannelPath) -> str:
-    """The receipt at the far end of a channel of what is sent at this one."""
+    """The receipt at the far end of a channel of what is sent at this one: its rise and its fall take the same way."""
     lost = (
         Ask(path.unit, FailureMode.LOST),
         Ask(path.sending_dc, FailureMode.LOST),
@@ -217,10 +217,13 @@ def received(b: SchemeBuilder, name: str, sent: Input, path: ChannelPath) -> str
     if b.has(path.unit, FailureMode.LATE):
         in_time = (*lost, late)
         b.add(Gate(name=f"{name} sent, late", inputs=(sent,), unless=lost, given=(late,)))
-        held = b.add(Timer(name=f"{name} held", input=f"{name} sent, late", pick_up=path.late_by, drop_out=AT_ONCE))
-        sources.append(b.add(Timer(name=f"{name} under way, late", input=held, pick_up=path.delay, drop_out=AT_ONCE)))
+        late_in = f"{name} sent, late"
+        held = b.add(Timer(name=f"{name} held", input=late_in, pick_up=path.late_by, drop_out=path.late_by))
+        late_out = f"{name} under way, late"
+        sources.append(b.add(Timer(name=late_out, input=held, pick_up=path.delay, drop_out=path.delay)))
     b.add(Gate(name=f"{name} sent", inputs=(sent,), unless=in_time))
-    sources.append(b.add(Timer(name=f"{name} under way", input=f"{name} sent", pick_up=path.delay, drop_out=AT_ONCE)))
+    way = Timer(name=f"{name} under way", input=f"{name} sent", pick_up=path.delay, drop_out=path.delay)
+    sources.append(b.add(way))
     if path.false_when and b.has(path.unit, FailureMode.FALSE_RECEIPT):
         blind = (Ask(path.receiving_dc, FailureMode.LOST),)
         sources.append(
@@ -252,17 +255,22 @@ def blocking(b: SchemeBuilder, name: str, element: Input, block: str, coordinati
 
 @dataclass(frozen=True, slots=True)
 class BreakerFailureTimes:
-    """Times of breaker-failure protection; ``retrip`` None: no retrip."""
+    """Times of breaker-failure protection; ``retrip`` None: no retrip.
+
+    A trip once given lasts ``dwell`` at least, long enough for a lockout relay to operate.
+    """
 
     timer: Delay = Fixed(150_000)
     retrip: Delay | None = AT_ONCE
     detector_operate: Delay = Fixed(5_000)
     detector_reset: Delay = Fixed(20_000)
+    dwell: Delay = Fixed(100_000)
 
 
 def breaker_failure(
     b: SchemeBuilder,
     breaker: str,
+    ct: str,
     initiate: Sequence[str],
     core: Ask,
     host: Host,
@@ -271,7 +279,7 @@ def breaker_failure(
     start_with_current: bool = False,
     auxiliary: bool = False,
 ) -> tuple[str, str | None]:
-    """Breaker failure (50BF, rule R11) of one breaker.
+    """Breaker failure (50BF, rule R11) of one breaker, by the current in a CT beside it.
 
     Sealed in by any trip until the current detector resets; operates when the timer has
     expired AND current persists. ``start_with_current``: the timer is started by initiate AND
@@ -287,7 +295,7 @@ def breaker_failure(
     b.add(
         Sense(
             name=f"{name} current",
-            condition=Current((breaker,)),
+            condition=Current((ct,)),
             operate=times.detector_operate,
             reset=times.detector_reset,
         )
@@ -321,7 +329,8 @@ def breaker_failure(
     b.add(Gate(name=f"{name} wanted", inputs=(f"{name} timer", persists), k=2))
     mark = Contact("50BF", Role.BREAKER_FAILURE, beyond=Role.BREAKER_FAILURE, relay=host.relay,
                    chain=host.chain, element=breaker, station=host.station)  # fmt: skip
-    return trip_output(b, name, (f"{name} wanted",), host, mark, element), retrip
+    held = delayed(b, f"{name} held", f"{name} wanted", AT_ONCE, times.dwell)
+    return trip_output(b, name, (held,), host, mark, element), retrip
 
 
 def end_fault(

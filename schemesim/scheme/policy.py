@@ -66,14 +66,20 @@ class ProtectionSet:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class LocalBackup:
-    """Local back-up on a relay of its own: directional, timed, reverse-looking for its bus."""
+    """Local back-up on a relay of its own: directional, timed, reverse-looking for its bus.
+
+    ``bus_delay`` of the reverse-looking element has to outlast breaker failure around the bus
+    and to end, breaker and reset included, before zone 2 of the remote ends runs out, or these
+    clear the bus instead. ``delay`` of the forward element, which sees past the remote bus, has to
+    outlast the local back-up there.
+    """
 
     core: str = "3"
     winding: str = "1"
     dc: str = "1"
     coil: str = "1"
-    delay: Delay = Fixed(300_000)
-    bus_delay: Delay = Fixed(400_000)
+    delay: Delay = Fixed(400_000)
+    bus_delay: Delay = Fixed(270_000)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
