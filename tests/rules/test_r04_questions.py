@@ -196,7 +196,8 @@ def test_r04_a_tie_goes_to_main_though_the_back_up_stands_nearer_the_coil() -> N
         trip("b", "oc", unless=fails("RB"), role=Role.LOCAL),
         trip("m", "oc", unless=fails("RM"), role=Role.MAIN),
         gate("m2", "m", unless=fails("RX")),
-        gate("coil", "b", "m2"),
+        gate("either", "b", "m2"),
+        gate("coil", "either"),
         breaker("F1.CB", "coil"),
     ]
     bound = case(radial(), blocks, [relay("RB"), relay("RM"), relay("RX")])
@@ -296,11 +297,12 @@ def test_r04_two_out_of_three_asks_no_more_than_it_needs() -> None:
 
 
 def test_r04_a_latch_that_is_sealed_in_asks_nothing_more() -> None:
-    """Set by R1 at 20 and for good; R2 would set it again at 40: not asked."""
+    """Set by R1 at 20 and for good; R1 lets go at 30, and R2 would set it again at 40: not asked."""
     blocks: list[Block] = [
         sense("oc1", "F1.CT", 20),
         sense("oc2", "F1.CT", 40),
-        gate("s1", "oc1", unless=fails("R1")),
+        timer("over", "oc1", 10),
+        gate("s1", "oc1", Not("over"), k=2, unless=fails("R1")),
         gate("s2", "oc2", unless=fails("R2")),
         gate("set", "s1", "s2"),
         Latch(name="l", set="set"),

@@ -221,6 +221,9 @@ def test_a_gate_true_for_good_stays_a_signal_of_the_case() -> None:
         ("oc", "z", {"F1.CB": (20, 70)}),  # reset that cannot come
         ("oc", Not("z"), {"IN.CB": (30, 80)}),  # reset for good
         ("z", "oc", {"IN.CB": (30, 80)}),  # set that cannot come
+        (Not("F2.CB"), "oc", {"IN.CB": (30, 80)}),  # nor this one: nothing trips F2.CB
+        ("oc", Not("F2.CB"), {"F1.CB": (20, 70)}),
+        ("oc", "F2.CB", {"IN.CB": (30, 80)}),
         (Not("z"), Not("z"), {"IN.CB": (30, 80)}),  # both for good: reset wins
     ],
 )
@@ -232,6 +235,8 @@ def test_a_latch_keeps_its_places_where_an_input_cannot_change(
     blocks: list[Block] = [
         sense("oc", "F1.CT"),
         near,
+        gate("never"),
+        breaker("F2.CB", "never"),
         timer("later", "oc", 10),
         Latch(name="l", set=set_, reset=reset),
         timer("steady", "l", 0, 0),
