@@ -16,7 +16,7 @@ from typing import NamedTuple
 import networkx as nx
 
 from schemesim.engine.program import Kind, Program, Question, spread
-from schemesim.engine.sensing import Event, Sensed, Sensing
+from schemesim.engine.sensing import Event, NoFault, Sensed, Sensing
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
 from schemesim.plant.zones import Duty, duty
@@ -207,6 +207,9 @@ def bind(
             raise reject("observed output", name, "the name of a gate", tip=nearest(name, known))
     if isinstance(event, Location) and event.section not in program.plant.section:
         raise reject("section", event.section, "a section", tip=nearest(event.section, program.plant.section))
+    if isinstance(event, NoFault) and event.component not in program.scheme.component:
+        tip = nearest(event.component, program.scheme.component)
+        raise reject("component that trips with no fault", event.component, "a component", tip=tip)
     start = sensing.candidates(program, event, dispatch)
     on = spread(program.blocks, program.inputs, program.consumers, start, program.free)
     possible = on | program.free

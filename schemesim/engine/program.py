@@ -14,11 +14,11 @@ from enum import IntEnum
 
 import networkx as nx
 
-from schemesim.errors import ErrorList, reject
+from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Plant
 from schemesim.plant.paths import PathGraph
 from schemesim.plant.zones import Zones, isolation_zones
-from schemesim.scheme.conditions import Always, Current, External, OutOfZone
+from schemesim.scheme.conditions import Always, Current, External, InZone, OutOfZone, Reach, Undervoltage
 from schemesim.scheme.model import (
     MODES,
     Ask,
@@ -118,9 +118,13 @@ def compile_scheme(plant: Plant, scheme: Scheme) -> Program:
     ------
     InputError
         If gates form a loop (it is named), a breaker block is neither a breaker nor a
-        source with a trip, or a coil is fed by an auxiliary contact with no gate between.
+        source with a trip, a coil is fed by an auxiliary contact with no gate between, or an
+        element looks at a device or section that is not in the plant.
     """
-    _check_breakers(plant, scheme)
+    errors = ErrorList()
+    _check_breakers(errors, plant, scheme)
+    _check_conditions(errors, plant, scheme)
+    errors.raise_if_any()
     level = _gate_levels(scheme)
     blocks = tuple(
         sorted(scheme.blocks, key=lambda b: (isinstance(b, Gate), level.get(b.name, 0), b.name))
@@ -154,8 +158,7 @@ def compile_scheme(plant: Plant, scheme: Scheme) -> Program:
     )
 
 
-def _check_breakers(plant: Plant, scheme: Scheme) -> None:
-    errors = ErrorList()
+def _check_breakers(errors: ErrorList, plant: Plant, scheme: Scheme) -> None:
     operable = set(plant.breakers) | set(plant.tripping_sources)
     for b in scheme.blocks:
         if isinstance(b, Breaker):
@@ -164,7 +167,35 @@ def _check_breakers(plant: Plant, scheme: Scheme) -> None:
             for name in inputs_of(b):
                 if isinstance(scheme.block[signal_of(name)], Breaker):
                     errors.add(f"coil of breaker {b.name!r}", signal_of(name), "a gate, timer or latch between")
-    errors.raise_if_any()
+
+
+def _check_conditions(errors: ErrorList, plant: Plant, scheme: Scheme) -> None:
+    """Devices and sections that elements look at have to be there: else they would never pick up."""
+    devices = {*plant.device, *plant.source}
+    for b in scheme.blocks:
+        if not isinstance(b, Sense):
+            continue
+        looks_at: tuple[str, ...] = ()
+        sections: frozenset[str] = frozenset()
+        match b.condition:
+            case Current(devices=looks_at):
+                pass
+            case InZone(sections=sections, cts=looks_at):
+                pass
+            case OutOfZone(sections=sections, ct=ct):
+                looks_at = (ct,)
+            case Reach(terminals=terminals):
+                looks_at = tuple(t.ct for t in terminals)
+                for t in terminals:
+                    d = plant.device.get(t.ct)
+                    if d is not None and t.inner not in (d.a, d.b):
+                        errors.add(f"inner side of {t.ct!r} in block {b.name!r}", t.inner, f"{d.a!r} or {d.b!r}")
+            case Undervoltage(section=section):
+                sections = frozenset({section})
+        for what, names, known in (("device", looks_at, devices), ("section", sections, plant.section)):
+            for name in sorted(set(names).difference(known)):
+                tip = nearest(name, known)
+                errors.add(f"{what} in block {b.name!r}", name, f"the name of a {what} of the plant", tip=tip)
 
 
 def _gate_levels(scheme: Scheme) -> dict[str, int]:

@@ -13,7 +13,7 @@ from schemesim.engine.sensing import LogicalSensing, NoFault
 from schemesim.errors import InputError
 from schemesim.plant.model import Dispatch, Location, Plant, Source
 from schemesim.plant.terminals import Terminal
-from schemesim.scheme.conditions import InZone, NoFaultTrip, Reach
+from schemesim.scheme.conditions import InZone, NoFaultTrip, OutOfZone, Reach, Undervoltage
 from schemesim.scheme.model import (
     Ask,
     Block,
@@ -139,6 +139,26 @@ def test_every_mistake_about_breakers_is_told_at_once() -> None:
         ("breaker block 'nowhere'", "nowhere"),
         ("breaker block 'G'", "G"),  # a source that has no trip of its own
     }
+
+
+def test_an_element_that_looks_at_nothing_there_is_refused() -> None:
+    blocks = (
+        sense("a", "F1.CTx"),
+        sense("b", InZone(frozenset({"B", "Q"}), ("F1.CT",))),
+        sense("c", Reach((Terminal("F1.CT", "F2"), Terminal("Z.CT", "F2")), 1.0)),
+        sense("d", Undervoltage("Q", 1.0)),
+        sense("e", OutOfZone(frozenset({"B"}), "Z.CT")),
+    )
+    with pytest.raises(InputError) as caught:
+        compile_scheme(radial(), Scheme((), blocks))
+    assert [(p.subject, p.value) for p in caught.value.problems] == [
+        ("device in block 'a'", "F1.CTx"),
+        ("section in block 'b'", "Q"),
+        ("inner side of 'F1.CT' in block 'c'", "F2"),
+        ("device in block 'c'", "Z.CT"),
+        ("section in block 'd'", "Q"),
+        ("device in block 'e'", "Z.CT"),
+    ]
 
 
 def test_what_may_be_true_anywhere_or_at_rest_is_free_of_the_event() -> None:
@@ -284,6 +304,8 @@ def test_binding_refuses_names_that_are_not_there() -> None:
         bind(program, Location("F1x"), LogicalSensing())
     with pytest.raises(InputError, match="observed output"):
         bind(program, Location("F1"), LogicalSensing(), observe={"oc"})
+    with pytest.raises(InputError, match="component that trips"):
+        bind(program, NoFault("R1"), LogicalSensing())
     with pytest.raises(InputError, match="dispatch"):
         bind(program, Location("F1"), LogicalSensing(), dispatch="night")
 
