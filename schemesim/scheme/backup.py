@@ -39,19 +39,19 @@ def dress_local_backup(b: SchemeBuilder, e: Element) -> None:
             e.policy.vt_supervision,
         )
         base = f"{group}/local {n + 1}"
-        element: Input
+        ways: list[Input]
         if line:
             reach = 1.1 * b.plant.section[e.name].length
-            element = fn.distance_zone(b, f"{base} 67", reach, needs, host, times)
+            ways = fn.zone_operated(b, fn.distance_zone(b, f"{base} 67", reach, needs, host, times), lb.delay)
         else:
-            element = fn.sense(b, f"{base} 67", InZone(e.object.zone, tuple(t.ct for t in side.terminals)), times)
-        waited = fn.delayed(b, f"{base} 67 timer", element, lb.delay)
+            inside = InZone(e.object.zone, tuple(t.ct for t in side.terminals))
+            ways = [fn.delayed(b, f"{base} 67 timer", fn.sense(b, f"{base} 67", inside, times), lb.delay)]
         mark = e.contact("67", Role.LOCAL, host)
-        forward = fn.trip_output(b, f"{base} 67 trip", (waited,), host, mark, times, unless=needs.unless)
+        forward = fn.trip_output(b, f"{base} 67 trip", ways, host, mark, times, unless=needs.unless)
         back = fn.distance_zone(b, f"{base} 67 reverse", 0.0, needs, host, times, direction=Direction.REVERSE)
-        waited = fn.delayed(b, f"{base} 67 reverse timer", back, lb.bus_delay)
+        ways = fn.zone_operated(b, back, lb.bus_delay)
         mark = e.contact("67 reverse", Role.LOCAL, host, e.object.zone | in_station(b, side.station))
-        reverse = fn.trip_output(b, f"{base} 67 reverse trip", (waited,), host, mark, times, unless=needs.unless)
+        reverse = fn.trip_output(b, f"{base} 67 reverse trip", ways, host, mark, times, unless=needs.unless)
         for signal in (forward, reverse):
             for breaker in side.breakers:
                 b.trip(signal, breaker, lb.coil, e.policy.dc_of_coil(lb.coil))

@@ -11,13 +11,12 @@ from schemesim.scheme import functions as fn
 from schemesim.scheme.build import Host, SchemeBuilder
 from schemesim.scheme.conditions import Direction, InZone, Reach
 from schemesim.scheme.delays import Delay
-from schemesim.scheme.functions import AT_ONCE, ChannelPath, DistanceNeeds
+from schemesim.scheme.functions import AT_ONCE, ChannelPath, DistanceNeeds, DistanceZone
 from schemesim.scheme.model import (
     Ask,
     ComponentKind,
     Contact,
     FailureMode,
-    Gate,
     Input,
     Role,
 )
@@ -59,8 +58,9 @@ class Element:
 
     def contact(self, function: str, role: Role, host: Host, protects: frozenset[str] | None = None) -> Contact:
         """The mark of a trip output of this element."""
+        beyond = Role.UNWANTED if role is Role.MAIN else Role.REMOTE
         return Contact(
-            function, role, self.object.zone if protects is None else protects, Role.REMOTE,
+            function, role, self.object.zone if protects is None else protects, beyond,
             relay=host.relay, chain=host.chain, element=self.name, station=host.station,
         )  # fmt: skip
 
@@ -223,19 +223,19 @@ def dress_line(b: SchemeBuilder, e: Element) -> None:
     outputs: dict[tuple[int, str], list[str]] = {}
     for s in p.sets:
         ends = [_line_end(b, e, s, side) for side in e.sides]
-        zone_2: list[Input] = []
-        zone_1: list[Input] = []
+        zone_1: list[DistanceZone] = []
+        zone_2: list[DistanceZone] = []
         for n, end in enumerate(ends):
             out = outputs.setdefault((n, s.label), [])
             one = _zone(b, e, end, "21-1", p.reaches.zone_1, p.reaches.over_reach)
             two = _zone(b, e, end, "21-2", p.reaches.zone_2, p.reaches.over_reach)
             zone_1.append(one)
             zone_2.append(two)
-            out.append(_zone_trip(b, e, end, "21-1", one, AT_ONCE, Role.MAIN))
-            out.append(_zone_trip(b, e, end, "21-2", two, p.reaches.zone_2_delay, Role.MAIN_TIMED))
+            out.append(_zone_trip(b, e, one, "21-1", AT_ONCE, Role.MAIN))
+            out.append(_zone_trip(b, e, two, "21-2", p.reaches.zone_2_delay, Role.MAIN_TIMED))
             if p.remote_backup:
                 three = _zone(b, e, end, "21-3", p.reaches.zone_3, 1.0)
-                out.append(_zone_trip(b, e, end, "21-3", three, p.reaches.zone_3_delay, Role.MAIN_TIMED))
+                out.append(_zone_trip(b, e, three, "21-3", p.reaches.zone_3_delay, Role.MAIN_TIMED))
         for n, trip in enumerate(_line_scheme(b, e, s, ends, zone_1, zone_2)):
             if trip:
                 outputs[(n, s.label)].append(trip)
@@ -277,7 +277,7 @@ def _line_end(b: SchemeBuilder, e: Element, s: ProtectionSet, side: Side) -> _Li
     return _LineEnd(side, host, needs, f"{group}/{s.label}")
 
 
-def _zone(b: SchemeBuilder, e: Element, end: _LineEnd, label: str, share: float, over: float) -> Input:
+def _zone(b: SchemeBuilder, e: Element, end: _LineEnd, label: str, share: float, over: float) -> DistanceZone:
     length = b.plant.section[e.name].length
     times = e.policy.times.distance
     return fn.distance_zone(
@@ -285,13 +285,11 @@ def _zone(b: SchemeBuilder, e: Element, end: _LineEnd, label: str, share: float,
     )
 
 
-def _zone_trip(
-    b: SchemeBuilder, e: Element, end: _LineEnd, label: str, element: Input, delay: Delay, role: Role
-) -> str:
-    waited = fn.delayed(b, f"{end.base} {label} timer", element, delay)
-    mark = e.contact(label, role, end.host)
+def _zone_trip(b: SchemeBuilder, e: Element, zone: DistanceZone, label: str, delay: Delay, role: Role) -> str:
+    ways = fn.zone_operated(b, zone, delay)
+    mark = e.contact(label, role, zone.host)
     times = e.policy.times.distance
-    return fn.trip_output(b, f"{end.base} {label} trip", (waited,), end.host, mark, times, unless=end.needs.unless)
+    return fn.trip_output(b, f"{zone.name} trip", ways, zone.host, mark, times, unless=zone.needs.unless)
 
 
 def _line_scheme(
@@ -299,64 +297,74 @@ def _line_scheme(
     e: Element,
     s: ProtectionSet,
     ends: list[_LineEnd],
-    zone_1: list[Input],
-    zone_2: list[Input],
+    zone_1: list[DistanceZone],
+    zone_2: list[DistanceZone],
 ) -> list[str]:
     """The trip output of a set's scheme at each end ('' for none)."""
     if s.line is LineScheme.DISTANCE or len(ends) < 2:
         return ["" for _ in ends]
     if s.line is LineScheme.DIFFERENTIAL:
         return _line_differential(b, e, s, ends)
-    unit = b.component(f"{e.name}/channel {s.channel}", ComponentKind.CHANNEL)
-    reverse: list[Input] = []
-    length = b.plant.section[e.name].length
-    for end in ends:
-        if s.line is LineScheme.BLOCKING or (e.policy.echo and s.line is LineScheme.PERMISSIVE_OVERREACH):
-            name, reach = f"{end.base} 21 reverse", e.policy.reaches.reverse * length
-            times = e.policy.times.distance
-            reverse.append(fn.distance_zone(b, name, reach, end.needs, end.host, times, direction=Direction.REVERSE))
-    what = {LineScheme.PERMISSIVE_UNDERREACH: zone_1, LineScheme.BLOCKING: reverse}.get(s.line, zone_2)
-    sends: list[Input] = []
-    for end, element in zip(ends, what, strict=True):
-        asks = (*end.host.asks, *end.needs.unless)
-        sends.append(b.add(Gate(name=f"{end.base} 85 send", inputs=(element,), unless=asks)))
-    receipts: list[list[str]] = []
-    for n, here in enumerate(ends):
-        got = []
-        for m, there in enumerate(ends):
-            if m != n:
-                path = ChannelPath(
-                    unit, there.host.dc, here.host.dc, e.policy.times.channel,
-                    e.policy.times.channel_late_by, _signal(zone_2[n]),
-                )  # fmt: skip
-                sent = [sends[m]]
-                if e.policy.echo and s.line is LineScheme.PERMISSIVE_OVERREACH:
-                    sent.append(f"{there.base} 85 echo")
-                name = f"{here.base} 85 from {there.side.station}"
-                got.append(fn.received(b, name, b.any_of(f"{name} sent by", sent), path))
-        receipts.append(got)
+    echoing = e.policy.echo and s.line is LineScheme.PERMISSIVE_OVERREACH
+    reverse = [_reverse(b, e, end) for end in ends] if echoing or s.line is LineScheme.BLOCKING else []
+    sending = {LineScheme.PERMISSIVE_UNDERREACH: zone_1, LineScheme.BLOCKING: reverse}.get(s.line, zone_2)
+    receipts = [_receipts(b, e, s, ends, n, sending, zone_2, echoing) for n in range(len(ends))]
     trips: list[str] = []
     for n, end in enumerate(ends):
-        if e.policy.echo and s.line is LineScheme.PERMISSIVE_OVERREACH:
-            receipt = str(b.any_of(f"{end.base} 85 receipt", list(receipts[n])))
-            fn.echo(b, f"{end.base} 85 echo wanted", receipt, zone_2[n], reverse[n], e.policy.times.echo_pulse)
-            b.add(Gate(name=f"{end.base} 85 echo", inputs=(f"{end.base} 85 echo wanted",), unless=end.host.asks))
         name = f"{end.base} 85"
+        element = fn.zone_picked_up(b, zone_2[n])
+        if echoing:
+            receipt = str(b.any_of(f"{name} receipt", list(receipts[n])))
+            fn.echo(b, f"{name} echo", receipt, element, reverse[n].seen, e.policy.times.echo_pulse)
         if s.line is LineScheme.BLOCKING:
             block = str(b.any_of(f"{name} block", list(receipts[n])))
-            signal = fn.blocking(b, name, zone_2[n], block, e.policy.times.coordinating)
+            waited = fn.zone_operated(b, zone_2[n], e.policy.times.coordinating, "coordinating")
+            signal = fn.blocking(b, name, waited, block)
         else:
             received = list(receipts[n])
             if s.line is LineScheme.PERMISSIVE_UNDERREACH:  # one end that sees it in zone 1 is proof enough
                 received = [str(b.any_of(f"{name} permitted", list(receipts[n])))]
-            inputs = (zone_2[n], *received)
-            signal = b.add(Gate(name=name, inputs=inputs, k=len(inputs)))
+            signal = fn.permissive(b, name, element, received)
         mark = e.contact("85-21", Role.MAIN, end.host)
         times = e.policy.times.distance
         trips.append(
-            fn.trip_output(b, f"{end.base} 85 trip", (signal,), end.host, mark, times, unless=end.needs.unless)
+            fn.trip_output(b, f"{name} trip", (signal,), end.host, mark, times, unless=end.needs.unless)
         )
     return trips
+
+
+def _reverse(b: SchemeBuilder, e: Element, end: _LineEnd) -> DistanceZone:
+    reach = e.policy.reaches.reverse * b.plant.section[e.name].length
+    times = e.policy.times.distance
+    return fn.distance_zone(
+        b, f"{end.base} 21 reverse", reach, end.needs, end.host, times, direction=Direction.REVERSE
+    )
+
+
+def _receipts(
+    b: SchemeBuilder,
+    e: Element,
+    s: ProtectionSet,
+    ends: list[_LineEnd],
+    n: int,
+    sending: list[DistanceZone],
+    zone_2: list[DistanceZone],
+    echoing: bool,
+) -> list[str]:
+    """What end ``n`` receives from each other end."""
+    unit = b.component(f"{e.name}/channel {s.channel}", ComponentKind.CHANNEL)
+    here, times, out = ends[n], e.policy.times, []
+    for m, there in enumerate(ends):
+        if m == n:
+            continue
+        dcs = (there.host.dc, here.host.dc)
+        path = ChannelPath(unit, *dcs, times.channel, times.channel_late_by, zone_2[n].seen)
+        asks = (*there.host.asks, *there.needs.unless)
+        sent: list[fn.Sent] = [(fn.zone_picked_up(b, sending[m]), asks)]
+        if echoing:
+            sent.append((f"{there.base} 85 echo", there.host.asks))
+        out.append(fn.received(b, f"{here.base} 85 from {there.side.station}", sent, path))
+    return out
 
 
 def _line_differential(b: SchemeBuilder, e: Element, s: ProtectionSet, ends: list[_LineEnd]) -> list[str]:
@@ -377,6 +385,3 @@ def _line_differential(b: SchemeBuilder, e: Element, s: ProtectionSet, ends: lis
         trips.append(fn.trip_output(b, f"{name} trip", (element,), end.host, mark, times, unless=unless))
     return trips
 
-
-def _signal(item: Input) -> str:
-    return item if isinstance(item, str) else item.signal

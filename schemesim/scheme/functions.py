@@ -85,19 +85,6 @@ def no_fault(b: SchemeBuilder, relay: str) -> str:
     )
 
 
-def over_reaching(
-    b: SchemeBuilder, name: str, condition: Condition, wide: Condition | None, host: Host, times: ElementTimes
-) -> Input:
-    """An element and what it would also see if it over-reached (rule R15)."""
-    narrow = sense(b, name, condition, times)
-    if wide is None or not b.has(host.relay, FailureMode.UNWANTED_OPERATION):
-        return narrow
-    beyond = sense(b, f"{name}, beyond its reach", wide, times)
-    given = (Ask(host.relay, FailureMode.UNWANTED_OPERATION),)
-    over = b.add(Gate(name=f"{name}, over-reaching", inputs=(beyond,), given=given))
-    return b.add(Gate(name=f"{name}, picked up", inputs=(narrow, over)))
-
-
 def differential(
     b: SchemeBuilder,
     name: str,
@@ -149,6 +136,28 @@ class DistanceNeeds:
         return (*self.cores, *vt)
 
 
+@dataclass(frozen=True, slots=True)
+class DistanceZone:
+    """The elements of one distance zone.
+
+    Attributes
+    ----------
+    seen : str
+        What the zone sees by its setting.
+    beyond : str
+        What it would also see if it over-reached ('' : not asked).
+    anywhere : str
+        What it would see without voltage, where that is not supervised ('' : not asked).
+    """
+
+    name: str
+    seen: str
+    beyond: str
+    anywhere: str
+    needs: DistanceNeeds
+    host: Host
+
+
 def distance_zone(
     b: SchemeBuilder,
     name: str,
@@ -159,19 +168,43 @@ def distance_zone(
     *,
     direction: Direction = Direction.FORWARD,
     over_reach: float = 1.0,
-) -> Input:
+) -> DistanceZone:
     """A distance zone (or a directional overcurrent element) by reach along the line graph.
 
-    ``over_reach`` is the factor by which the reach grows if it over-reaches.
+    ``over_reach`` is the factor by which the reach grows if it over-reaches (rule R15).
     """
-    condition = Reach(needs.terminals, reach, direction)
-    wide = Reach(needs.terminals, reach * over_reach, direction) if over_reach > 1 else None
-    element = over_reaching(b, name, condition, wide, host, times)
-    if needs.winding is None or needs.supervised or not b.has(needs.winding.component, needs.winding.mode):
-        return element
-    anywhere = sense(b, f"{name} on current", Reach(needs.terminals, reach, Direction.BOTH), times)
-    lost = b.add(Gate(name=f"{name} without voltage", inputs=(anywhere,), given=(needs.winding,)))
-    return b.add(Gate(name=f"{name} or without voltage", inputs=(element, lost)))
+    seen = sense(b, name, Reach(needs.terminals, reach, direction), times)
+    beyond = anywhere = ""
+    if over_reach > 1 and b.has(host.relay, FailureMode.UNWANTED_OPERATION):
+        wide = Reach(needs.terminals, reach * over_reach, direction)
+        beyond = sense(b, f"{name}, beyond its reach", wide, times)
+    lost = needs.winding
+    if lost is not None and not needs.supervised and b.has(lost.component, lost.mode):
+        both = Reach(needs.terminals, reach, Direction.BOTH)
+        anywhere = sense(b, f"{name} on current", both, times)
+    return DistanceZone(name, seen, beyond, anywhere, needs, host)
+
+
+def zone_operated(b: SchemeBuilder, zone: DistanceZone, delay: Delay, what: str = "timer") -> list[Input]:
+    """The ways in which a zone operates after its delay; failures are asked when the time has run out."""
+    ways: list[Input] = [delayed(b, f"{zone.name} {what}", zone.seen, delay)]
+    if zone.beyond:
+        waited = delayed(b, f"{zone.name}, beyond its reach, {what}", zone.beyond, delay)
+        given = (Ask(zone.host.relay, FailureMode.UNWANTED_OPERATION),)
+        ways.append(b.add(Gate(name=f"{zone.name}, over-reaching, {what}", inputs=(waited,), given=given)))
+    if zone.anywhere and zone.needs.winding is not None:
+        waited = delayed(b, f"{zone.name} on current, {what}", zone.anywhere, delay)
+        given = (zone.needs.winding,)
+        ways.append(b.add(Gate(name=f"{zone.name} without voltage, {what}", inputs=(waited,), given=given)))
+    return ways
+
+
+def zone_picked_up(b: SchemeBuilder, zone: DistanceZone) -> Input:
+    """The zone at once, as permissive schemes use it: over-reach is left to the far end's element to stop."""
+    if not zone.anywhere or zone.needs.winding is None:
+        return zone.seen
+    lost = Gate(name=f"{zone.name} without voltage", inputs=(zone.anywhere,), given=(zone.needs.winding,))
+    return b.add(Gate(name=f"{zone.name} or without voltage", inputs=(zone.seen, b.add(lost))))
 
 
 def vote(b: SchemeBuilder, name: str, outputs: Sequence[str], votes: int) -> str:
@@ -182,9 +215,8 @@ def vote(b: SchemeBuilder, name: str, outputs: Sequence[str], votes: int) -> str
 def lockout(b: SchemeBuilder, name: str, signal: Input, unit: str, dc: str, operate: Delay) -> str:
     """A lockout relay (86): adds its own time, latches, and is one component for all its contacts (R13)."""
     asks = (Ask(unit, FailureMode.FAILURE_TO_OPERATE), Ask(dc, FailureMode.LOST))
-    b.add(Gate(name=f"{name} coil", inputs=(signal,), unless=asks))
-    b.add(Timer(name=f"{name} moving", input=f"{name} coil", pick_up=operate, drop_out=AT_ONCE))
-    return b.add(Latch(name=name, set=f"{name} moving"))
+    moving = b.add(Timer(name=f"{name} moving", input=signal, pick_up=operate, drop_out=AT_ONCE))
+    return b.add(Latch(name=name, set=b.add(Gate(name=f"{name} operated", inputs=(moving,), unless=asks))))
 
 
 @dataclass(frozen=True, slots=True)
@@ -203,8 +235,16 @@ class ChannelPath:
     false_when: str = ""
 
 
-def received(b: SchemeBuilder, name: str, sent: Input, path: ChannelPath) -> str:
-    """The receipt at the far end of a channel of what is sent at this one: its rise and its fall take the same way."""
+Sent = tuple[Input, tuple[Ask, ...]]
+"""What is sent over a channel, and the failures at the sending end that keep it from leaving."""
+
+
+def received(b: SchemeBuilder, name: str, sent: Sequence[Sent], path: ChannelPath) -> str:
+    """The receipt at the far end of a channel of what is sent at this one: its rise and its fall take the same way.
+
+    Failures are asked when the receipt would arrive: what keeps it from leaving or from
+    arriving holds for the whole run, so it may as well act at the end of the way.
+    """
     lost = (
         Ask(path.unit, FailureMode.LOST),
         Ask(path.sending_dc, FailureMode.LOST),
@@ -212,29 +252,27 @@ def received(b: SchemeBuilder, name: str, sent: Input, path: ChannelPath) -> str
     )
     late = Ask(path.unit, FailureMode.LATE)
     false = Ask(path.unit, FailureMode.FALSE_RECEIPT)
-    sources: list[Input] = []
-    in_time: tuple[Ask, ...] = lost
-    if b.has(path.unit, FailureMode.LATE):
-        in_time = (*lost, late)
-        b.add(Gate(name=f"{name} sent, late", inputs=(sent,), unless=lost, given=(late,)))
-        late_in = f"{name} sent, late"
-        held = b.add(Timer(name=f"{name} held", input=late_in, pick_up=path.late_by, drop_out=path.late_by))
-        late_out = f"{name} under way, late"
-        sources.append(b.add(Timer(name=late_out, input=held, pick_up=path.delay, drop_out=path.delay)))
-    b.add(Gate(name=f"{name} sent", inputs=(sent,), unless=in_time))
-    way = Timer(name=f"{name} under way", input=f"{name} sent", pick_up=path.delay, drop_out=path.delay)
-    sources.append(b.add(way))
+    ways: list[Input] = []
+    for n, (signal, asks) in enumerate(sent):
+        way = f"{name} way {n + 1}" if len(sent) > 1 else name
+        arrives = b.add(Timer(name=f"{way} under way", input=signal, pick_up=path.delay, drop_out=path.delay))
+        kept = (*dict.fromkeys((*asks, *lost)),)
+        if b.has(path.unit, FailureMode.LATE):
+            held = b.add(Timer(name=f"{way} held", input=arrives, pick_up=AT_ONCE, drop_out=path.late_by))
+            let_go = b.add(Timer(name=f"{way} let go", input=held, pick_up=path.late_by, drop_out=AT_ONCE))
+            ways.append(b.add(Gate(name=f"{way} late", inputs=(let_go,), unless=kept, given=(late,))))
+            kept = (*kept, late)
+        ways.append(b.add(Gate(name=f"{way} in time", inputs=(arrives,), unless=kept)))
     if path.false_when and b.has(path.unit, FailureMode.FALSE_RECEIPT):
         blind = (Ask(path.receiving_dc, FailureMode.LOST),)
-        sources.append(
-            b.add(Gate(name=f"{name} false", inputs=(path.false_when,), unless=blind, given=(false,)))
-        )
-    return b.add(Gate(name=name, inputs=tuple(sources)))
+        ways.append(b.add(Gate(name=f"{name} false", inputs=(path.false_when,), unless=blind, given=(false,))))
+    return b.add(Gate(name=name, inputs=tuple(ways)))
 
 
-def permissive(b: SchemeBuilder, name: str, element: Input, receipt: str) -> str:
-    """Permissive trip: the local element AND the receipt (over- or underreaching by what is sent)."""
-    return b.add(Gate(name=name, inputs=(element, receipt), k=2))
+def permissive(b: SchemeBuilder, name: str, element: Input, receipts: Sequence[str]) -> str:
+    """Permissive trip: the local element AND every receipt (over- or underreaching by what is sent)."""
+    inputs = (element, *receipts)
+    return b.add(Gate(name=name, inputs=inputs, k=len(inputs)))
 
 
 def echo(b: SchemeBuilder, name: str, receipt: str, forward: Input, reverse: Input, pulse: Delay) -> str:
@@ -247,10 +285,10 @@ def echo(b: SchemeBuilder, name: str, receipt: str, forward: Input, reverse: Inp
     return name
 
 
-def blocking(b: SchemeBuilder, name: str, element: Input, block: str, coordinating: Delay) -> str:
+def blocking(b: SchemeBuilder, name: str, waited: Sequence[Input], block: str) -> str:
     """Blocking scheme: the overreaching element, after a coordinating delay, AND NOT a block received."""
-    waited = delayed(b, f"{name} coordinating", element, coordinating)
-    return b.add(Gate(name=name, inputs=(waited, Not(block)), k=2))
+    element = b.any_of(f"{name} waited", list(waited))
+    return b.add(Gate(name=name, inputs=(element, Not(block)), k=2))
 
 
 @dataclass(frozen=True, slots=True)

@@ -84,11 +84,13 @@ class Role(IntEnum):
     LOCAL = 2
     BREAKER_FAILURE = 3
     REMOTE = 4
+    UNWANTED = 5
+    """A main function that operated beyond its zone."""
 
     @property
     def label(self) -> str:
         """Plain words."""
-        return ("main", "main, timed zone", "local back-up", "breaker failure", "remote back-up")[self]
+        return ("main", "main, timed zone", "local back-up", "breaker failure", "remote back-up", "unwanted")[self]
 
 
 @dataclass(frozen=True, slots=True)
