@@ -73,7 +73,17 @@ def write_file(path: FilePath | str, data: Data) -> None:
     InputError
         For data that :func:`write_text` refuses, or a place that cannot be written.
     """
-    content = write_text(data).encode()
+    write_whole(path, write_text(data).encode())
+
+
+def write_whole(path: FilePath | str, content: bytes) -> None:
+    """Write a file whole or not at all; see :func:`write_file`.
+
+    Raises
+    ------
+    InputError
+        For a place that cannot be written.
+    """
     expected = "a file that can be written"
     try:
         target = FilePath(os.path.realpath(path))

@@ -1,0 +1,40 @@
+"""The command line: check a scenario, show a clearing sequence, study all locations, inject failures.
+
+``python -m schemesim COMMAND FILE …``; ``python -m schemesim COMMAND --help`` tells the rest.
+
+Exit status: 0 done, 1 a run that cannot go on (it says why), 2 bad input (every mistake is told),
+130 interrupted (what was finished until then is printed).
+
+JSON
+----
+With ``--json`` one object goes to the output instead of text. ``"schemesim": 1`` is the version
+of this form, ``"kind"`` the command, ``"scenario"`` the file and its name, ``"note"`` the
+safety note. Names carry units: ``_ms``, ``_per_yr``, ``_mw``; ``_low`` and ``_high`` are the ends of a
+bracket that certainly holds. ``null`` stands for none and for what has no bound. Then, for each kind:
+
+check
+    ``stations``, ``sections``, ``breakers``, ``sources``, ``locations`` (counts); ``policies``, for each its
+    ``components``, ``blocks`` and ``questions``; ``runs`` (names); ``coverage_gaps`` (sections in no
+    protected zone).
+show
+    ``policy``, ``event``, ``failures``, ``limit_ms``; ``outcome`` with ``status``, ``t_clear_ms``,
+    ``at_horizon`` and ``openings`` (``breaker``, ``t_trip_ms``, ``t_open_ms``, ``role``, ``via``, ``interrupted``);
+    ``expect``; ``rows`` of the sequence, as in the CSV.
+study
+    ``complete`` (false if interrupted), ``epsilon``, ``policies``: for each its ``measures``
+    (``low``, ``high``), ``locations`` (rows as in the CSV, with ``breakers`` and ``excess``:
+    the distribution as ``count``, ``low``, ``high``; and ``points``: single points of failure) and
+    ``no_fault`` (rows) if asked for; ``comparison`` (rows) if there are several.
+inject
+    ``policy``, ``event``, ``order``, ``rows`` as in the CSV.
+
+CSV
+---
+With ``--csv FILE`` the table of the command is written, whole or not at all: the rows of the
+sequence (show), one row for each policy and location (study), one for each combination of
+failures (inject), one for each policy (check). The first row names the columns, as in the JSON.
+"""
+
+from schemesim.cli.parser import main
+
+__all__ = ["main"]

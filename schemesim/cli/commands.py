@@ -1,0 +1,215 @@
+"""The commands: check, show, inject; the study has a file of its own."""
+
+from __future__ import annotations
+
+import argparse
+import os
+from collections.abc import Mapping, Sequence
+from typing import TYPE_CHECKING, Any
+
+from schemesim.cli.output import json_text, table_text, whole_of, write_csv
+from schemesim.cli.parser import DONE, NOTE
+from schemesim.errors import reject
+from schemesim.scenario import Scenario, load_scenario
+from schemesim.scenario.model import location
+
+if TYPE_CHECKING:
+    from schemesim.engine.case import Case
+    from schemesim.engine.outcome import Outcome
+
+
+def run(options: argparse.Namespace) -> int:
+    """Run a command; returns the exit status.
+
+    Raises
+    ------
+    InputError
+        For bad input of any kind.
+    """
+    from schemesim.cli.study import study
+
+    if options.csv is not None:
+        _check_place(options.csv, options.file)
+    scenario = load_scenario(options.file)
+    command = {"check": check, "show": show, "inject": inject, "study": study}[options.command]
+    return command(scenario, options)
+
+
+def _check_place(path: str, scenario: str) -> None:
+    """Refuse a CSV file that could not be written, or would replace the scenario, before any work is done."""
+    if os.path.realpath(path) == os.path.realpath(scenario):
+        raise reject("--csv", path, "another file than the scenario")
+    if os.path.isdir(path) or not os.path.isdir(os.path.dirname(os.path.abspath(path))):
+        raise reject("--csv", path, "a file in a folder that is there")
+
+
+def put(
+    options: argparse.Namespace,
+    scenario: Scenario,
+    content: Mapping[str, object],
+    rows: Sequence[Mapping[str, object]],
+    text: Sequence[str],
+) -> None:
+    """Print text or JSON, and write the CSV first, so that a place that cannot be written stops nothing halfway."""
+    if options.csv is not None:
+        write_csv(options.csv, rows)
+    if options.json:
+        head = {"scenario": {"file": options.file, "name": scenario.name}, "note": NOTE}
+        print(json_text(options.command, {**head, **content}))
+    else:
+        print("\n".join([*text, "", NOTE]))
+
+
+def check(scenario: Scenario, options: argparse.Namespace) -> int:
+    """Say what is in a scenario that has been found good."""
+    from schemesim.plant.coverage import coverage_audit
+
+    plant = scenario.plant
+    rows: list[dict[str, object]] = []
+    for name in scenario.policies:
+        program = scenario.program(name)
+        rows.append(
+            {
+                "policy": name,
+                "in_use": name == scenario.policy,
+                "components": len(program.scheme.components),
+                "blocks": len(program.scheme.blocks),
+                "questions": len(program.questions),
+            }
+        )
+    gaps = [g.section for g in coverage_audit(plant).gaps]
+    stations = sorted({s.station for s in plant.sections if s.station})
+    counts = {
+        "stations": len(stations),
+        "sections": len(plant.sections),
+        "breakers": len(plant.breakers),
+        "sources": len(plant.sources),
+        "locations": len(scenario.frequencies),
+    }
+    names = [r.name for r in scenario.runs]
+    text = [
+        f"{scenario.name or options.file}: good",
+        ", ".join(f"{n} {what}" for what, n in counts.items()),
+        "sections in no protected zone: " + (", ".join(gaps) if gaps else "none"),
+        "runs: " + (", ".join(names) if names else "none listed"),
+        "",
+        table_text(rows, list(rows[0])),
+    ]
+    put(options, scenario, {**counts, "policies": rows, "runs": names, "coverage_gaps": gaps}, rows, text)
+    return DONE
+
+
+def show(scenario: Scenario, options: argparse.Namespace) -> int:
+    """One clearing sequence."""
+    from schemesim.engine.answers import FixedAnswers
+    from schemesim.engine.event import run_event
+    from schemesim.report.timeline import timeline
+
+    expect = ""
+    if (options.run is None) == (options.fault is None):
+        names = [r.name for r in scenario.runs]
+        raise reject("show", "both" if options.run else "neither", f"--run (one of {names}) or --fault SECTION[@POS]")
+    if options.run is not None:
+        if options.fail or options.dispatch:
+            raise reject("--run", options.run, "no --fail and no --dispatch beside it; the run states them")
+        listed = scenario.listed(options.run)
+        policy = options.policy or listed.policy or scenario.policy
+        scenario.scheme(policy)
+        case = scenario.case_of(listed, policy)
+        found = scenario.play(listed, options.policy)
+        expect = listed.expect
+    else:
+        policy = options.policy or scenario.policy
+        case = _case(scenario, options)
+        answers = FixedAnswers(case.program, options.fail)
+        found = run_event(case, answers, horizon_us=scenario.study.horizon_us, log=True)
+    limit_us = scenario.limit_us(case.event)
+    hz = scenario.frequency_hz or 50.0
+    sequence = timeline(case, found, frequency_hz=hz, limit_ms=limit_us / 1000)
+    rows = [
+        {k: None if v is None or v != v else v for k, v in row.items()}
+        for row in sequence.table(options.all).reset_index().astype(object).to_dict("records")
+    ]
+    failures = [case.questions[q].name for q, yes in found.asked if yes]
+    content: dict[str, object] = {
+        "policy": policy,
+        "event": str(case.event),
+        "failures": failures,
+        "limit_ms": limit_us / 1000,
+        "frequency_hz": hz,
+        "outcome": outcome_data(found.outcome),
+        "expect": expect,
+        "rows": rows,
+    }
+    text = [f"policy: {policy}", sequence.to_text(options.all)]
+    if expect:
+        text += ["", f"expected: {expect}"]
+    if scenario.frequency_hz is None:
+        text += ["", "cycles of 50 Hz; the scenario states no frequency_hz"]
+    put(options, scenario, content, [{str(k): v for k, v in row.items()} for row in rows], text)
+    return DONE
+
+
+def _case(scenario: Scenario, options: argparse.Namespace) -> Case:
+    where = location(scenario.plant, options.fault)
+    return scenario.case(where, options.policy, dispatch=options.dispatch)
+
+
+def outcome_data(outcome: Outcome) -> dict[str, Any]:
+    """An outcome as data."""
+    return {
+        "status": str(outcome.status),
+        "t_clear_ms": None if outcome.t_clear_us is None else outcome.t_clear_us / 1000,
+        "at_horizon": outcome.at_horizon,
+        "openings": [
+            {
+                "breaker": o.breaker,
+                "t_trip_ms": o.t_trip_us / 1000,
+                "t_open_ms": o.t_open_us / 1000,
+                "role": o.role.label,
+                "via": o.via,
+                "interrupted": o.interrupted,
+            }
+            for o in outcome.openings
+        ],
+    }
+
+
+def inject(scenario: Scenario, options: argparse.Namespace) -> int:
+    """Every single failure, or every pair, at one location."""
+    from schemesim.study.injection import inject as inject_into
+
+    if options.fault is None:
+        raise reject("inject", "no fault", "--fault SECTION[@POS]")
+    order = whole_of(options.order, "--order", 1, 2)
+    case = _case(scenario, options)
+    found = inject_into(case, order, "all" if options.all else "met", horizon_us=scenario.study.horizon_us)
+    rows: list[dict[str, object]] = [
+        {
+            "failures": ", ".join(r.failures) or "none",
+            "order": len(r.failures),
+            "p": float(r.probability),
+            "status": str(r.outcome.status),
+            "t_clear_ms": None if r.outcome.t_clear_us is None else r.outcome.t_clear_us / 1000,
+            "cleared_by": r.cleared_by,
+            "breakers": len(r.outcome.tripped),
+            "breakers_excess": r.excess,
+            "tripped": ", ".join(sorted(r.outcome.tripped)),
+            "changed": r.changed,
+        }
+        for r in found.rows
+    ]
+    policy = options.policy or scenario.policy
+    shown = rows if options.all else [r for r in rows if r["changed"] or not r["order"]]
+    limit_us = scenario.limit_us(case.event)
+    columns = ["failures", "p", "status", "t_clear_ms", "cleared_by", "breakers", "breakers_excess"]
+    text = [
+        f"policy: {policy}",
+        f"fault on {case.event}, limit {limit_us / 1000:g} ms; {len(rows) - 1} combinations of up to {order}, "
+        f"{sum(bool(r['changed']) for r in rows)} change the outcome",
+        "",
+        table_text(shown, columns),
+    ]
+    content = {"policy": policy, "event": str(case.event), "order": order, "limit_ms": limit_us / 1000, "rows": rows}
+    put(options, scenario, content, rows, text)
+    return DONE

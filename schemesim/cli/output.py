@@ -1,0 +1,145 @@
+"""Tables as text, JSON and CSV; progress."""
+
+from __future__ import annotations
+
+import csv
+import io
+import json
+import math
+import sys
+import time
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from typing import Any
+
+from schemesim.errors import reject
+from schemesim.scenario.writing import write_whole
+
+VERSION = 1
+"""Version of the JSON and CSV forms."""
+
+WIDTH = 118
+"""Most columns of a text table."""
+
+
+def table_text(rows: Sequence[Mapping[str, object]], columns: Sequence[str]) -> str:
+    """Rows as a text table: numbers to the right, texts to the left, long ones lose their middle.
+
+    Examples
+    --------
+    >>> print(table_text([{"at": "L1", "n": 2}, {"at": "Bus", "n": None}], ["at", "n"]))
+    at   n
+    L1   2
+    Bus  -
+    """
+    from schemesim.report.sequence import shorten
+
+    cells = [[_cell(row.get(c)) for c in columns] for row in rows]
+    widths = [max([len(c), *(len(line[i]) for line in cells)]) for i, c in enumerate(columns)]
+    while sum(widths) + 2 * (len(widths) - 1) > WIDTH and max(widths) > 12:
+        widths[widths.index(max(widths))] -= 1
+    right = [bool(rows) and all(_is_number(row.get(c)) for row in rows) for c in columns]
+
+    def line(texts: Sequence[str]) -> str:
+        parts = [shorten(t, w) for t, w in zip(texts, widths, strict=True)]
+        sides = zip(parts, widths, right, strict=True)
+        return "  ".join(f"{p:>{w}}" if r else f"{p:<{w}}" for p, w, r in sides).rstrip()
+
+    return "\n".join(line(texts) for texts in [list(columns), *cells])
+
+
+def _is_number(value: object) -> bool:
+    return value is None or (isinstance(value, (int, float)) and not isinstance(value, bool))
+
+
+def _cell(value: object) -> str:
+    if value is None:
+        return "-"
+    if isinstance(value, bool):
+        return "yes" if value else "no"
+    return f"{value:.6g}" if isinstance(value, float) else str(value)
+
+
+def plain(value: Any) -> Any:
+    """Data that JSON can say: no NaN, no infinity, keys that are text."""
+    if isinstance(value, Mapping):
+        return {str(k): plain(v) for k, v in value.items()}
+    if isinstance(value, (list, tuple, set, frozenset)):
+        return [plain(v) for v in (sorted(value) if isinstance(value, (set, frozenset)) else value)]
+    if value is None or isinstance(value, (bool, str)):
+        return value
+    if isinstance(value, int):
+        return int(value)
+    number = float(value)
+    return number if math.isfinite(number) else None
+
+
+def json_text(kind: str, content: Mapping[str, object]) -> str:
+    """One JSON object with its version and kind."""
+    data = plain({"schemesim": VERSION, "kind": kind, **content})
+    return json.dumps(data, ensure_ascii=False, allow_nan=False, indent=1)
+
+
+def write_csv(path: str, rows: Iterable[Mapping[str, object]]) -> None:
+    """Write rows as CSV, whole or not at all."""
+    rows = [plain(row) for row in rows]
+    columns = list(dict.fromkeys(key for row in rows for key in row))
+    stream = io.StringIO()
+    writer = csv.DictWriter(stream, columns, lineterminator="\n")
+    writer.writeheader()
+    writer.writerows(rows)
+    write_whole(path, stream.getvalue().encode())
+
+
+class Progress:
+    """How far a long piece of work has come, on the error output; on one line where it is a terminal."""
+
+    def __init__(self, what: str, quiet: bool, clock: Callable[[], float] = time.monotonic) -> None:
+        self.what, self.quiet, self.clock = what, quiet, clock
+        self.started = clock()
+        self._shown = -math.inf
+        self._line = sys.stderr.isatty()
+
+    def __call__(self, done: int, of: int) -> None:
+        """So many done of so many."""
+        now = self.clock()
+        every = 0.2 if self._line else 5.0
+        if self.quiet or (now - self._shown < every and done < of):
+            return
+        self._shown = now
+        text = f"{self.what}: {done} of {of} locations, {now - self.started:.0f} s"
+        end = "\n" if done == of or not self._line else ""
+        print(f"\r{text}" if self._line else text, end=end, file=sys.stderr, flush=True)
+
+
+def number_of(text: str, what: str, low: float, high: float) -> float:
+    """A number given on the command line.
+
+    Raises
+    ------
+    InputError
+        If it is none, or out of bounds.
+    """
+    try:
+        value = float(text)
+    except ValueError:
+        value = math.nan
+    if not low <= value <= high:
+        raise reject(what, text, f"a number from {low:g} to {high:g}")
+    return value
+
+
+def whole_of(text: str, what: str, low: int, high: int) -> int:
+    """A whole number given on the command line.
+
+    Raises
+    ------
+    InputError
+        If it is none, or out of bounds.
+    """
+    try:
+        value = int(text)
+    except ValueError:
+        value = low - 1
+    if not low <= value <= high:
+        raise reject(what, text, f"a whole number from {low} to {high}")
+    return value
