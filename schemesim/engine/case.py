@@ -15,15 +15,25 @@ from typing import NamedTuple
 
 import networkx as nx
 
+from schemesim.engine.cut import (
+    BreakerAsk,
+    backward,
+    breaker_asks,
+    kept_inputs,
+    numbered_asks,
+    off_delay,
+    on_delay,
+    rank_of,
+    reach_mask,
+    shut_before,
+)
 from schemesim.engine.program import Kind, Program, Question, spread
 from schemesim.engine.sensing import Event, NoFault, Sensed, Sensing
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
 from schemesim.plant.zones import Duty, duty
-from schemesim.scheme.delays import Delay, Fixed
-from schemesim.scheme.model import Ask, Breaker, Contact, FailureMode, Gate, Latch, Sense, Timer
-
-NOTHING = Fixed(0)
+from schemesim.scheme.delays import Delay
+from schemesim.scheme.model import Breaker, Contact, Gate, Sense
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,14 +52,6 @@ class AtRest(NamedTuple):
     shown: tuple[bool, ...]
     open: frozenset[int]
     touched: frozenset[int]
-
-
-class BreakerAsk(NamedTuple):
-    """A mode of a breaker, the questions that bring it, and its verdict where it is certain."""
-
-    mode: FailureMode
-    questions: tuple[int, ...]
-    certain: bool | None
 
 
 @dataclass(frozen=True, eq=False)
@@ -148,7 +150,7 @@ class Case:
 
     def shut(self, breaker: str) -> bool:
         """Whether a breaker block is closed before the event."""
-        return self.program.index[breaker] in _shut(self.program, self.dispatch)
+        return self.program.index[breaker] in shut_before(self.program, self.dispatch)
 
     @cached_property
     def resting(self) -> tuple[tuple[int, ...], ...]:
@@ -213,22 +215,22 @@ def bind(
     start = sensing.candidates(program, event, dispatch)
     on = spread(program.blocks, program.inputs, program.consumers, start, program.free)
     possible = on | program.free
-    shut = _shut(program, dispatch)
+    shut = shut_before(program, dispatch)
     openable = sorted(i for i in possible if i in shut)
     watched = sorted(program.index[name] for name in observe if program.index[name] in possible)
-    wanted = _backward(program, possible, openable + watched)
+    wanted = backward(program, possible, openable + watched)
     chosen = sorted(wanted)
     local = {g: n for n, g in enumerate(chosen)}
     blocks = [program.blocks[g] for g in chosen]
     senses = tuple(n for n, b in enumerate(blocks) if isinstance(b, Sense))
     conditions = [b.condition for b in blocks if isinstance(b, Sense)]
     sensed = sensing.bind(program, event, dispatch, conditions, [program.blocks[g].name for g in openable])
-    inputs, ks = _inputs(program, chosen, local, shut)
+    inputs, ks = kept_inputs(program, chosen, local, shut)
     consumers: list[set[int]] = [set() for _ in chosen]
     for n, items in enumerate(inputs):
         for j, _ in items:
             consumers[j].add(n)
-    asks, certain, unless, given = _asks(program, blocks)
+    asks, certain, unless, given = numbered_asks(program, blocks)
     asking: list[set[int]] = [set() for _ in asks]
     for n in range(len(blocks)):
         for a in (*unless[n], *given[n]):
@@ -266,13 +268,13 @@ def bind(
         certain=certain,
         settles={q: tuple(group) for q, group in settles.items()},
         gates_asking=tuple(tuple(sorted(s)) for s in asking),
-        rank=tuple(_rank(c, section) for c in contacts),
+        rank=tuple(rank_of(c, section) for c in contacts),
         contacts=contacts,
-        on=tuple(_on(b) for b in blocks),
-        off=tuple(_off(b) for b in blocks),
+        on=tuple(on_delay(b) for b in blocks),
+        off=tuple(off_delay(b) for b in blocks),
         senses=senses,
         breakers=breakers,
-        breaker_asks=tuple(_breaker_asks(program, blocks[b]) for b in breakers),
+        breaker_asks=tuple(breaker_asks(program, blocks[b]) for b in breakers),
         closable=closable,
         coils={
             n: sum(program.index[name] in local for name in b.coils)
@@ -280,149 +282,6 @@ def bind(
             if isinstance(b, Breaker)
         },
         observed=observed,
-        reach_mask=_reach_mask(inputs, breakers, observed),
+        reach_mask=reach_mask(inputs, breakers, observed),
         index={b.name: n for n, b in enumerate(blocks)},
     )
-
-
-def _shut(program: Program, dispatch: str | None) -> frozenset[int]:
-    """Breaker blocks that are closed before the event, and sources with a trip that are in service."""
-    running = {s.name for s in program.plant.sources_in(dispatch)}
-    running.update(d.name for d in program.plant.devices if d.closed)
-    return frozenset(i for i, b in enumerate(program.blocks) if isinstance(b, Breaker) and b.name in running)
-
-
-def _backward(program: Program, possible: Set[int], goals: list[int]) -> set[int]:
-    wanted, queue = set(goals), deque(goals)
-    while queue:
-        for j, _ in program.inputs[queue.popleft()]:
-            if j in possible and j not in wanted and program.kind[j] is not Kind.BREAKER:
-                wanted.add(j)
-                queue.append(j)
-    return wanted
-
-
-def _inputs(
-    program: Program, chosen: list[int], local: dict[int, int], shut: Set[int]
-) -> tuple[tuple[tuple[tuple[int, bool], ...], ...], tuple[int, ...]]:
-    """Inputs that can change, and what gates still need; what cannot change is folded in.
-
-    A signal outside the case is false for good, but for the 52a of a breaker that stays closed.
-    A latch keeps the places of its inputs: where one is true for good it reads the latch's
-    own output inverted, which sets it whenever it is reset, or resets it for good; where one
-    is false for good it reads its own output, which sets nothing (or there is no reset).
-    """
-    inputs: list[tuple[tuple[int, bool], ...]] = []
-    ks: list[int] = []
-    for g in chosen:
-        block = program.blocks[g]
-        kept = tuple((local[j], inv) for j, inv in program.inputs[g] if j in local)
-        true = sum(1 for j, inv in program.inputs[g] if j not in local and inv != (j in shut))
-        if isinstance(block, Latch):
-            own = local[g]
-            kept = tuple(
-                (local[j], inv) if j in local else (own, inv != (j in shut))
-                for n, (j, inv) in enumerate(program.inputs[g])
-                if n == 0 or j in local or inv != (j in shut)
-            )
-        inputs.append(kept)
-        ks.append(block.k - true if isinstance(block, Gate) else 1 - min(true, 1))
-    return tuple(inputs), tuple(ks)
-
-
-def _asks(
-    program: Program, blocks: list[Sense | Gate | Timer | Latch | Breaker]
-) -> tuple[
-    tuple[tuple[int, ...], ...],
-    tuple[bool | None, ...],
-    tuple[tuple[int, ...], ...],
-    tuple[tuple[int, ...], ...],
-]:
-    number: dict[Ask, int] = {}
-    asks: list[tuple[int, ...]] = []
-    certain: list[bool | None] = []
-
-    def numbered(group: tuple[Ask, ...]) -> tuple[int, ...]:
-        for ask in group:
-            if ask not in number:
-                number[ask] = len(asks)
-                questions, verdict = resolve(program, ask)
-                asks.append(questions)
-                certain.append(verdict)
-        return tuple(number[ask] for ask in sorted(group))
-
-    unless = tuple(numbered(b.unless) if isinstance(b, Gate) else () for b in blocks)
-    given = tuple(numbered(b.given) if isinstance(b, Gate) else () for b in blocks)
-    return tuple(asks), tuple(certain), unless, given
-
-
-def resolve(program: Program, ask: Ask) -> tuple[tuple[int, ...], bool | None]:
-    """Questions that settle an ask, or its certain verdict."""
-    if ask in program.constant:
-        return (), program.constant[ask]
-    questions = program.asks.get(ask, ())
-    return questions, None if questions else False
-
-
-def _breaker_asks(program: Program, block: object) -> tuple[BreakerAsk, ...]:
-    if not isinstance(block, Breaker) or not block.component:
-        return ()
-    late = (FailureMode.OPENS_LATE,) if block.late_by is not None else ()
-    modes = (FailureMode.DOES_NOT_OPEN, *late, FailureMode.DOES_NOT_INTERRUPT)
-    return tuple(BreakerAsk(m, *resolve(program, Ask(block.component, m))) for m in modes)
-
-
-def _rank(contact: Contact | None, section: str | None) -> int:
-    if contact is None:
-        return 0
-    if section is None or section in contact.protects:
-        return int(contact.role)
-    return int(max(contact.role, contact.beyond))
-
-
-def _on(block: object) -> Delay:
-    match block:
-        case Sense():
-            return block.operate
-        case Timer():
-            return block.pick_up
-        case Breaker():
-            return block.interrupting
-        case _:
-            return NOTHING
-
-
-def _off(block: object) -> Delay:
-    match block:
-        case Sense():
-            return block.reset
-        case Timer():
-            return block.drop_out
-        case Breaker():
-            return block.auxiliary
-        case _:
-            return NOTHING
-
-
-def _reach_mask(
-    inputs: tuple[tuple[tuple[int, bool], ...], ...],
-    breakers: tuple[int, ...],
-    observed: tuple[int, ...],
-) -> tuple[int, ...]:
-    """Which breakers and observed outputs each signal may influence (the way stops at a breaker)."""
-    mask = [0] * len(inputs)
-    bit = {b: 1 << n for n, b in enumerate(breakers)}
-    ends = set(breakers)
-    queue: deque[int] = deque()
-    for n, g in enumerate(observed):
-        mask[g] |= 1 << (len(breakers) + n)
-        queue.append(g)
-    queue.extend(breakers)
-    while queue:
-        i = queue.popleft()
-        spreading = bit[i] if i in ends else mask[i]
-        for j, _ in inputs[i]:
-            if mask[j] | spreading != mask[j]:
-                mask[j] |= spreading
-                queue.append(j)
-    return tuple(mask)

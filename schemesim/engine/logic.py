@@ -14,13 +14,12 @@ from schemesim.engine.answers import Answers
 from schemesim.engine.case import AtRest, Case
 from schemesim.engine.program import Kind
 from schemesim.engine.record import Recorder
+from schemesim.engine.roles import better, open_behind, via
 from schemesim.engine.rules import FALSE, TRUE, UNKNOWN
 from schemesim.scheme.model import FailureMode, Probability, Role
 
 WANTS_ANSWER = -1
 """Stands for the role of a gate that is unknown for want of an answer only."""
-
-_NEVER = len(Role)
 
 Commitment = tuple[int, Role, str, int]
 """Breaker block, best role, the trip output that did it, and the log row of its coil."""
@@ -103,7 +102,7 @@ class Logic:
             self._propagate()
             ready = self._ready_breaker()
             if ready is not None:
-                gate = self._better(ready)
+                gate = better(self.case, self.value, self.rank, self._open, ready)
                 if gate is None:
                     commitments.append(self._energise(ready))
                     continue
@@ -131,15 +130,19 @@ class Logic:
             return
         for group in self.case.resting:
             for _ in range(2 * len(group)):
-                if not any([self._rest(i) for i in group]):
+                changed = [self._rest(i) for i in group]
+                if not any(changed):
                     break
         self._touched.update(i for i in range(len(self.value)) if self._unsettled(i))
         if not self.asked:
             self.case.at_rest.append(
                 AtRest(
-                    tuple(self.value), tuple(self.rank), tuple(self._shown),
-                    frozenset(self._open), frozenset(self._touched),
-                )  # fmt: skip
+                    value=tuple(self.value),
+                    rank=tuple(self.rank),
+                    shown=tuple(self._shown),
+                    open=frozenset(self._open),
+                    touched=frozenset(self._touched),
+                )
             )
 
     def _unsettled(self, i: int) -> bool:
@@ -163,7 +166,7 @@ class Logic:
             unknown = [j for j in self._read_by(i) if self.value[j] == UNKNOWN]
             if not unknown:
                 break
-            behind = [g for j in unknown for g in self._open_behind(j)]
+            behind = [g for j in unknown for g in open_behind(self.case, self.value, self._open, j)]
             self._ask_gate(min(behind, key=self.case.order.__getitem__))
             self._propagate(at_rest=True)
         state = self.input_state(i, 0)
@@ -256,44 +259,6 @@ class Logic:
                 return b
         return None
 
-    def _better(self, block: int) -> int | None:
-        """A gate still unknown at this instant that would trip the breaker in a better role (ties)."""
-        best = min(self.rank[j] for j, _ in self._coils(block) if self.value[j] == TRUE)
-        if best == 0 or not self._open:
-            return None
-        could: dict[int, int] = {}
-        seen: set[int] = set()
-        stack = [j for j, _ in self._coils(block)]
-        found: list[int] = []
-        while stack:
-            g = stack.pop()
-            if g in seen or self.case.kind[g] is not Kind.GATE or self._could(g, could) >= best:
-                continue
-            seen.add(g)
-            if g in self._open:
-                found.append(g)
-            for j, inverted in self.case.inputs[g]:
-                if not inverted:
-                    stack.append(j)
-                elif self.value[g] == UNKNOWN and self.value[j] == UNKNOWN:
-                    found.extend(self._open_behind(j))
-        return min(found, key=self.case.order.__getitem__, default=None)
-
-    def _could(self, g: int, memo: dict[int, int]) -> int:
-        """Best role a signal has if everything unknown turns out true."""
-        if g not in memo:
-            case, value = self.case, self.value
-            if value[g] == FALSE or case.kind[g] is not Kind.GATE:
-                memo[g] = _NEVER if value[g] == FALSE else self.rank[g]
-            else:
-                ranks = sorted(
-                    0 if inverted else self._could(j, memo)
-                    for j, inverted in case.inputs[g]
-                    if value[j] == UNKNOWN or (value[j] == TRUE) != inverted
-                )
-                memo[g] = max(case.rank[g], ranks[case.k[g] - 1] if case.k[g] > 0 else 0)
-        return memo[g]
-
     def _next_gate(self) -> int | None:
         """The gate whose question comes next: the first in order that a live sink waits for."""
         for g in sorted(self._open, key=self.case.order.__getitem__):
@@ -336,22 +301,6 @@ class Logic:
         if self.case.kind[block] is Kind.BREAKER:
             return bool(self._live & self._bit[block])
         return bool(self._live & self.case.reach_mask[block])
-
-    def _open_behind(self, signal: int) -> list[int]:
-        """Gates that are unknown for want of an answer, behind this unknown signal."""
-        found: list[int] = []
-        seen: set[int] = set()
-        stack = [signal]
-        while stack:
-            g = stack.pop()
-            if g in seen:
-                continue
-            seen.add(g)
-            if g in self._open:
-                found.append(g)
-            else:
-                stack.extend(j for j, _ in self.case.inputs[g] if self.value[j] == UNKNOWN)
-        return found
 
     def _ask_gate(self, g: int) -> None:
         for a in (*self.case.unless[g], *self.case.given[g]):
@@ -407,7 +356,8 @@ class Logic:
         place = self.case.breakers.index(block)
         if not self.case.closable[place]:
             self._live &= ~self._bit[block]
-        return block, Role(self.rank[coil]), self.case.names[self._via(coil)], self.row[coil]
+        name = self.case.names[via(self.case, self.value, self.rank, coil)]
+        return block, Role(self.rank[coil]), name, self.row[coil]
 
     def _breaker_mode(self, block: int, cause: int) -> FailureMode | None:
         for mode, questions, certain in self.case.breaker_asks[self.case.breakers.index(block)]:
@@ -418,16 +368,3 @@ class Logic:
                 if yes:
                     return mode
         return None
-
-    def _via(self, signal: int) -> int:
-        """The trip output behind an energised coil, of the best role."""
-        while self.case.contacts[signal] is None:
-            behind = [
-                j
-                for j, inverted in self.case.inputs[signal]
-                if not inverted and self.value[j] == TRUE and self.case.kind[j] is not Kind.BREAKER
-            ]
-            if self.case.kind[signal] is not Kind.GATE or not behind:
-                break
-            signal = min(behind, key=lambda j: (self.rank[j], self.case.names[j]))
-        return signal
