@@ -3,61 +3,16 @@
 from __future__ import annotations
 
 import argparse
-import os
-from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
-from schemesim.cli.output import json_text, table_text, whole_of, write_csv
-from schemesim.cli.parser import DONE, NOTE
+from schemesim.cli.output import DONE, put, table_text, whole_of
 from schemesim.errors import reject
-from schemesim.scenario import Scenario, load_scenario
+from schemesim.scenario import Scenario
 from schemesim.scenario.model import location
 
 if TYPE_CHECKING:
     from schemesim.engine.case import Case
     from schemesim.engine.outcome import Outcome
-
-
-def run(options: argparse.Namespace) -> int:
-    """Run a command; returns the exit status.
-
-    Raises
-    ------
-    InputError
-        For bad input of any kind.
-    """
-    from schemesim.cli.study import study
-
-    if options.csv is not None:
-        _check_place(options.csv, options.file)
-    scenario = load_scenario(options.file)
-    command = {"check": check, "show": show, "inject": inject, "study": study}[options.command]
-    return command(scenario, options)
-
-
-def _check_place(path: str, scenario: str) -> None:
-    """Refuse a CSV file that could not be written, or would replace the scenario, before any work is done."""
-    if os.path.realpath(path) == os.path.realpath(scenario):
-        raise reject("--csv", path, "another file than the scenario")
-    if os.path.isdir(path) or not os.path.isdir(os.path.dirname(os.path.abspath(path))):
-        raise reject("--csv", path, "a file in a folder that is there")
-
-
-def put(
-    options: argparse.Namespace,
-    scenario: Scenario,
-    content: Mapping[str, object],
-    rows: Sequence[Mapping[str, object]],
-    text: Sequence[str],
-) -> None:
-    """Print text or JSON, and write the CSV first, so that a place that cannot be written stops nothing halfway."""
-    if options.csv is not None:
-        write_csv(options.csv, rows)
-    if options.json:
-        head = {"scenario": {"file": options.file, "name": scenario.name}, "note": NOTE}
-        print(json_text(options.command, {**head, **content}))
-    else:
-        print("\n".join([*text, "", NOTE]))
 
 
 def check(scenario: Scenario, options: argparse.Namespace) -> int:
@@ -95,7 +50,7 @@ def check(scenario: Scenario, options: argparse.Namespace) -> int:
         "",
         table_text(rows, list(rows[0])),
     ]
-    put(options, scenario, {**counts, "policies": rows, "runs": names, "coverage_gaps": gaps}, rows, text)
+    put(options, scenario.name, {**counts, "policies": rows, "runs": names, "coverage_gaps": gaps}, rows, text)
     return DONE
 
 
@@ -146,7 +101,7 @@ def show(scenario: Scenario, options: argparse.Namespace) -> int:
         text += ["", f"expected: {expect}"]
     if scenario.frequency_hz is None:
         text += ["", "cycles of 50 Hz; the scenario states no frequency_hz"]
-    put(options, scenario, content, [{str(k): v for k, v in row.items()} for row in rows], text)
+    put(options, scenario.name, content, [{str(k): v for k, v in row.items()} for row in rows], text)
     return DONE
 
 
@@ -211,5 +166,5 @@ def inject(scenario: Scenario, options: argparse.Namespace) -> int:
         table_text(shown, columns),
     ]
     content = {"policy": policy, "event": str(case.event), "order": order, "limit_ms": limit_us / 1000, "rows": rows}
-    put(options, scenario, content, rows, text)
+    put(options, scenario.name, content, rows, text)
     return DONE

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+import argparse
 import csv
 import io
 import json
 import math
+import os
 import sys
 import time
 from collections.abc import Callable, Iterable, Mapping, Sequence
@@ -13,6 +15,15 @@ from typing import Any
 
 from schemesim.errors import reject
 from schemesim.scenario.writing import write_whole
+
+DONE, CANNOT_GO_ON, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
+"""Exit status."""
+
+NOTE = (
+    "Results support and never replace a qualified engineer's review, local codes and the equipment's own "
+    "documentation."
+)
+"""The safety note on every output."""
 
 VERSION = 1
 """Version of the JSON and CSV forms."""
@@ -143,3 +154,28 @@ def whole_of(text: str, what: str, low: int, high: int) -> int:
     if not low <= value <= high:
         raise reject(what, text, f"a whole number from {low} to {high}")
     return value
+
+
+def check_place(path: str, scenario: str) -> None:
+    """Refuse a CSV file that could not be written, or would replace the scenario, before any work is done."""
+    if os.path.realpath(path) == os.path.realpath(scenario):
+        raise reject("--csv", path, "another file than the scenario")
+    if os.path.isdir(path) or not os.path.isdir(os.path.dirname(os.path.abspath(path))):
+        raise reject("--csv", path, "a file in a folder that is there")
+
+
+def put(
+    options: argparse.Namespace,
+    name: str,
+    content: Mapping[str, object],
+    rows: Sequence[Mapping[str, object]],
+    text: Sequence[str],
+) -> None:
+    """Print text or JSON, and write the CSV first, so that a place that cannot be written stops nothing halfway."""
+    if options.csv is not None:
+        write_csv(options.csv, rows)
+    if options.json:
+        head = {"scenario": {"file": options.file, "name": name}, "note": NOTE}
+        print(json_text(options.command, {**head, **content}))
+    else:
+        print("\n".join([*text, "", NOTE]))

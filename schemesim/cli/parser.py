@@ -7,15 +7,8 @@ import os
 import sys
 from collections.abc import Sequence
 
+from schemesim.cli.output import BAD_INPUT, CANNOT_GO_ON, DONE, INTERRUPTED, NOTE, check_place
 from schemesim.errors import InputError, SchemesimError
-
-DONE, CANNOT_GO_ON, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
-
-NOTE = (
-    "Results support and never replace a qualified engineer's review, local codes and the equipment's own "
-    "documentation."
-)
-"""The safety note on every output."""
 
 _EXAMPLES = """examples:
   python -m schemesim check scenario.yaml
@@ -78,11 +71,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
     arguments : sequence of str or None
         By default those of the process.
     """
-    from schemesim.cli.commands import run
-
     options = parser().parse_args(arguments)
     try:
-        status = run(options)
+        status = _run(options)
         sys.stdout.flush()
     except InputError as error:
         count = len(error.problems)
@@ -100,3 +91,14 @@ def main(arguments: Sequence[str] | None = None) -> int:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return DONE
     return status
+
+
+def _run(options: argparse.Namespace) -> int:
+    from schemesim.cli.commands import check, inject, show  # heavy: not needed to tell of bad arguments
+    from schemesim.cli.study import study
+    from schemesim.scenario import load_scenario
+
+    if options.csv is not None:
+        check_place(options.csv, options.file)
+    command = {"check": check, "show": show, "inject": inject, "study": study}[options.command]
+    return command(load_scenario(options.file), options)

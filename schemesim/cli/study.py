@@ -12,9 +12,7 @@ from collections.abc import Iterator, Mapping
 from concurrent.futures import Executor, ProcessPoolExecutor
 from contextlib import contextmanager
 
-from schemesim.cli.commands import put
-from schemesim.cli.output import Progress, number_of, table_text, whole_of
-from schemesim.cli.parser import DONE, INTERRUPTED
+from schemesim.cli.output import DONE, INTERRUPTED, Progress, number_of, put, table_text, whole_of
 from schemesim.errors import nearest, reject
 from schemesim.scenario import Scenario
 from schemesim.scenario.model import location
@@ -80,7 +78,7 @@ def study(scenario: Scenario, options: argparse.Namespace) -> int:
         ]
         text += ["policies side by side", "", table_text(*_side_by_side(finished)), ""]
         text.append(f"verdicts against {side_by_side.base!r} stand where the brackets do not overlap")
-    put(options, scenario, content, rows, text)
+    put(options, scenario.name, content, rows, text)
     if not complete:
         print("interrupted", file=sys.stderr)
     return DONE if complete else INTERRUPTED

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import re
+import textwrap
 from collections.abc import Callable
 from dataclasses import fields, is_dataclass, replace
 from pathlib import Path
@@ -15,6 +17,8 @@ from schemesim.plant.model import Location, SectionKind
 from schemesim.scenario import Scenario, load_scenario, save_scenario, scenario_from_text, scenario_text
 from schemesim.scenario.names import BUILT_IN
 from schemesim.scenario.parts import PolicyIn, part_model
+from schemesim.scenario.reading import read_text
+from schemesim.scenario.schema import ScenarioIn
 from schemesim.scheme.build import BreakerTimes
 from schemesim.scheme.delays import Empirical, Fixed, LogNormal, Normal, Triangular, Uniform
 from schemesim.scheme.failure_data import ORDERS_OF_MAGNITUDE
@@ -283,3 +287,22 @@ def test_comments_and_order_of_keys_change_nothing(small: Scenario) -> None:
     lines = (DATA / "small.yaml").read_text(encoding="utf-8").splitlines()
     commented = "\n".join(f"{line}  # a comment" for line in lines)
     assert scenario_from_text(commented) == small
+
+
+def test_the_description_of_the_format_holds() -> None:
+    """Every block of the description that begins with a key of the file fits the schema."""
+    text = (DATA.parents[1] / "scenarios" / "FORMAT.md").read_text(encoding="utf-8")
+    found = re.findall(r"\n\n((?:    \S.*\n(?:    .*\n)*))", text)
+    blocks = [textwrap.dedent(block) for block in found if re.match(r"    [a-z_]+:", block)]
+    keys: set[str] = set()
+    for block in blocks:
+        data = read_text(block, "FORMAT.md").data
+        assert isinstance(data, dict)
+        keys |= set(data)
+        plant = data.get("plant", {})
+        assert isinstance(plant, dict)
+        plant = {k: v for k, v in plant.items() if k != "imports"}
+        ScenarioIn.model_validate({"schemesim": 1, **data, "plant": plant})
+    assert keys == {
+        "plant", "policies", "failure_data", "out_of_service", "fault_frequencies", "limits", "study", "runs",
+    }  # fmt: skip
