@@ -10,7 +10,7 @@ from schemesim.plant.zones import around
 from schemesim.scheme import functions as fn
 from schemesim.scheme.build import SchemeBuilder
 from schemesim.scheme.conditions import Direction, InZone
-from schemesim.scheme.elements import Element
+from schemesim.scheme.elements import Element, to_far_end
 from schemesim.scheme.functions import DistanceNeeds
 from schemesim.scheme.model import ComponentKind, Input, Role
 from schemesim.scheme.policy import Policy, Start
@@ -41,11 +41,11 @@ def dress_local_backup(b: SchemeBuilder, e: Element) -> None:
         base = f"{group}/local {n + 1}"
         ways: list[Input]
         if line:
-            reach = 1.1 * b.plant.section[e.name].length
+            reach = 1.1 * to_far_end(b, e, side)
             ways = fn.zone_operated(b, fn.distance_zone(b, f"{base} 67", reach, needs, host, times), lb.delay)
         else:
             inside = InZone(e.object.zone, tuple(t.ct for t in side.terminals))
-            ways = [fn.delayed(b, f"{base} 67 timer", fn.sense(b, f"{base} 67", inside, times), lb.delay)]
+            ways = [fn.delayed(b, f"{base} 67 timer", fn.sense(b, f"{base} 67", inside, times), lb.unit_delay)]
         mark = e.contact("67", Role.LOCAL, host)
         forward = fn.trip_output(b, f"{base} 67 trip", ways, host, mark, times, unless=needs.unless)
         back = fn.distance_zone(b, f"{base} 67 reverse", 0.0, needs, host, times, direction=Direction.REVERSE)

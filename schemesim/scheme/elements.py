@@ -33,9 +33,10 @@ FUNCTION = {
 
 @dataclass(frozen=True)
 class Side:
-    """One end of an element: its station, the CTs there and the breakers to trip."""
+    """One end of an element: its station, the place along it, the CTs there and the breakers to trip."""
 
     station: str
+    at: float
     terminals: tuple[Terminal, ...]
     breakers: tuple[str, ...]
 
@@ -101,12 +102,12 @@ def _sides(b: SchemeBuilder, o: ProtectedObject, zone: str) -> tuple[Side, ...]:
             at = d.a_at if d.a == o.element else d.b_at
             ends.setdefault((at, getattr(d, by) if by else ""), set()).add(d.name)
     sides: list[Side] = []
-    for _, devices in sorted(ends.items()):
+    for (at, _), devices in sorted(ends.items()):
         terminals, breakers = _behind(b, o, devices)
         if terminals:
             station = b.plant.device[terminals[0].ct].station
             mine = tuple(x for x in breakers if x in b.zones.border[zone])
-            sides.append(Side(station, terminals, mine))
+            sides.append(Side(station, at, terminals, mine))
     return tuple(sides)
 
 
@@ -277,8 +278,14 @@ def _line_end(b: SchemeBuilder, e: Element, s: ProtectionSet, side: Side) -> _Li
     return _LineEnd(side, host, needs, f"{group}/{s.label}")
 
 
+def to_far_end(b: SchemeBuilder, e: Element, side: Side, *, nearest: bool = False) -> float:
+    """Length from one end of a line to the farthest other end (or the nearest: zone 1 stops short of it)."""
+    shares = [abs(other.at - side.at) for other in e.sides if other.at != side.at] or [1.0]
+    return (min(shares) if nearest else max(shares)) * b.plant.section[e.name].length
+
+
 def _zone(b: SchemeBuilder, e: Element, end: _LineEnd, label: str, share: float, over: float) -> DistanceZone:
-    length = b.plant.section[e.name].length
+    length = to_far_end(b, e, end.side, nearest=label == "21-1")
     times = e.policy.times.distance
     return fn.distance_zone(
         b, f"{end.base} {label}", share * length, end.needs, end.host, times, over_reach=over
@@ -334,7 +341,7 @@ def _line_scheme(
 
 
 def _reverse(b: SchemeBuilder, e: Element, end: _LineEnd) -> DistanceZone:
-    reach = e.policy.reaches.reverse * b.plant.section[e.name].length
+    reach = e.policy.reaches.reverse * to_far_end(b, e, end.side)
     times = e.policy.times.distance
     return fn.distance_zone(
         b, f"{end.base} 21 reverse", reach, end.needs, end.host, times, direction=Direction.REVERSE

@@ -70,8 +70,9 @@ class LocalBackup:
 
     ``bus_delay`` of the reverse-looking element has to outlast breaker failure around the bus
     and to end, breaker and reset included, before zone 2 of the remote ends runs out, or these
-    clear the bus instead. ``delay`` of the forward element, which sees past the remote bus, has to
-    outlast the local back-up there.
+    clear the bus instead. ``delay`` of a line's forward element, which sees past the remote bus, has to
+    outlast the local back-up there; ``unit_delay`` of transformers, generators and feeders, which see
+    their own zone only, has to come before ``bus_delay`` of the circuits beside them.
     """
 
     core: str = "3"
@@ -80,6 +81,7 @@ class LocalBackup:
     coil: str = "1"
     delay: Delay = Fixed(400_000)
     bus_delay: Delay = Fixed(270_000)
+    unit_delay: Delay = Fixed(150_000)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -126,13 +126,14 @@ def tee() -> Plant:
 @pytest.mark.parametrize(
     ("scheme", "times"),
     [
-        # At 90 km: Cedar at 10 and Birch at 50 km see it in zone 1 (80 km), Alder at 90 km in zone 2.
-        (LineScheme.DISTANCE, {"Alder": 420_000, "Birch": 70_000, "Cedar": 70_000}),
-        # Alder is permitted as soon as one end has it in zone 1.
-        (LineScheme.PERMISSIVE_UNDERREACH, {"Alder": 85_000, "Birch": 70_000, "Cedar": 70_000}),
-        # Alder needs both.
-        (LineScheme.PERMISSIVE_OVERREACH, {"Alder": 85_000, "Birch": 70_000, "Cedar": 70_000}),
-        (LineScheme.BLOCKING, {"Alder": 100_000, "Birch": 70_000, "Cedar": 70_000}),
+        # Zone 1 stops short of the nearest end, 80 % of 40, 40 and 60 km; zone 2 sees past the farthest, 120 % of
+        # 100, 60 and 100. At 90 km: Cedar, at 10 km, has it in zone 1, Birch at 50 and Alder at 90 in zone 2.
+        (LineScheme.DISTANCE, {"Alder": 420_000, "Birch": 420_000, "Cedar": 70_000}),
+        # Permitted as soon as one end has it in zone 1.
+        (LineScheme.PERMISSIVE_UNDERREACH, {"Alder": 85_000, "Birch": 85_000, "Cedar": 70_000}),
+        # Permitted by both others.
+        (LineScheme.PERMISSIVE_OVERREACH, {"Alder": 85_000, "Birch": 85_000, "Cedar": 70_000}),
+        (LineScheme.BLOCKING, {"Alder": 100_000, "Birch": 100_000, "Cedar": 70_000}),
         (LineScheme.DIFFERENTIAL, {"Alder": 70_000, "Birch": 70_000, "Cedar": 70_000}),
     ],
 )
