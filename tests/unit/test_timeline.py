@@ -1,0 +1,518 @@
+"""Clearing sequences as tables and pictures: what they hold, not how their pixels fall.
+
+The plant is a line from a station with a generator to one with a feeder; times below are worked
+out from the policy: elements operate in 20 ms, lockouts in 10 ms, breakers interrupt in
+50 ms, and the breaker-failure timer runs for 150 ms.
+"""
+
+from __future__ import annotations
+
+import io
+import subprocess
+import sys
+from functools import cache
+from itertools import combinations
+from pathlib import Path
+
+import numpy as np
+import pytest
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+from matplotlib.patches import Rectangle
+
+from schemesim.engine.answers import DrawnAnswers, FixedAnswers
+from schemesim.engine.case import Case, bind
+from schemesim.engine.event import run_event
+from schemesim.engine.outcome import Row, Run, Status
+from schemesim.engine.program import compile_scheme
+from schemesim.engine.sensing import LogicalSensing, NoFault
+from schemesim.engine.times import DelayTimes
+from schemesim.errors import InputError
+from schemesim.plant.layouts import Bay, CtPlacement, feeder, generator, line, single_bus
+from schemesim.plant.model import Location, PlantBuilder
+from schemesim.report.lanes import Look, drawing
+from schemesim.report.pictures import STYLES, plot_timeline, short_names
+from schemesim.report.sequence import shorten
+from schemesim.report.timeline import Timeline, replay, replay_trial, timeline
+from schemesim.scheme.build import BreakerTimes
+from schemesim.scheme.delays import Fixed
+from schemesim.scheme.dress import dress
+from schemesim.scheme.functions import BreakerFailureTimes, ElementTimes
+from schemesim.scheme.model import Role
+from schemesim.scheme.policy import BreakerFailurePolicy, LocalBackup, PolicyTimes, Reaches, duplicate_chain
+from schemesim.study.injection import inject
+from schemesim.study.tree import explore
+
+ROOT = Path(__file__).resolve().parents[2]
+NO_FAILURE: tuple[str, ...] = ()
+STUCK = ("Elm.L1.CB: does_not_open",)
+DC_LOST = ("Fir/DC 1: lost", "Fir/DC 2: lost")
+SITUATIONS = {
+    "main": ("L1", NO_FAILURE),
+    "stuck": ("L1", STUCK),
+    "late": ("L1", ("Elm.L1.CB: opens_late",)),
+    "no interruption": ("L1", ("Elm.L1.CB: does_not_interrupt",)),
+    "dead zone": ("Fir.L1.c", NO_FAILURE),
+    "station without DC": ("Fir.B1", DC_LOST),
+}
+
+
+@cache
+def case_of(section: str, auxiliary: bool = False) -> Case:
+    b = PlantBuilder()
+    line(b, "L1", 40, kv=110)
+    generator(b, "G1", station="Elm")
+    feeder(b, "F1", station="Fir", load_mw=20)
+    single_bus(b, "Elm", [Bay("G1", "G1"), Bay("L1", "L1", at=0)], kv=110)
+    single_bus(b, "Fir", [Bay("L1", "L1", at=1), Bay("F1", "F1")], kv=110, ct=CtPlacement.CIRCUIT_SIDE)
+    plant = b.build()
+    element = ElementTimes(operate=Fixed(20_000), reset=Fixed(15_000))
+    policy = duplicate_chain(
+        local_backup=LocalBackup(delay=Fixed(400_000), bus_delay=Fixed(270_000)),
+        end_fault=True,
+        breaker_failure=BreakerFailurePolicy(
+            times=BreakerFailureTimes(timer=Fixed(150_000)), auxiliary=auxiliary
+        ),
+        reaches=Reaches(zone_2_delay=Fixed(350_000), zone_3_delay=Fixed(1_000_000)),
+        times=PolicyTimes(
+            lockout=Fixed(10_000),
+            channel=Fixed(15_000),
+            end_fault=Fixed(40_000),
+            differential=element,
+            distance=element,
+            overcurrent=element,
+            breaker=BreakerTimes(interrupting=Fixed(50_000), auxiliary=Fixed(5_000)),
+        ),
+    )
+    program = compile_scheme(plant, dress(plant, policy))
+    event = Location(section) if section in plant.section else NoFault(section)
+    return bind(program, event, LogicalSensing())
+
+
+@cache
+def timeline_of(situation: str, limit_ms: float | None = 150) -> Timeline:
+    section, yes = SITUATIONS[situation]
+    case = case_of(section)
+    return timeline(case, replay(case, yes), limit_ms=limit_ms)
+
+
+@cache
+def picture_of(situation: str) -> Axes:
+    return plot_timeline(timeline_of(situation))
+
+
+each = pytest.mark.parametrize("situation", SITUATIONS)
+
+
+def bars(ax: Axes, look: Look, subject: str = "") -> list[Rectangle]:
+    found = [p for p in ax.patches if (p.get_gid() or "").startswith(f"bar: {look}: {subject}")]
+    return [p for p in found if isinstance(p, Rectangle)]
+
+
+def text_of(ax: Axes) -> list[str]:
+    return [t.get_text() for t in ax.texts if t.get_text()]
+
+
+def test_the_situations_are_what_they_are_called() -> None:
+    def opened(situation: str) -> dict[str, tuple[Role, float]]:
+        return {o.breaker: (o.role, o.t_open_us / 1000) for o in timeline_of(situation).run.outcome.openings}
+
+    assert opened("main") == {"Elm.L1.CB": (Role.MAIN, 70), "Fir.L1.CB": (Role.MAIN, 70)}
+    assert opened("stuck") == {"Fir.L1.CB": (Role.MAIN, 70), "Elm.G1.CB": (Role.BREAKER_FAILURE, 230)}
+    assert opened("late").keys() == opened("no interruption").keys() == {"Elm.L1.CB", "Fir.L1.CB", "Elm.G1.CB"}
+    # bus protection with its lockout, 52a, end-fault timer, channel, breaker
+    assert opened("dead zone")["Elm.L1.CB"] == (Role.BREAKER_FAILURE, 20 + 10 + 50 + 5 + 40 + 15 + 50)
+    assert opened("station without DC") == {"Elm.L1.CB": (Role.REMOTE, 20 + 350 + 50)}
+
+
+# --- the table ----------------------------------------------------------------------------
+
+
+@each
+def test_openings_and_clearing_are_in_the_table_at_their_times(situation: str) -> None:
+    found = timeline_of(situation)
+    table = found.table()
+    opens = table[table.what.isin(["opens", "opens but does not interrupt"])]
+    listed = sorted(zip(opens.subject, opens.t_ms, strict=True))
+    assert listed == sorted((o.breaker, o.t_open_us / 1000) for o in found.run.outcome.openings)
+    assert listed
+    clear = found.run.outcome.t_clear_us
+    assert clear is not None
+    assert table[table.what == "cleared"].t_ms.tolist() == [clear / 1000]
+
+
+@each
+@pytest.mark.parametrize("everything", [False, True])
+def test_every_cause_leads_to_the_beginning_through_earlier_rows(situation: str, everything: bool) -> None:
+    found = timeline_of(situation)
+    shown = {r.index for r in found.rows(everything)}
+    for row in found.rows(everything):
+        at: Row = row
+        while at.index != 0:
+            cause = found.cause_of(at, everything)
+            assert cause is not None, row
+            assert cause.index < at.index
+            assert cause.t_us <= at.t_us
+            assert cause.index in shown
+            at = cause
+
+
+@each
+def test_all_that_led_to_an_opening_is_kept(situation: str) -> None:
+    found = timeline_of(situation)
+    log = found.run.log
+    for row in log:
+        if row.kind == "breaker" and row.what == "opens":
+            i = row.index
+            while i >= 0:
+                assert i in found.kept
+                i = log[i].cause
+
+
+def test_the_full_table_is_the_log() -> None:
+    found = timeline_of("stuck")
+    table = found.table(all=True)
+    assert table.index.tolist() == list(range(len(found.run.log)))
+    assert table.subject.tolist() == [r.subject for r in found.run.log]
+    assert 0 < len(found.table()) < len(table) / 2
+
+
+def test_times_in_cycles_follow_the_power_frequency() -> None:
+    case = case_of("L1")
+    for hz in (50.0, 60.0, 16.7):
+        table = timeline(case, replay(case, ()), frequency_hz=hz).table()
+        assert table.t_cycles.tolist() == pytest.approx([ms * hz / 1000 for ms in table.t_ms])
+
+
+def test_a_stopped_timer_shows_what_was_left() -> None:
+    # zone 2: started at 20 ms for 350 ms; the ends open at 70 ms, the element drops out 15 ms later
+    table = timeline_of("main").table()
+    row = table[(table.subject == "Elm/L1/2 21-2 timer") & table.margin_ms.notna()]
+    assert row.t_ms.tolist() == [85.0]
+    assert row.margin_ms.tolist() == [20 + 350 - 85.0]
+
+
+def test_breaker_failure_row_by_row() -> None:
+    found = timeline_of("stuck")
+    table = found.table()
+
+    def at(subject: str, what: str) -> list[float]:
+        chosen = table[(table.subject == subject) & table.what.str.startswith(what)]
+        return [float(t) for t in chosen.t_ms]
+
+    assert at("Elm.L1.CB: does_not_open", "answered yes") == [20.0]
+    assert at("Elm.L1.CB", "does not open") == [20.0]
+    assert at("Elm.L1.CB/50BF timer", "starts") == [20.0]
+    assert at("Elm.L1.CB/50BF timer", "operates") == [170.0]
+    assert at("Elm.L1.CB/86BF 1", "seals in") == [180.0]
+    assert at("Elm.G1.CB", "opens") == [230.0]
+    trip = next(r for r in found.rows() if r.subject == "Elm.L1.CB/50BF" and r.what == "operates")
+    chain = []
+    at_row = found.cause_of(trip)
+    while at_row is not None:
+        chain.append(at_row.subject)
+        at_row = found.cause_of(at_row)
+    assert "Elm.L1.CB/50BF timer" in chain  # it came after the current detector picked up
+
+
+def test_an_output_asked_about_late_says_since_when_it_is_on() -> None:
+    found = timeline_of("stuck")
+    row = next(r for r in found.run.log if r.subject == "Elm.L1.CB/50BF retrip" and r.what == "operates")
+    assert row.t_us > found.since_us(row) == 20_000
+    assert found.says(row) == "operates (on since 20 ms)"
+
+
+def test_what_held_before_the_event_is_said_to_and_takes_no_credit() -> None:
+    # with the 52a contact beside the current detector: closed all along, asked about when a trip begins
+    case = case_of("L1", auxiliary=True)
+    found = timeline(case, replay(case, STUCK))
+    contact = next(r for r in found.rows() if r.subject == "Elm.L1.CB/50BF 52a true")
+    assert (contact.t_us, found.since_us(contact), found.cause_of(contact)) == (20_000, 0, None)
+    assert found.because(contact) == "as before the event"
+    assert found.because(found.run.log[0]) == ""
+    trip = next(r for r in found.rows() if r.subject == "Elm.L1.CB/50BF" and r.what == "operates")
+    behind = [trip.subject]
+    at = found.cause_of(trip)
+    while at is not None:
+        behind.append(at.subject)
+        at = found.cause_of(at)
+    assert "Elm.L1.CB/50BF timer" in behind
+    assert behind[-1] == "L1"
+
+
+@each
+@pytest.mark.parametrize("width", [80, 110, 200])
+def test_plain_text_keeps_to_its_width(situation: str, width: int) -> None:
+    text = timeline_of(situation).to_text(width=width)
+    assert max(map(len, text.splitlines())) <= width
+    assert len(text.splitlines()) == len(timeline_of(situation).kept) + 4
+
+
+@each
+def test_repr_is_legible_and_says_how_it_ended(situation: str) -> None:
+    found = timeline_of(situation)
+    clear = found.run.outcome.t_clear_us
+    assert clear is not None
+    assert max(map(len, repr(found).splitlines())) <= 110
+    assert f"cleared at {clear / 1000:g} ms ({clear / 20_000:.2f} cycles)" in repr(found).splitlines()[1]
+
+
+def test_html_escapes_and_holds_every_row() -> None:
+    html = timeline_of("stuck")._repr_html_()
+    assert html.count("<tr") == len(timeline_of("stuck").kept) + 2
+    assert "Elm.L1.CB: does_not_open" in html
+    assert "NaN" not in html
+    assert "&lt;NA&gt;" not in html
+
+
+@pytest.mark.parametrize(("limit", "words"), [(100, "30 ms inside"), (70, "0 ms inside"), (60.5, "9.5 ms beyond")])
+def test_the_limit_is_held_against_the_clearing(limit: float, words: str) -> None:
+    ending = timeline_of("main", limit).ending
+    if limit == 100:
+        assert f"{words} the limit of 100 ms" in ending
+    else:
+        assert words in ending
+
+
+# --- any run ------------------------------------------------------------------------------
+
+
+def test_a_run_without_a_log_is_run_again() -> None:
+    case = case_of("L1")
+    bare = run_event(case, FixedAnswers(case.program, STUCK))
+    assert bare.log == ()
+    assert timeline(case, bare).table().equals(timeline(case, replay(case, STUCK)).table())
+
+
+def test_leaves_injected_cases_and_answers_all_replay() -> None:
+    case = case_of("L1")
+    question = next(q for q, _ in run_event(case, FixedAnswers(case.program, STUCK)).asked)
+    tree = explore(case, epsilon=1e-2)
+    leaf = next(leaf for leaf in tree.leaves if leaf.yes)
+    assert timeline(case, replay(case, leaf)).run.outcome == tree.ends[leaf.end].outcome
+    injected = inject(case).where(STUCK)
+    assert replay(case, injected).outcome == injected.outcome == timeline_of("stuck").run.outcome
+    by_name = replay(case, STUCK[0])
+    assert by_name.outcome == injected.outcome
+    assert replay(case, dict(by_name.asked)) == by_name == replay(case, by_name)
+    assert replay(case, FixedAnswers(case.program, STUCK)) == by_name
+    assert dict(replay(case, {question: True}).asked)[question]
+
+
+def test_a_trial_is_replayed_with_its_answers_and_delays() -> None:
+    case = case_of("L1")
+    for trial in range(20):
+        bare = run_event(case, DrawnAnswers(case.program, 5, trial), times=DelayTimes(5, trial))
+        assert replay_trial(case, 5, trial).outcome == bare.outcome
+        assert timeline(case, bare, times=DelayTimes(5, trial)).run.outcome == bare.outcome
+
+
+def test_a_run_that_does_not_come_out_again_is_refused() -> None:
+    case = case_of("L1")
+    bare = run_event(case, FixedAnswers(case.program, STUCK), horizon_us=100_000)
+    with pytest.raises(InputError, match="run without a log"):
+        timeline(case, bare)
+
+
+@pytest.mark.parametrize("bad", [{"frequency_hz": 0}, {"frequency_hz": float("nan")}, {"limit_ms": -1}])
+def test_bad_numbers_are_refused(bad: dict[str, float]) -> None:
+    case = case_of("L1")
+    run = replay(case, ())
+    with pytest.raises(InputError):
+        timeline(case, run, **bad)  # type: ignore[arg-type]  # the keys are the parameters' names
+    with pytest.raises(InputError):
+        replay(case, ["Elm.L1.CB: does not exist"])
+    with pytest.raises(InputError):
+        timeline(case, run).to_text(width=40)
+
+
+def at_horizon() -> tuple[Case, Run]:
+    case = case_of("L1")
+    return case, replay(case, STUCK, horizon_us=200_000)
+
+
+def test_a_run_cut_off_at_its_horizon_says_so() -> None:
+    found = timeline(*at_horizon())
+    assert found.run.outcome.status is Status.UNDETERMINED
+    assert "horizon" in found.ending
+    assert found.table().what.iloc[-1].startswith("ends at the horizon")
+    ax = plot_timeline(found)
+    (fault,) = bars(ax, Look.FAULT)
+    assert fault.get_x() + fault.get_width() == ax.get_xlim()[1]
+    assert not any("cleared" in text for text in text_of(ax))
+
+
+def test_a_trip_with_no_fault_has_no_bar_of_a_fault() -> None:
+    case = case_of("Elm.L1.CB/BF relay")
+    found = timeline(case, replay(case, ()))
+    assert found.run.outcome.status is Status.NO_FAULT
+    assert found.run.outcome.openings
+    ax = plot_timeline(found)
+    assert bars(ax, Look.FAULT) == []
+    assert len(bars(ax, Look.OPENING)) == len(found.run.outcome.openings)
+    assert "fault on" not in found.title
+
+
+# --- the picture --------------------------------------------------------------------------
+
+
+@each
+def test_both_axes_carry_their_units_and_agree(situation: str) -> None:
+    ax = picture_of(situation)
+    assert ax.get_xlabel() == "time from the beginning of the fault, ms"
+    (top,) = ax.child_axes
+    assert top.get_xlabel() == "cycles of 50 Hz"
+    ax.figure.draw_without_rendering()  # type: ignore[union-attr]  # it is a whole figure
+    assert top.get_xlim() == pytest.approx(tuple(ms / 20 for ms in ax.get_xlim()))
+
+
+@each
+def test_the_clearing_and_the_limit_stand_at_their_times(situation: str) -> None:
+    found, ax = timeline_of(situation), picture_of(situation)
+    clear = found.run.outcome.t_clear_us
+    assert clear is not None
+    label = f"cleared {clear / 1000:g} ms ({clear / 20_000:.2f} cycles)"
+    (line,) = [item for item in ax.lines if item.get_gid() == label]
+    assert np.asarray(line.get_xdata()).tolist() == [clear / 1000] * 2
+    assert line.get_linestyle() == "-"
+    (limit,) = [item for item in ax.lines if item.get_gid() == "limit 150 ms"]
+    assert np.asarray(limit.get_xdata()).tolist() == [150.0, 150.0]
+    assert limit.get_linestyle() == "--"
+    assert {label, "limit 150 ms"} <= set(text_of(ax))
+    (fault,) = bars(ax, Look.FAULT)
+    assert fault.get_width() == clear / 1000
+
+
+@each
+def test_each_opening_has_a_bar_from_its_coil_to_the_interruption(situation: str) -> None:
+    ax = picture_of(situation)
+    for o in timeline_of(situation).run.outcome.openings:
+        (bar,) = bars(ax, Look.OPENING, o.breaker)
+        assert bar.get_x() == o.t_trip_us / 1000
+        assert bar.get_x() + bar.get_width() == pytest.approx(o.t_open_us / 1000)
+        (contact,) = bars(ax, Look.CLOSED, o.breaker)
+        assert contact.get_x() + contact.get_width() > bar.get_x() + bar.get_width() - 1e-9
+
+
+@each
+def test_timers_are_hatched_and_stopped_ones_carry_their_margin(situation: str) -> None:
+    found, ax = timeline_of(situation), picture_of(situation)
+    rows = [found.run.log[i] for i in found.kept]
+    margins = sorted(f"{r.margin_us / 1000:g} ms left" for r in rows if r.kind == "timer" and r.margin_us is not None)
+    assert sorted(text for text in text_of(ax) if text.endswith("left")) == margins
+    assert margins
+    running = bars(ax, Look.RUNNING)
+    assert len(running) >= len(margins)
+    assert all(bar.get_hatch() for bar in running)
+
+
+@each
+def test_every_failure_is_marked_and_named(situation: str) -> None:
+    _, yes = SITUATIONS[situation]
+    ax = picture_of(situation)
+    marked = sorted((item.get_gid() or "") for item in ax.lines if (item.get_gid() or "").startswith("failure"))
+    assert marked == sorted(f"failure: {name.split(': ')[0]}" for name in yes)
+    for name in yes:
+        assert name.split(": ")[1].replace("_", " ") in text_of(ax)
+
+
+def test_looks_differ_without_colour() -> None:
+    def grey(colour: str) -> float:
+        named = {"white": "#FFFFFF"}.get(colour, colour)
+        r, g, b = (int(named[i : i + 2], 16) for i in (1, 3, 5))
+        return 0.299 * r + 0.587 * g + 0.114 * b
+
+    for one, other in combinations(STYLES.values(), 2):
+        same_form = one.hatch == other.hatch and one.height == other.height
+        assert not same_form or abs(grey(one.face) - grey(other.face)) > 40
+
+
+@each
+def test_links_run_along_the_way_to_openings_and_failures(situation: str) -> None:
+    found = timeline_of(situation)
+    what = drawing(found)
+    lanes = {lane.subject for lane in what.lanes}
+    assert all(link.cause in lanes and link.effect in lanes for link in what.links)
+    assert all(link.t_cause_us <= link.t_effect_us for link in what.links)
+    reached = {what.fault.subject}
+    for _ in what.links:
+        reached |= {link.effect for link in what.links if link.cause in reached}
+    assert {o.breaker for o in found.run.outcome.openings} <= reached
+    drawn = [t for t in picture_of(situation).texts if (t.get_gid() or "").startswith("cause: ")]
+    assert len(drawn) == len(what.links)
+
+
+@each
+def test_nothing_written_overlaps_or_leaves_the_picture(situation: str) -> None:
+    from matplotlib.backends.backend_agg import FigureCanvasAgg
+
+    ax = picture_of(situation)
+    figure = ax.figure
+    assert isinstance(figure, Figure)
+    renderer = FigureCanvasAgg(figure).get_renderer()  # type: ignore[no-untyped-call]  # matplotlib types it not
+    figure.draw(renderer)
+    whole = figure.bbox
+    labels = [t for t in ax.get_yticklabels() if t.get_text()]
+    assert len(labels) == len(drawing(timeline_of(situation)).lanes) + len(drawing(timeline_of(situation)).stations)
+    legend = ax.get_legend()
+    assert legend is not None
+    texts = [*labels, *(t for t in ax.texts if t.get_text()), ax.xaxis.label, *legend.get_texts()]
+    boxes = [(t.get_text(), t.get_window_extent(renderer)) for t in texts]
+    for text, box in boxes:
+        assert whole.x0 <= box.x0 < box.x1 <= whole.x1, text
+        assert whole.y0 <= box.y0 < box.y1 <= whole.y1, text
+    for (text, box), (other, box_2) in combinations(boxes, 2):
+        assert not box.shrunk(0.9, 0.75).overlaps(box_2.shrunk(0.9, 0.75)), (text, other)
+
+
+def test_it_draws_on_a_given_axis_and_in_any_format() -> None:
+    figure = Figure(figsize=(9, 9))
+    ax = figure.add_subplot()
+    assert timeline_of("stuck").plot(ax) is ax
+    for kind, start in (("png", b"\x89PNG"), ("svg", b"<?xml"), ("pdf", b"%PDF")):
+        out = io.BytesIO()
+        figure.savefig(out, format=kind)
+        assert out.getvalue().startswith(start)
+
+
+def test_no_state_of_matplotlib_changes() -> None:
+    import matplotlib
+
+    before = dict(matplotlib.rcParams)
+    plot_timeline(timeline_of("dead zone"))
+    assert dict(matplotlib.rcParams) == before
+
+
+def test_the_table_needs_no_plotting_and_the_picture_no_pyplot() -> None:
+    code = (
+        "import sys, schemesim.report.timeline as t; print('matplotlib' in sys.modules, 'pandas' in sys.modules);"
+        "import schemesim.report.pictures as p; print('matplotlib' in sys.modules);"
+        "from tests.unit.test_timeline import timeline_of; p.plot_timeline(timeline_of('main'));"
+        "print('matplotlib.pyplot' in sys.modules)"
+    )
+    run = subprocess.run(
+        [sys.executable, "-c", code], cwd=ROOT, check=True, capture_output=True, text=True, timeout=120
+    )
+    assert run.stdout.split() == ["False"] * 4
+
+
+# --- names --------------------------------------------------------------------------------
+
+
+def test_names_lose_their_middle_only() -> None:
+    assert shorten("short", 5) == "short"
+    long = "Elm.L1.CB/end fault to Fir over channel 1 received under way"
+    for width in (20, 36, 59):
+        text = shorten(long, width)
+        head, tail = text.split("…")
+        assert len(text) == width
+        assert long.startswith(head)
+        assert long.endswith(tail)
+
+
+def test_names_that_would_look_alike_stay_apart() -> None:
+    names = [f"Elm.L1.CB/end fault to Fir over channel {n} received under way" for n in range(1, 5)]
+    found = short_names(names, 36)
+    assert len(set(found)) == 4
+    assert max(map(len, found)) <= 36
+    assert short_names(["same", "same"], 36) == ["same", "same"]
