@@ -322,7 +322,7 @@ def breaker_failure(
     Sealed in by any trip until the current detector resets; operates when the timer has
     expired AND current persists. ``start_with_current``: the timer is started by initiate AND
     current, not by initiate alone. ``auxiliary``: the breaker's 52a contact counts as well as
-    current, for trips at low current.
+    current, for trips at low current; a wrong one does not follow the breaker when it opens.
 
     Returns
     -------
@@ -343,7 +343,7 @@ def breaker_failure(
     if auxiliary:
         wrong = (Ask(breaker, FailureMode.AUXILIARY_WRONG),)
         shown: list[Input] = [
-            b.add(Gate(name=f"{name} 52a true", inputs=(breaker,), unless=wrong)),
+            b.add(Gate(name=f"{name} 52a", inputs=(breaker,))),
             b.add(Gate(name=f"{name} 52a wrong", inputs=(Not(breaker),), given=wrong)),
         ]
         seen += shown
@@ -376,7 +376,7 @@ def end_fault(
 ) -> str:
     """End-fault logic for the dead zone between an open breaker and its CT: 52b AND current in the CT.
 
-    A 52a contact that says closed although the breaker is open blinds it.
+    A wrong auxiliary contact, one that does not follow the breaker when it opens, blinds it.
     """
     name = f"{breaker}/end fault"
     current = sense(b, f"{name} current", Current((ct,)), times)
