@@ -19,7 +19,8 @@ from pydantic_core import PydanticCustomError
 
 from schemesim.errors import InputError, nearest
 from schemesim.scenario.locate import Path
-from schemesim.scheme.delays import MAX_SIGMA, Delay, Empirical, Fixed, LogNormal, Normal, Triangular, Uniform
+from schemesim.scheme.delays import Delay, Fixed
+from schemesim.scheme.distributions import MAX_SIGMA, Empirical, LogNormal, Normal, Triangular, Uniform
 from schemesim.ticks import MAX_MS, US_PER_MS, from_cycles, from_ms
 
 MAX_NAME = 200

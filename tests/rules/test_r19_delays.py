@@ -10,7 +10,7 @@ from schemesim.engine.event import run_event
 from schemesim.engine.outcome import Run
 from schemesim.engine.times import DelayTimes
 from schemesim.scheme.conditions import Current
-from schemesim.scheme.delays import Uniform
+from schemesim.scheme.distributions import Uniform
 from schemesim.scheme.model import Block, Breaker, Latch, Not, Sense
 from tests.rules.hand import case, gate, ms, openings, radial, timer, times, trip
 

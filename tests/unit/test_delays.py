@@ -14,18 +14,9 @@ from hypothesis import strategies as st
 from scipy import stats
 
 from schemesim.errors import InputError
-from schemesim.scheme.delays import (
-    MAX_US,
-    Delay,
-    Empirical,
-    Fixed,
-    LogNormal,
-    Normal,
-    Triangular,
-    Uniform,
-    as_delay,
-    fixed_ms,
-)
+from schemesim.scheme.delay_checks import MAX_US
+from schemesim.scheme.delays import Delay, Fixed, as_delay, fixed_ms
+from schemesim.scheme.distributions import Empirical, LogNormal, Normal, Triangular, Uniform
 
 times = st.integers(0, 200_000) | st.integers(0, MAX_US)
 unit = st.floats(0.0, 1.0, exclude_max=True)

@@ -12,7 +12,7 @@ import pytest
 from schemesim.engine.case import Case
 from schemesim.engine.outcome import Outcome
 from schemesim.errors import InputError
-from schemesim.scheme.delays import Uniform
+from schemesim.scheme.distributions import Uniform
 from schemesim.scheme.model import Role
 from schemesim.study.measures import breakers_mean, cleared_by
 from schemesim.study.montecarlo import Counts, simulate

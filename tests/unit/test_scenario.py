@@ -20,7 +20,8 @@ from schemesim.scenario.parts import PolicyIn, part_model
 from schemesim.scenario.reading import read_text
 from schemesim.scenario.schema import ScenarioIn
 from schemesim.scheme.build import BreakerTimes
-from schemesim.scheme.delays import Empirical, Fixed, LogNormal, Normal, Triangular, Uniform
+from schemesim.scheme.delays import Fixed
+from schemesim.scheme.distributions import Empirical, LogNormal, Normal, Triangular, Uniform
 from schemesim.scheme.failure_data import ORDERS_OF_MAGNITUDE
 from schemesim.scheme.model import Ask, CommonCause, ComponentKind, FailureMode
 from schemesim.scheme.policy import LocalBackup, Policy, PolicyTimes, Reaches, Start, single_set
