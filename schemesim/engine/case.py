@@ -19,12 +19,14 @@ from schemesim.engine.cut import (
     BreakerAsk,
     backward,
     breaker_asks,
+    fixed_us,
     kept_inputs,
     numbered_asks,
     off_delay,
     on_delay,
     rank_of,
     reach_mask,
+    readers,
     shut_before,
 )
 from schemesim.engine.program import Kind, Program, Question, spread
@@ -61,7 +63,8 @@ class Case:
     Attributes
     ----------
     names, kind, inputs, consumers, order
-        As in the program; ``inputs`` hold only signals that can change.
+        As in the program (``gate_readers``, ``sink_readers`` and ``coil_readers`` are the gates,
+        the blocks that hold state, and the breakers among the consumers); ``inputs`` hold only signals that can change.
     k : tuple of int
         How many inputs a gate still needs.
     unless, given : tuple of tuple of int
@@ -76,7 +79,8 @@ class Case:
     rank : tuple of int
         Role of each contact for this event (0 for other blocks).
     on, off : tuple of Delay
-        Operate and reset, pick-up and drop-out, interrupting and auxiliary delays.
+        Operate and reset, pick-up and drop-out, interrupting and auxiliary delays; ``fixed`` has
+        the microseconds of those that are not random (off first, then on).
     breakers : tuple of int
         Blocks of breakers that may open.
     reach_mask : tuple of int
@@ -93,6 +97,9 @@ class Case:
     kind: tuple[Kind, ...]
     inputs: tuple[tuple[tuple[int, bool], ...], ...]
     consumers: tuple[tuple[int, ...], ...]
+    gate_readers: tuple[tuple[int, ...], ...]
+    sink_readers: tuple[tuple[int, ...], ...]
+    coil_readers: tuple[tuple[int, ...], ...]
     order: tuple[int, ...]
     k: tuple[int, ...]
     unless: tuple[tuple[int, ...], ...]
@@ -105,6 +112,7 @@ class Case:
     contacts: tuple[Contact | None, ...]
     on: tuple[Delay, ...]
     off: tuple[Delay, ...]
+    fixed: tuple[tuple[int | None, ...], tuple[int | None, ...]]
     senses: tuple[int, ...]
     breakers: tuple[int, ...]
     breaker_asks: tuple[tuple[BreakerAsk, ...], ...]
@@ -250,6 +258,8 @@ def bind(
         if section is None
         else duty(program.plant, program.zones, section, dispatch, program.scheme.intertripped(section))
     )
+    kind = tuple(program.kind[g] for g in chosen)
+    on_delays, off_delays = [on_delay(b) for b in blocks], [off_delay(b) for b in blocks]
     return Case(
         program=program,
         event=event,
@@ -257,9 +267,12 @@ def bind(
         duty=job,
         sensed=sensed,
         names=tuple(b.name for b in blocks),
-        kind=tuple(program.kind[g] for g in chosen),
+        kind=kind,
         inputs=inputs,
         consumers=tuple(tuple(sorted(c)) for c in consumers),
+        gate_readers=readers(consumers, kind, (Kind.GATE,)),
+        sink_readers=readers(consumers, kind, (Kind.TIMER, Kind.LATCH, Kind.BREAKER)),
+        coil_readers=readers(consumers, kind, (Kind.BREAKER,)),
         order=tuple(program.order[g] for g in chosen),
         k=ks,
         unless=unless,
@@ -270,8 +283,9 @@ def bind(
         gates_asking=tuple(tuple(sorted(s)) for s in asking),
         rank=tuple(rank_of(c, section) for c in contacts),
         contacts=contacts,
-        on=tuple(on_delay(b) for b in blocks),
-        off=tuple(off_delay(b) for b in blocks),
+        on=tuple(on_delays),
+        off=tuple(off_delays),
+        fixed=(tuple(fixed_us(d) for d in off_delays), tuple(fixed_us(d) for d in on_delays)),
         senses=senses,
         breakers=breakers,
         breaker_asks=tuple(breaker_asks(program, blocks[b]) for b in breakers),

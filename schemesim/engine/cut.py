@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Set
+from collections.abc import Sequence, Set
 from typing import NamedTuple
 
 from schemesim.engine.program import Kind, Program
@@ -168,3 +168,15 @@ def reach_mask(
                 mask[j] |= spreading
                 queue.append(j)
     return tuple(mask)
+
+
+def fixed_us(delay: Delay) -> int | None:
+    """Microseconds of a delay that is not random, else None."""
+    return delay.nominal_us if delay.is_fixed else None
+
+
+def readers(
+    consumers: Sequence[Set[int]], kind: Sequence[Kind], wanted: tuple[Kind, ...]
+) -> tuple[tuple[int, ...], ...]:
+    """For each signal those of its consumers that are of the kinds wanted."""
+    return tuple(tuple(sorted(c for c in group if kind[c] in wanted)) for group in consumers)

@@ -97,6 +97,7 @@ class EventRun:
         self._due_time = [0] * n
         self._start_row = [-1] * n
         self._serial = 0
+        self._waiting: dict[int, list[tuple[int, int]]] = {}
         self._pending = 0
         self._expired: list[int] = []
         self._called = False
@@ -209,30 +210,38 @@ class EventRun:
             self.env.schedule(event, priority=_BEHIND)  # type: ignore[arg-type]  # SimPy types it 0 or 1
 
     def _start(self, block: int, delay_us: int, target: int) -> None:
+        """Have a block take a value after a delay; what is due at one time shares one timeout."""
         self._serial += 1
         self._token[block] = self._serial
         self._target[block] = target
-        self._due_time[block] = int(self.env.now) + delay_us
+        due = int(self.env.now) + delay_us
+        self._due_time[block] = due
         self._pending += 1
-        timeout = self.env.timeout(delay_us, (block, self._serial))
-        timeout.callbacks.append(self._due)
+        waiting = self._waiting.get(due)
+        if waiting is None:
+            waiting = self._waiting[due] = []
+            timeout = self.env.timeout(delay_us, due)
+            timeout.callbacks.append(self._due)
+        waiting.append((block, self._serial))
 
     def _cancel(self, block: int) -> None:
         self._token[block] = 0
         self._pending -= 1
 
     def _due(self, event: simpy.Event) -> None:
-        block, serial = event._value
-        if self._token[block] == serial:
-            self._token[block] = 0
-            self._pending -= 1
-            self._expired.append(block)
+        for block, serial in self._waiting.pop(event._value):
+            if self._token[block] == serial:
+                self._token[block] = 0
+                self._pending -= 1
+                self._expired.append(block)
+        if self._expired:
             self._call_instant()
 
     def _delay(self, block: int, rising: bool) -> int:
+        fixed = self.case.fixed[rising][block]
+        if fixed is not None:
+            return fixed
         delay = (self.case.on if rising else self.case.off)[block]
-        if delay.is_fixed:
-            return delay.nominal_us
         return self._time_of(f"{self.case.names[block]} {'on' if rising else 'off'}", delay)
 
     def _time_of(self, name: str, delay: Delay) -> int:

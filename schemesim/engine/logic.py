@@ -18,6 +18,9 @@ from schemesim.engine.roles import better, open_behind, via
 from schemesim.engine.rules import FALSE, TRUE, UNKNOWN
 from schemesim.scheme.model import FailureMode, Probability, Role
 
+_NONE = len(Role)
+"""Behind every role."""
+
 WANTS_ANSWER = -1
 """Stands for the role of a gate that is unknown for want of an answer only."""
 
@@ -45,6 +48,7 @@ class Logic:
         self._bit = {b: 1 << i for i, b in enumerate(case.breakers)}
         self._watch = {g: 1 << (len(case.breakers) + i) for i, g in enumerate(case.observed)}
         self._touched: set[int] = set()
+        self._hot: set[int] = set()
         self._dirty: list[int] = []
         self._queued = [False] * n
         self._open: set[int] = set()
@@ -83,11 +87,12 @@ class Logic:
     def touch(self, block: int) -> None:
         """The block has to look at its inputs again in this pass."""
         self._touched.add(block)
+        self._hot.add(block)
 
     def unresolve(self, block: int) -> None:
         """The breaker has closed again: its trips matter once more."""
         self.mode_of.pop(block, None)
-        self._touched.add(block)
+        self.touch(block)
 
     def matters(self, block: int) -> bool:
         """Whether the output of a block may still influence an opening or an observed output."""
@@ -127,6 +132,7 @@ class Logic:
             kept = self.case.at_rest[0]
             self.value, self.rank, self._shown = list(kept.value), list(kept.rank), list(kept.shown)
             self._open, self._touched = set(kept.open), set(kept.touched)
+            self._hot = self._touched.intersection(self.case.breakers)
             return
         for group in self.case.resting:
             for _ in range(2 * len(group)):
@@ -134,6 +140,7 @@ class Logic:
                 if not any(changed):
                     break
         self._touched.update(i for i in range(len(self.value)) if self._unsettled(i))
+        self._hot = self._touched.intersection(self.case.breakers)
         if not self.asked:
             self.case.at_rest.append(
                 AtRest(
@@ -179,73 +186,97 @@ class Logic:
         return self.value[i] != old
 
     def _spread(self, block: int) -> None:
-        for c in self.case.consumers[block]:
-            if self.case.kind[c] is Kind.GATE:
-                if not self._queued[c]:
-                    self._queued[c] = True
-                    heapq.heappush(self._dirty, c)
-            else:
-                self._touched.add(c)
+        """Tell those who read a signal that it has changed."""
+        case, queued = self.case, self._queued
+        for c in case.gate_readers[block]:
+            if not queued[c]:
+                queued[c] = True
+                heapq.heappush(self._dirty, c)
+        if case.sink_readers[block]:
+            self._touched.update(case.sink_readers[block])
+            self._hot.update(case.coil_readers[block])
 
     def _propagate(self, at_rest: bool = False) -> None:
-        dirty = self._dirty
+        """Evaluate gates in order until nothing changes; keeps ``row`` and ``open`` up to date."""
+        dirty, queued, value = self._dirty, self._queued, self.value
         while dirty:
             g = heapq.heappop(dirty)
-            self._queued[g] = False
+            queued[g] = False
             if self._take(g):
-                true = self.value[g] == TRUE
-                if self._shown[g] != true and self.value[g] != UNKNOWN:
-                    self._shown[g] = true
+                new = value[g]
+                if new != UNKNOWN and self._shown[g] != (new == TRUE):
+                    self._shown[g] = new == TRUE
                     if not at_rest:
-                        self.row[g] = self.record.gate(g, self.value[g], self.value, self.row)
+                        self.row[g] = self.record.gate(g, new, value, self.row)
                 self._spread(g)
 
     def _take(self, g: int) -> bool:
-        """Evaluate a gate; True if its value changed, or the role in which it is true."""
-        new, rank = self._evaluate(g)
-        old, before = self.value[g], self.rank[g]
-        if new == UNKNOWN and rank == WANTS_ANSWER:
-            self._open.add(g)
-        else:
-            self._open.discard(g)
-        self.value[g], self.rank[g] = new, rank
-        return new != old or (new == TRUE and rank != before)
+        """Evaluate a gate from its inputs and the answers known.
 
-    def _evaluate(self, g: int) -> tuple[int, int]:
-        """Value and role of a gate from its inputs and the answers known.
-
-        The role of an unknown gate is ``WANTS_ANSWER`` where only an answer is missing.
+        True if its value changed, or the role in which it is true. A gate that is unknown for
+        want of an answer only is open; its role is ``WANTS_ANSWER``.
         """
         case, value, verdict = self.case, self.value, self._verdict
+        new, rank = FALSE, 0
+        failed = False
         for a in case.unless[g]:
             if verdict[a] == TRUE:
-                return FALSE, 0
-        true, unknown, k = 0, 0, case.k[g]
-        ranks: list[int] = []
-        for j, inverted in case.inputs[g]:
-            v = value[j]
-            if v == UNKNOWN:
-                unknown += 1
-            elif (v == TRUE) != inverted:
-                true += 1
-                ranks.append(0 if inverted else self.rank[j])
-        if true + unknown < k:
+                failed = True
+                break
+        if not failed:
+            k = case.k[g]
+            true = unknown = 0
+            best = _NONE
+            for j, inverted in case.inputs[g]:
+                v = value[j]
+                if v == UNKNOWN:
+                    unknown += 1
+                elif (v == TRUE) is not inverted:
+                    true += 1
+                    if not inverted and self.rank[j] < best:
+                        best = self.rank[j]
+                    elif inverted:
+                        best = 0
+            if true >= k:
+                new, rank = self._with_answers(g)
+                if new == TRUE:
+                    rank = max(rank, best if k == 1 else self._kth_rank(g, k))
+            elif true + unknown >= k and self._possible(g):
+                new = UNKNOWN
+        old, before = value[g], self.rank[g]
+        if rank == WANTS_ANSWER:
+            self._open.add(g)
+        elif before == WANTS_ANSWER:
+            self._open.discard(g)
+        value[g], self.rank[g] = new, rank
+        return new != old or (new == TRUE and rank != before)
+
+    def _with_answers(self, g: int) -> tuple[int, int]:
+        """Value and own role of a gate that its inputs make true and no known failure suppresses."""
+        verdict = self._verdict
+        given = [verdict[a] for a in self.case.given[g]]
+        if given and TRUE not in given and UNKNOWN not in given:
             return FALSE, 0
-        given = case.given[g]
-        verdicts = [verdict[a] for a in given] if given else []
-        if given and TRUE not in verdicts and UNKNOWN not in verdicts:
-            return FALSE, 0
-        if true < k:
-            return UNKNOWN, 0
-        for a in case.unless[g]:
+        for a in self.case.unless[g]:
             if verdict[a] == UNKNOWN:
                 return UNKNOWN, WANTS_ANSWER
-        if given and TRUE not in verdicts:
+        if given and TRUE not in given:
             return UNKNOWN, WANTS_ANSWER
-        own = case.rank[g]
-        if k <= 0:
-            return TRUE, own
-        return TRUE, max(own, min(ranks) if k == 1 else sorted(ranks)[k - 1])
+        return TRUE, self.case.rank[g]
+
+    def _possible(self, g: int) -> bool:
+        """Whether what a gate requires of failures has not been refused."""
+        given = self.case.given[g]
+        return not given or any(self._verdict[a] != FALSE for a in given)
+
+    def _kth_rank(self, g: int, k: int) -> int:
+        """The best role in which ``k`` of the true inputs are true."""
+        ranks = sorted(
+            0 if inverted else self.rank[j]
+            for j, inverted in self.case.inputs[g]
+            if self.value[j] != UNKNOWN and (self.value[j] == TRUE) is not inverted
+        )
+        return ranks[k - 1] if k > 0 else 0
 
     # --- questions ----------------------------------------------------------------------
 
@@ -253,16 +284,19 @@ class Logic:
         return self.case.inputs[block][: self.case.coils[block]]
 
     def _ready_breaker(self) -> int | None:
-        """The first touched breaker with a coil energised and not yet dealt with."""
-        for b in self.case.breakers:
-            if b in self._touched and b not in self.mode_of and self.tripping(b):
+        """The first breaker with a coil newly energised and not yet dealt with."""
+        for b in sorted(self._hot):
+            if b not in self.mode_of and self.tripping(b):
                 return b
+            self._hot.discard(b)
         return None
 
     def _next_gate(self) -> int | None:
         """The gate whose question comes next: the first in order that a live sink waits for."""
-        for g in sorted(self._open, key=self.case.order.__getitem__):
-            if self._is_live(g) and self._is_awaited(g):
+        live, mask = self._live, self.case.reach_mask
+        hopeful = [g for g in self._open if live & mask[g]]
+        for g in sorted(hopeful, key=self.case.order.__getitem__):
+            if self._is_awaited(g):
                 return g
         return None
 
@@ -275,13 +309,13 @@ class Logic:
             signal = stack.pop()
             if signal in self._watch and self._live & self._watch[signal]:
                 return True
-            for c in case.consumers[signal]:
-                if case.kind[c] is Kind.GATE:
-                    if self.value[c] == UNKNOWN and c not in self._open and c not in seen:
-                        seen.add(c)
-                        stack.append(c)
-                elif c in self._touched and self._is_live(c) and signal in self._read_by(c):
+            for c in case.sink_readers[signal]:
+                if c in self._touched and self._is_live(c) and signal in self._read_by(c):
                     return True
+            for c in case.gate_readers[signal]:
+                if self.value[c] == UNKNOWN and c not in self._open and c not in seen:
+                    seen.add(c)
+                    stack.append(c)
         return False
 
     def _read_by(self, block: int) -> list[int]:
