@@ -10,10 +10,10 @@ from schemesim.plant.zones import around
 from schemesim.scheme import functions as fn
 from schemesim.scheme.build import SchemeBuilder
 from schemesim.scheme.conditions import Direction, InZone
-from schemesim.scheme.elements import Element, to_far_end
+from schemesim.scheme.elements import Element, Side, to_far_end, units_in
 from schemesim.scheme.functions import DistanceNeeds
-from schemesim.scheme.model import ComponentKind, Input, Role
-from schemesim.scheme.policy import Policy, Start
+from schemesim.scheme.model import ComponentKind, Gate, Input, Role
+from schemesim.scheme.policy import LocalBackup, Policy, Start
 from schemesim.scheme.tripping import Path, in_station, path_of, station_of, trip_all
 
 
@@ -44,10 +44,9 @@ def dress_local_backup(b: SchemeBuilder, e: Element) -> None:
             reach = 1.1 * to_far_end(b, e, side)
             ways = fn.zone_operated(b, fn.distance_zone(b, f"{base} 67", reach, needs, host, times), lb.delay)
         else:
-            inside = InZone(e.object.zone, tuple(t.ct for t in side.terminals))
-            ways = [fn.delayed(b, f"{base} 67 timer", fn.sense(b, f"{base} 67", inside, times), lb.unit_delay)]
+            ways = _unit_operated(b, e, side, base, lb)
         mark = e.contact("67", Role.LOCAL, host)
-        forward = fn.trip_output(b, f"{base} 67 trip", ways, host, mark, times, unless=needs.unless)
+        forward = fn.trip_output(b, f"{base} 67 trip", ways, host, mark, times, unless=needs.unless if line else ())
         back = fn.distance_zone(b, f"{base} 67 reverse", 0.0, needs, host, times, direction=Direction.REVERSE)
         ways = fn.zone_operated(b, back, lb.bus_delay)
         mark = e.contact("67 reverse", Role.LOCAL, host, e.object.zone | in_station(b, side.station))
@@ -58,6 +57,25 @@ def dress_local_backup(b: SchemeBuilder, e: Element) -> None:
         units = [t for t in e.targets if t not in b.plant.device and station_of(b, t) == side.station]
         for unit in units:  # a fault behind its breaker is no reason to trip a unit
             b.trip(forward, unit, lb.coil, e.policy.dc_of_coil(lb.coil))
+
+
+def _unit_operated(b: SchemeBuilder, e: Element, side: Side, base: str, lb: LocalBackup) -> list[Input]:
+    """Local back-up of anything but a line: by the CTs of this side, and by the neutral CTs of units inside.
+
+    The latter see what a unit feeds when its breaker is open.
+    """
+    ways: list[Input] = []
+    here = tuple(t.ct for t in side.terminals)
+    what, units = f"local back-up of {e.name!r}", units_in(b, e)
+    for name, cts, cores in (
+        (f"{base} 67", here, tuple(b.core(ct, lb.core, what) for ct in here)),
+        (f"{base} 67 neutral", units, tuple(b.neutral(u, lb.core) for u in units)),
+    ):
+        if cts:
+            element = fn.sense(b, name, InZone(e.object.zone, cts), e.policy.times.overcurrent)
+            waited = fn.delayed(b, f"{name} timer", element, lb.unit_delay)
+            ways.append(b.add(Gate(name=f"{name} measured", inputs=(waited,), unless=cores)))
+    return ways
 
 
 def dress_end_faults(b: SchemeBuilder, elements: Sequence[Element], policies: Mapping[str, Policy]) -> None:

@@ -107,6 +107,12 @@ class SchemeBuilder:
         name = self.component(f"{ct}/core {label}", ComponentKind.CT_CORE, device.station)
         return Ask(name, FailureMode.OPEN)
 
+    def neutral(self, source: str, label: str) -> Ask:
+        """Have a core of the CT in a unit's own neutral, which measures what the unit feeds in."""
+        station = self.plant.source[source].station
+        name = self.component(f"{source}/neutral CT core {label}", ComponentKind.CT_CORE, station)
+        return Ask(name, FailureMode.OPEN)
+
     def winding(self, station: str, element: str, label: str, need: str) -> Ask | None:
         """Have a VT winding for an element at a station: on the element, else on a bus of the station."""
         here = [v for v in self.plant.vts if v.station == station]

@@ -141,6 +141,11 @@ def _behind(b: SchemeBuilder, o: ProtectedObject, devices: set[str]) -> tuple[tu
 # --- units: bus, transformer, generator, feeder -------------------------------------------
 
 
+def units_in(b: SchemeBuilder, e: Element) -> tuple[str, ...]:
+    """Units inside the protected zone of an element: their neutral CTs bound it too, and see what they feed."""
+    return tuple(s.name for s in b.plant.sources if s.trips and s.section in e.object.zone)
+
+
 def dress_unit(b: SchemeBuilder, e: Element) -> None:
     """Main protection of a bus, transformer or generator (differential) or feeder (overcurrent)."""
     p, function = e.policy, FUNCTION[e.kind]
@@ -150,6 +155,7 @@ def dress_unit(b: SchemeBuilder, e: Element) -> None:
         base = f"{station}/{e.name}/{s.label}"
         host = b.host(f"{station}/{e.name}/relay {s.label}", station, s.dc, s.label, f"{station}/{e.name}")
         cores = [(t, b.core(t.ct, s.core, f"{function} set {s.label} of {e.name!r}")) for t in e.object.terminals]
+        cores += [(Terminal(u, b.plant.source[u].section), b.neutral(u, s.core)) for u in units_in(b, e)]
         if e.kind is SectionKind.FEEDER:
             times = p.times.overcurrent
             element = fn.sense(b, f"{base} 50", InZone(e.object.zone, tuple(t.ct for t, _ in cores)), times)

@@ -8,8 +8,12 @@ from dataclasses import replace
 
 import pytest
 
+from schemesim.engine.answers import FixedAnswers
+from schemesim.engine.case import bind
+from schemesim.engine.event import run_event
 from schemesim.engine.outcome import Status
 from schemesim.engine.program import Program, compile_scheme
+from schemesim.engine.sensing import LogicalSensing
 from schemesim.errors import InputError
 from schemesim.plant.coverage import coverage_audit, default_objects
 from schemesim.plant.layouts import (
@@ -26,7 +30,7 @@ from schemesim.plant.layouts import (
     single_bus,
     transformer,
 )
-from schemesim.plant.model import Device, DeviceKind, Plant, PlantBuilder
+from schemesim.plant.model import Device, DeviceKind, Dispatch, Location, Plant, PlantBuilder
 from schemesim.plant.zones import duty, isolation_zones
 from schemesim.scheme.build import BreakerTimes
 from schemesim.scheme.delays import Fixed
@@ -183,6 +187,33 @@ def test_local_backup_of_a_generator_keeps_the_unit() -> None:
     # G1 itself with 87G dead: forward, 20 + 150 + 50, breaker and unit, before L1's looks back at 290.
     run = play(chain(), single_set(local_backup=LocalBackup()), "G1", "Alder/G1/relay 1: failure_to_operate")
     assert opened(run) == {"G1.unit": 220_000, "Alder.G1.CB": 220_000}
+
+
+@pytest.mark.parametrize("policy", STANDARD, ids=lambda p: p.__name__)
+def test_a_generator_fault_that_the_unit_alone_feeds(policy: Callable[[], Policy]) -> None:
+    # Nothing else feeds: no current in the CTs at G1's breaker, but in the unit's own neutral: 20, 30, 80.
+    run = play(chain(g3=False), policy(), "G1")
+    assert opened(run) == {"Alder.G1.CB": 80_000, "G1.unit": 80_000}
+    assert run.outcome.t_clear_us == 80_000
+
+
+def test_local_backup_of_a_generator_sees_what_the_unit_feeds_alone() -> None:
+    # Between the CTs beside Alder.G1.CB, on the unit's side: 87B opens the breaker at 80 and the unit feeds on; 87G
+    # is dead. Local back-up by the neutral CT: 20 + 150 + 50.
+    failed = "Alder/G1/relay 1: failure_to_operate"
+    run = play(chain(), single_set(local_backup=LocalBackup()), "Alder.G1.c", failed)
+    assert opened(run)["Alder.G1.CB"] == 80_000
+    assert opened(run)["G1.unit"] == run.outcome.t_clear_us == 220_000
+    assert play(chain(), single_set(), "Alder.G1.c", failed).outcome.status is Status.NOT_CLEARED
+
+
+def test_local_backup_of_a_generator_at_rest_sees_what_the_grid_feeds() -> None:
+    # G1 out of service behind a closed breaker, 87G dead: nothing in the neutral, current at the breaker: 220.
+    plant = replace(chain(), dispatches=(Dispatch(name="G1 out", out=frozenset({"G1.unit"})),))
+    program = compile_scheme(plant, dress(plant, single_set(local_backup=LocalBackup())))
+    case = bind(program, Location("G1"), LogicalSensing(), dispatch="G1 out")
+    run = run_event(case, FixedAnswers(program, ("Alder/G1/relay 1: failure_to_operate",)))
+    assert opened(run) == {"Alder.G1.CB": 220_000}
 
 
 # --- transformers, and zones without a breaker between ---------------------------------------------
