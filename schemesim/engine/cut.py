@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections import deque
 from collections.abc import Sequence, Set
+from functools import lru_cache
 from typing import NamedTuple
 
 from schemesim.engine.program import Kind, Program
@@ -21,8 +22,9 @@ class BreakerAsk(NamedTuple):
     certain: bool | None
 
 
+@lru_cache(maxsize=4)
 def shut_before(program: Program, dispatch: str | None) -> frozenset[int]:
-    """Breaker blocks that are closed before the event, and sources with a trip that are in service."""
+    """Breaker blocks that are closed before the event, and sources with a trip that are in service; found once."""
     running = {s.name for s in program.plant.sources_in(dispatch)}
     running.update(d.name for d in program.plant.devices if d.closed)
     return frozenset(i for i, b in enumerate(program.blocks) if isinstance(b, Breaker) and b.name in running)

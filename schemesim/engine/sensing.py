@@ -14,6 +14,7 @@ from typing import Protocol
 
 from schemesim.engine.program import Program
 from schemesim.plant.current import Neighbourhood
+from schemesim.plant.grid import Grid, grid_of
 from schemesim.plant.model import Location
 from schemesim.plant.paths import within
 from schemesim.scheme.conditions import (
@@ -138,6 +139,12 @@ def _senses(program: Program) -> _Senses:
     return _Senses(by_section, by_point, no_fault, longest)
 
 
+@lru_cache(maxsize=4)
+def _grid(program: Program, dispatch: str | None, loads: bool) -> Grid:
+    """The plant divided into parts, made once for a program and dispatch state."""
+    return grid_of(program.plant, dispatch, loads=loads)
+
+
 class _LogicallySensed:
     def __init__(
         self,
@@ -155,7 +162,8 @@ class _LogicallySensed:
         if fault is not None:
             own = program.zones.members[program.zones.of[fault]]
             idle = {s.name for s in plant.sources if s.section in own and not s.feeds_own_zone}
-        self.around = Neighbourhood(plant, fault, measured.union(openable), dispatch, idle)
+        grid = _grid(program, dispatch, fault is None)
+        self.around = Neighbourhood(plant, fault, measured.union(openable), dispatch, idle, grid)
         reaches = [c.reach for c in conditions if isinstance(c, Reach | Undervoltage)]
         self.cutoff = max(reaches, default=0.0)
         self.needs_paths = bool(reaches) and fault is not None

@@ -5,28 +5,18 @@ fault: it is in the same biconnected part as an edge added between the sources (
 common node) and the fault. Load stubs carry none.
 
 Only the devices that may open or are measured in the neighbourhood of a fault matter,
-so the rest of the grid is reduced once per fault: each of its biconnected blocks is
-replaced by a cycle through the vertices it shares with what is kept. That changes
-no block relation among the kept devices: a kept device is in a block's biconnected
-part exactly when a path through it joins two different vertices of that block, and
-two devices outside it share a cycle only where no edge of it is used.
+so the rest of the grid is reduced once per fault; see :mod:`schemesim.plant.grid`.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Set
+from collections.abc import Iterable, Sequence, Set
 from dataclasses import dataclass
-from typing import cast
 
 import networkx as nx
 
+from schemesim.plant.grid import LOADS, SOURCES, Grid, Vertex, grid_of, reduce_blocks, without_chains
 from schemesim.plant.model import Plant
-
-Vertex = tuple[str, str]
-"""Kind ('section', 'device', 'grid') and name."""
-
-SOURCES: Vertex = ("grid", "sources")
-LOADS: Vertex = ("grid", "loads")
 
 
 @dataclass(frozen=True)
@@ -60,6 +50,9 @@ class Neighbourhood:
     idle : set of str
         Sources left out: those inside the fault's own isolation zone that are declared
         equivalents feeding nothing.
+    grid : Grid or None
+        The plant in this dispatch state, divided into parts, with loads where there is no fault;
+        made here by default.
     """
 
     def __init__(
@@ -69,51 +62,68 @@ class Neighbourhood:
         kept: Iterable[str],
         dispatch: str | None = None,
         idle: Set[str] = frozenset(),
+        grid: Grid | None = None,
     ) -> None:
         self.plant = plant
         self.kept = tuple(sorted(set(kept)))
         self.fault: Vertex | None = None if fault is None else ("section", fault)
+        self.target: Vertex = LOADS if fault is None else ("section", fault)
+        if grid is None:
+            grid = grid_of(plant, dispatch, loads=fault is None)
+        idle_ends: list[Vertex] = [("section", plant.source[n].section) for n in sorted(idle) if n in grid.of_link]
+        near = {grid.of_link[name] for name in (*self.kept, *idle) if name in grid.of_link}
+        if fault is not None and fault in grid.of_section:
+            near.add(grid.of_section[fault])
         self._links: dict[str, tuple[Vertex, Vertex]] = {}
-        full = _full_graph(plant, dispatch, idle)
-        for name in self.kept:
-            v: Vertex = ("device", name)
-            if v in full:
-                a, b = list(full[v])
-                self._links[name] = (a, b)
-                full.remove_node(v)
-        self.target: Vertex = LOADS if self.fault is None else self.fault
-        full.add_nodes_from((SOURCES, self.target))
+        self._inside: dict[Vertex, tuple[str, ...]] = {}
+        graph: nx.Graph[Vertex] = nx.Graph()
+        joined: nx.Graph[Vertex] = nx.Graph()
+        for v in (SOURCES, self.target, *idle_ends):
+            graph.add_node(v)
+            joined.add_node(v)
+        taken = set(self.kept)
+        for n, part in enumerate(grid.parts):
+            if n not in near:
+                graph.add_edges_from(part.reduced)
+                for ports, inside in part.pieces:
+                    nx.add_path(joined, ports)
+                    self._inside[ports[0]] = self._inside.get(ports[0], ()) + inside
+                continue
+            joined.add_nodes_from(("section", name) for name in part.inside)
+            for name, a, b in part.links:
+                if name in idle:
+                    continue
+                if name in taken:
+                    self._links[name] = (a, b)
+                    joined.add_nodes_from((a, b))
+                else:
+                    nx.add_path(graph, (a, ("device", name), b))
+                    joined.add_edge(a, b)
+            graph.add_edges_from((LOADS, v) for v in part.loads)
         self._part: dict[Vertex, int] = {}
-        self._load_mw: list[float] = []
-        self._members: list[tuple[str, ...]] = []
-        for index, part in enumerate(nx.connected_components(full)):
-            names = sorted(name for kind, name in part if kind == "section")
-            self._part.update(dict.fromkeys(part, index))
-            self._load_mw.append(sum(plant.section[n].load_mw for n in names))
-            self._members.append(tuple(names))
-        in_service = [s for s in plant.sources_in(dispatch) if s.name in idle]
-        self._idle = [self._part[("section", s.section)] for s in in_service]
-        if fault is None:  # after the parts: the common node of the loads supplies none of them
-            full.add_edges_from((LOADS, ("section", s.name)) for s in plant.sections if s.load_mw > 0)
+        self._vertices = [tuple(part) for part in nx.connected_components(joined)]
+        for index, vertices in enumerate(self._vertices):
+            self._part.update(dict.fromkeys(vertices, index))
+        self._idle = [self._part[v] for v in idle_ends]
         terminals = {SOURCES, self.target}
         for ends in self._links.values():
             terminals.update(ends)
-        self._reduced = reduce_blocks(full, terminals)
+        self._reduced = without_chains(reduce_blocks(graph, terminals), terminals)
+        places = [*sorted(self._reduced), *(("device", name) for name in self._links)]
+        self._place = {v: n for n, v in enumerate(places)}
+        self._next: list[list[int]] = [[] for _ in places]
+        edges = [*self._reduced.edges]
+        edges += [(("device", name), end) for name, ends in self._links.items() for end in ends]
+        for v, w in edges:
+            self._next[self._place[v]].append(self._place[w])
+            self._next[self._place[w]].append(self._place[v])
 
     def supply(self, opened: Set[str]) -> Supply:
         """Whether the fault is fed and which kept devices carry, with some devices open."""
-        graph = self._reduced.copy()
-        for name, (a, b) in self._links.items():
-            if name not in opened:
-                v: Vertex = ("device", name)
-                graph.add_edge(a, v)
-                graph.add_edge(v, b)
-        fed = self.fault is not None and nx.has_path(graph, SOURCES, self.target)
-        graph.add_edge(SOURCES, self.target)
-        for block in _blocks(graph):
-            if SOURCES in block and self.target in block:
-                return Supply(fed, frozenset(name for name in self._links if ("device", name) in block))
-        return Supply(fed, frozenset())
+        shut = {self._place[("device", name)] for name in opened if name in self._links}
+        fed, between = on_simple_paths(self._next, self._place[SOURCES], self._place[self.target], shut)
+        carrying = frozenset(name for name in self._links if self._place[("device", name)] in between)
+        return Supply(self.fault is not None and fed, carrying)
 
     def lost(self, opened: Set[str]) -> tuple[float, tuple[str, ...]]:
         """Load (MW) and sections that no closed path joins to a source any more.
@@ -122,13 +132,19 @@ class Neighbourhood:
         theirs until the fault.
         """
         before, after = self._dead(frozenset(), self._idle), self._dead(opened)
-        gone = sorted(after - before)
-        names = sorted(name for index in gone for name in self._members[index])
-        return sum(self._load_mw[index] for index in gone), tuple(names)
+        names = sorted(name for index in after - before for name in self._members(index))
+        return sum(self.plant.section[name].load_mw for name in names), tuple(names)
+
+    def _members(self, index: int) -> Iterable[str]:
+        for vertex in self._vertices[index]:
+            kind, name = vertex
+            if kind == "section":
+                yield name
+            yield from self._inside.get(vertex, ())
 
     def _dead(self, opened: Set[str], supplied: Iterable[int] = ()) -> set[int]:
         joined: nx.Graph[int] = nx.Graph()
-        joined.add_nodes_from(range(len(self._members)))
+        joined.add_nodes_from(range(len(self._vertices)))
         joined.add_edges_from((self._part[SOURCES], index) for index in supplied)
         for name, (a, b) in self._links.items():
             if name not in opened:
@@ -137,56 +153,59 @@ class Neighbourhood:
         return set(joined) - alive
 
 
-def reduce_blocks(graph: nx.Graph[Vertex], terminals: Set[Vertex]) -> nx.Graph[Vertex]:
-    """A small graph with the same biconnected relations among whatever is hung on its terminals.
+def on_simple_paths(around: Sequence[Sequence[int]], start: int, end: int, without: Set[int]) -> tuple[bool, set[int]]:
+    """Whether two vertices are joined, and every vertex on a simple path between them.
 
-    The forest of blocks and cut vertices is pruned to what lies between terminals; each
-    block left becomes a cycle through the vertices it still shares (an edge for two).
+    These are the vertices of the biconnected block of an edge added between the two. One search from
+    ``start`` along that edge numbers what it meets; a vertex stays in the block of its parent if
+    it, or what was met through it, leads back to before the parent (Hopcroft and Tarjan, Algorithm 447,
+    Communications of the ACM 16, 1973).
+
+    Parameters
+    ----------
+    around : sequence of sequences of int
+        Neighbours of each vertex.
+    start, end : int
+        Two different vertices.
+    without : set of int
+        Vertices left out, neither of the two among them.
+
+    Examples
+    --------
+    A path 0-1-2 with a stub 3 at its middle, and 4 apart:
+
+    >>> on_simple_paths([[1], [0, 2, 3], [1], [1], []], 0, 2, set())
+    (True, {0, 1, 2})
+    >>> on_simple_paths([[1], [0, 2, 3], [1], [1], []], 0, 4, set())
+    (False, {0, 4})
     """
-    forest: nx.Graph[Vertex | int] = nx.Graph()
-    forest.add_nodes_from(terminals)
-    blocks = _blocks(graph)
-    count: dict[Vertex, int] = {}
-    for block in blocks:
-        for v in block:
-            count[v] = count.get(v, 0) + 1
-    for index, block in enumerate(blocks):
-        for v in block:
-            if count[v] > 1 or v in terminals:
-                forest.add_edge(index, v)
-    leaves = [n for n in forest if forest.degree(n) <= 1 and n not in terminals]
-    while leaves:
-        leaf = leaves.pop()
-        if leaf not in forest:
-            continue
-        around = list(forest[leaf])
-        forest.remove_node(leaf)
-        leaves.extend(n for n in around if forest.degree(n) <= 1 and n not in terminals)
-    reduced: nx.Graph[Vertex] = nx.Graph()
-    reduced.add_nodes_from(terminals)
-    for node in forest:
-        if isinstance(node, int):
-            ports = sorted(v for v in forest[node] if not isinstance(v, int))
-            if len(ports) == 2:
-                reduced.add_edge(ports[0], ports[1])
-            elif len(ports) > 2:
-                nx.add_cycle(reduced, ports)
-    return reduced
-
-
-def _blocks(graph: nx.Graph[Vertex]) -> list[set[Vertex]]:
-    return list(cast("Iterable[set[Vertex]]", nx.biconnected_components(graph)))
-
-
-def _full_graph(plant: Plant, dispatch: str | None, idle: Set[str]) -> nx.Graph[Vertex]:
-    graph: nx.Graph[Vertex] = nx.Graph()
-    graph.add_nodes_from(("section", s.name) for s in plant.sections)
-    for d in plant.devices:
-        if d.closed:
-            graph.add_edge(("device", d.name), ("section", d.a))
-            graph.add_edge(("device", d.name), ("section", d.b))
-    for s in plant.sources_in(dispatch):
-        if s.name not in idle:
-            graph.add_edge(("device", s.name), SOURCES)
-            graph.add_edge(("device", s.name), ("section", s.section))
-    return graph
+    number = [-1] * len(around)
+    low = [0] * len(around)
+    parent = [start] * len(around)
+    for v in without:
+        number[v] = len(around)  # as if met after everything: it leads nowhere
+    number[start], number[end], low[end] = 0, 1, 1
+    met, joined = [end], start in around[end]
+    stack = [(end, iter(around[end]))]
+    while stack:
+        v, ways = stack[-1]
+        for w in ways:
+            if number[w] < 0:
+                number[w] = low[w] = len(met) + 1
+                parent[w] = v
+                met.append(w)
+                stack.append((w, iter(around[w])))
+                break
+            if w != parent[v]:
+                low[v] = min(low[v], number[w])
+                joined |= w == start
+        else:
+            stack.pop()
+            if stack:
+                up = parent[v]
+                low[up] = min(low[up], low[v])
+    between = {start, end}
+    for w in met[1:]:
+        if parent[w] in between and low[w] < number[parent[w]]:
+            between.add(w)
+    return joined, between

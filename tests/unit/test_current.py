@@ -2,11 +2,17 @@
 
 from __future__ import annotations
 
-import networkx as nx
+from pathlib import Path
 
-from schemesim.plant.current import Neighbourhood, Supply, Vertex, reduce_blocks
+import networkx as nx
+from hypothesis import given
+from hypothesis import strategies as st
+
+from schemesim.plant.current import Neighbourhood, Supply, on_simple_paths
+from schemesim.plant.grid import Vertex, grid_of, reduce_blocks
 from schemesim.plant.layouts import Bay, feeder, generator, infeed, line, single_bus
 from schemesim.plant.model import Dispatch, Plant, PlantBuilder
+from schemesim.scenario import load_scenario
 
 
 def one_bus() -> Plant:
@@ -126,3 +132,59 @@ def test_the_reduced_grid_does_not_grow_with_what_lies_beyond() -> None:
 
     assert size(3) == size(6) == size(12)
 
+
+
+DEMO = load_scenario(Path(__file__).resolve().parents[2] / "scenarios" / "demo.yaml").plant
+DEVICES = [d.name for d in DEMO.devices] + [s.name for s in DEMO.sources]
+
+
+@given(
+    fault=st.none() | st.sampled_from([s.name for s in DEMO.sections]),
+    kept=st.sets(st.sampled_from(DEVICES), max_size=12),
+    dispatch=st.none() | st.just("night"),
+    data=st.data(),
+)
+def test_parts_reduced_from_afar_answer_as_the_whole_plant(
+    fault: str | None, kept: set[str], dispatch: str | None, data: st.DataObject
+) -> None:
+    """Four stations: with every device kept nothing is reduced; with a few, most stations are."""
+    opened = data.draw(st.sets(st.sampled_from(sorted(kept)))) if kept else set()
+    idle = data.draw(st.sets(st.sampled_from([s.name for s in DEMO.sources]))) if fault is not None else set()
+    idle -= kept
+    few = Neighbourhood(DEMO, fault, kept, dispatch, idle)
+    whole = Neighbourhood(DEMO, fault, set(DEVICES) - idle, dispatch, idle)
+    near, all_of_it = few.supply(opened), whole.supply(opened)
+    assert (near.fed, near.carrying) == (all_of_it.fed, all_of_it.carrying & kept)
+    assert few.lost(opened) == whole.lost(opened)
+
+
+def test_a_plant_falls_into_its_stations() -> None:
+    """Lines belong to no part; each of the four stations hangs together (its switches closed)."""
+    grid = grid_of(DEMO)
+    stations = {DEMO.section[part.inside[0]].station for part in grid.parts if len(part.inside) > 1}
+    assert stations == {"Alder", "Birch", "Cedar", "Dunmore"}
+    assert all(
+        DEMO.section[name].station == DEMO.section[part.inside[0]].station
+        for part in grid.parts
+        for name in part.inside
+    )
+    assert "L1" not in grid.of_section
+    dunmore = grid.parts[grid.of_section["Dunmore.B1"]]
+    assert dunmore.ports == {vertex("L4"), vertex("L5")}  # no unit stands there
+    assert {frozenset(edge) for edge in dunmore.reduced} == {frozenset(dunmore.ports)}
+    assert not {"G2.unit", "G3.unit"} & set(grid_of(DEMO, "night").of_link)
+
+
+@given(
+    st.lists(st.tuples(st.integers(0, 9), st.integers(0, 9)).filter(lambda e: e[0] != e[1]), max_size=16),
+    st.sets(st.integers(2, 9), max_size=3),
+)
+def test_simple_paths_are_those_of_brute_force(edges: list[tuple[int, int]], without: set[int]) -> None:
+    """Every simple path between 0 and 1 listed one by one."""
+    graph: nx.Graph[int] = nx.Graph()
+    graph.add_nodes_from(range(10))
+    graph.add_edges_from(edges)
+    around = [sorted(graph[v]) for v in range(10)]
+    graph.remove_nodes_from(without)
+    paths = list(nx.all_simple_paths(graph, 0, 1))
+    assert on_simple_paths(around, 0, 1, without) == (bool(paths), {0, 1}.union(*paths))
