@@ -34,7 +34,11 @@ class FixedAnswers:
     Raises
     ------
     InputError
-        For a name that is no question of the program, with the nearest one.
+        For a name or index that is no question of the program, with the nearest name.
+
+    Notes
+    -----
+    Modes of one component exclude each other: of two that are named, the one asked first holds.
     """
 
     def __init__(self, program: Program, yes: Iterable[str | int] = ()) -> None:
@@ -42,12 +46,13 @@ class FixedAnswers:
         errors = ErrorList()
         chosen: set[int] = set()
         for item in yes:
-            if isinstance(item, int):
+            if isinstance(item, int) and 0 <= item < len(program.questions):
                 chosen.add(item)
-            elif item in known:
+            elif isinstance(item, str) and item in known:
                 chosen.add(known[item])
             else:
-                errors.add("failure", item, "the name of a question of the scheme", tip=nearest(item, known))
+                tip = nearest(str(item), known)
+                errors.add("failure", item, "the name of a question of the scheme", tip=tip)
         errors.raise_if_any()
         self.yes = frozenset(chosen)
 

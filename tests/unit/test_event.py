@@ -248,6 +248,8 @@ def test_failures_are_named_as_questions_and_mistakes_come_all_at_once() -> None
         FixedAnswers(bound.program, ["R1: failure_to_operat", "R7: lost"])
     assert [p.value for p in caught.value.problems] == ["R1: failure_to_operat", "R7: lost"]
     assert f"did you mean 'R1: {FAILS}'" in str(caught.value)
+    with pytest.raises(InputError, match="the name of a question"):
+        FixedAnswers(bound.program, [len(bound.program.questions)])
 
 
 def test_drawn_answers_do_not_depend_on_when_they_are_asked_and_modes_exclude_each_other() -> None:
