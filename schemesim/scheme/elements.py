@@ -174,7 +174,7 @@ def dress_unit(b: SchemeBuilder, e: Element) -> None:
     for out, path in wires:
         trip_all(b, out, station, e.targets, path, p, remote=p.intertrip)
     if p.remote_backup and e.kind in (SectionKind.TRANSFORMER, SectionKind.GENERATOR) and p.sets:
-        _timed_backup(b, e, station)
+        _timed_backup(b, e)
 
 
 def _voted(
@@ -193,14 +193,17 @@ def _voted(
     ]
 
 
-def _timed_backup(b: SchemeBuilder, e: Element, station: str) -> None:
-    """Timed overcurrent of transformers (through them) and generators (out of them) for the buses beyond."""
+def _timed_backup(b: SchemeBuilder, e: Element) -> None:
+    """Timed overcurrent of transformers (through them) and generators (out of them) for the buses beyond.
+
+    Each side has it at its own station, so the breakers there need no channel.
+    """
     p = e.policy
     s = p.sets[0]
-    host = b.host(f"{station}/{e.name}/relay timed", station, s.dc, "timed")
     length = b.plant.section[e.name].length
-    sides = e.sides
-    for n, side in enumerate(sides):
+    for n, side in enumerate(e.sides):
+        station = side.station
+        host = b.host(f"{station}/{e.name}/relay timed", station, s.dc, "timed")
         base = f"{station}/{e.name}/timed {n + 1} 51"
         unless = tuple(b.core(t.ct, s.core, f"51 of {e.name!r}") for t in side.terminals)
         direction = Direction.REVERSE if e.kind is SectionKind.GENERATOR else Direction.FORWARD

@@ -21,6 +21,7 @@ from schemesim.engine.event import run_event
 from schemesim.plant.coverage import coverage_audit
 from schemesim.plant.model import SectionKind
 from schemesim.scenario import Scenario, load_scenario
+from schemesim.scenario.model import location
 from schemesim.scheme.model import Role
 from schemesim.study.measures import cleared_by
 
@@ -215,3 +216,17 @@ def test_with_no_failure_every_fault_is_cleared_in_time(rts: Scenario, first: in
         assert case.duty.needed, at
         assert case.duty.needed <= outcome.tripped, at
         assert not outcome.at_horizon, at
+
+
+def test_each_side_of_a_transformer_backs_itself_up(rts: Scenario) -> None:
+    """Fault in A14 between the yards of buses 9 and 11, their channel lost: nobody intertrips bus 11.
+
+    The differential clears the side of bus 9; on that of bus 11 the timed overcurrent trips on its own,
+    20 + 1200 + 50 ms, unless zone 3 of the lines around (1000 ms) has cut off the feeding before.
+    """
+    case = rts.case(location(rts.plant, "A14"), "single set")
+    outcome = run_event(case, FixedAnswers(case.program, ["Bus09-Bus11/channel 1: lost"])).outcome
+    assert outcome.t_clear_us == 1_270_000
+    assert {"Bus11.D1.CB1", "Bus11.D1.CB2"} <= outcome.tripped
+    via = {o.via for o in outcome.openings if o.breaker == "Bus11.D1.CB1"}
+    assert via == {"Bus11/A14/timed 2 51 trip"}
