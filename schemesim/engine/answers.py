@@ -7,12 +7,17 @@ probability of a yes, conditional on what was answered before.
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from typing import Protocol
+from typing import TYPE_CHECKING, Protocol
 
-from schemesim.engine.draws import uniform
+import numpy as np
+
+from schemesim.engine.draws import uniform, uniforms
 from schemesim.engine.program import Program
 from schemesim.errors import ErrorList, nearest
 from schemesim.scheme.model import Probability
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
 
 
 class Answers(Protocol):
@@ -91,5 +96,21 @@ class DrawnAnswers:
         u = self._drawn.get(key)
         if u is None:
             u = self._drawn[key] = uniform(self.seed, key, self.trial)
-        below = sum(self.program.questions[j].probability for j in self.program.siblings[question] if j < question)
-        return below <= u < below + q.probability
+        siblings = self.program.siblings[question]
+        below = float(sum(self.program.questions[j].probability for j in siblings if j < question))
+        return below <= u < below + float(q.probability)
+
+
+def drawn_answers(program: Program, seed: int, question: int, first: int, count: int) -> NDArray[np.bool_]:
+    """The answers of :class:`DrawnAnswers` to one question in a range of trials.
+
+    Returns
+    -------
+    ndarray of bool, shape (count,)
+        Entry ``i`` is the answer in trial ``first + i``.
+    """
+    q = program.questions[question]
+    key = f"state of {q.component}" if q.component else q.name
+    u = uniforms(seed, key, first, count)
+    below = float(sum(program.questions[j].probability for j in program.siblings[question] if j < question))
+    return (below <= u) & (u < below + float(q.probability))

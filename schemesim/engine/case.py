@@ -130,6 +130,13 @@ class Case:
         """Questions of the program; answers use their indices."""
         return self.program.questions
 
+    @cached_property
+    def random(self) -> bool:
+        """Whether any delay of the case is random."""
+        blocks = (self.program.scheme.block[name] for name in self.names)
+        more = [d for b in blocks if isinstance(b, Breaker) for d in (b.late_by, b.closing) if d is not None]
+        return None in self.fixed[0] or None in self.fixed[1] or not all(d.is_fixed for d in more)
+
     def topology(self, open_mask: int) -> Topology:
         """Conditions and supply with some of the case's breakers open; computed once for each set."""
         known = self._topologies.get(open_mask)

@@ -3,18 +3,24 @@
 Trial number t of a seed is the same trial whoever runs it: its answers and its random
 delays are looked up by (seed, name, trial). Chunks run anywhere therefore merge into
 just what one run over all the trials gives.
+
+Where no delay is random, trials with the same answers to the questions they meet are one
+run: a chunk is split question by question, and each distinct history is run once (the
+outcome is a function of asked answers only, rule R4).
 """
 
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import Executor
 from dataclasses import dataclass
 from statistics import NormalDist
-from typing import Literal
+from typing import TYPE_CHECKING, Literal
 
-from schemesim.engine.answers import DrawnAnswers
+import numpy as np
+
+from schemesim.engine.answers import DrawnAnswers, ForcedAnswers, drawn_answers
 from schemesim.engine.case import Case
 from schemesim.engine.event import DEFAULT_HORIZON_US, run_event
 from schemesim.engine.times import DelayTimes
@@ -22,8 +28,14 @@ from schemesim.errors import ErrorList, reject
 from schemesim.study.intervals import clopper_pearson, wilson
 from schemesim.study.tree import End, Happens
 
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
 CHUNK = 500
-"""Trials in one piece of work."""
+"""Trials in one piece of work where delays are random."""
+
+CHUNK_OF_HISTORIES = 50_000
+"""Trials in one piece of work where they are not."""
 
 Method = Literal["wilson", "clopper_pearson"]
 
@@ -158,7 +170,7 @@ def simulate(
     *,
     horizon_us: int = DEFAULT_HORIZON_US,
     executor: Executor | None = None,
-    chunk: int = CHUNK,
+    chunk: int | None = None,
 ) -> Counts:
     """Run trials with drawn answers and delays, and count how they end.
 
@@ -174,7 +186,7 @@ def simulate(
     horizon_us : int
     executor : concurrent.futures.Executor or None
         Runs the chunks; the counts are the same with any, or with none.
-    chunk : int
+    chunk : int or None
         Trials in one piece of work.
 
     Raises
@@ -182,6 +194,8 @@ def simulate(
     InputError
         For numbers that are not whole, or negative.
     """
+    if chunk is None:
+        chunk = CHUNK if case.random else CHUNK_OF_HISTORIES
     errors = ErrorList()
     wanted = (("trials", trials, 0), ("seed", seed, 0), ("first_trial", first_trial, 0), ("chunk", chunk, 1))
     for name, number, least in wanted:
@@ -208,7 +222,11 @@ class _Chunk:
 
 
 def _run_chunk(work: _Chunk) -> Counts:
-    found: list[tuple[End, int]] = []
+    found = _by_history(work) if not work.case.random else _one_by_one(work)
+    return Counts(str(work.case.event), work.seed, ((work.first, work.end),), _merged(found))
+
+
+def _one_by_one(work: _Chunk) -> Iterator[tuple[End, int]]:
     for trial in range(work.first, work.end):
         ran = run_event(
             work.case,
@@ -216,8 +234,32 @@ def _run_chunk(work: _Chunk) -> Counts:
             times=DelayTimes(work.seed, trial),
             horizon_us=work.horizon_us,
         )
-        found.append((End(ran.outcome, ran.final_mask), 1))
-    return Counts(str(work.case.event), work.seed, ((work.first, work.end),), _merged(found))
+        yield End(ran.outcome, ran.final_mask), 1
+
+
+def _by_history(work: _Chunk) -> Iterator[tuple[End, int]]:
+    """Run each distinct history of the chunk once; the trials that share it are counted."""
+    count = work.end - work.first
+    drawn: dict[int, NDArray[np.bool_]] = {}
+    waiting: list[tuple[dict[int, bool], NDArray[np.intp]]] = [({}, np.arange(count))]
+    while waiting:
+        answers, trials = waiting.pop()
+        if not trials.size:
+            continue
+        ran = run_event(work.case, ForcedAnswers(answers), horizon_us=work.horizon_us)
+        met = dict(answers)
+        for q, _ in ran.asked:
+            if q in answers:
+                continue
+            if q not in drawn:
+                drawn[q] = drawn_answers(work.case.program, work.seed, q, work.first, count)
+            yes = drawn[q][trials]
+            if yes.any():
+                waiting.append(({**met, q: True}, trials[yes]))
+                trials = trials[~yes]
+            met[q] = False
+        if trials.size:
+            yield End(ran.outcome, ran.final_mask), int(trials.size)
 
 
 def _merged(items: Iterable[tuple[End, int]]) -> tuple[tuple[End, int], ...]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Callable
 from concurrent.futures import ProcessPoolExecutor, ThreadPoolExecutor
 from fractions import Fraction
@@ -9,14 +10,16 @@ from typing import Any
 
 import pytest
 
+from schemesim.engine.answers import DrawnAnswers, drawn_answers
 from schemesim.engine.case import Case
+from schemesim.engine.event import run_event
 from schemesim.engine.outcome import Outcome
 from schemesim.errors import InputError
 from schemesim.scheme.distributions import Uniform
 from schemesim.scheme.model import Role
 from schemesim.study.measures import breakers_mean, cleared_by
 from schemesim.study.montecarlo import Counts, simulate
-from schemesim.study.tree import explore
+from schemesim.study.tree import End, explore
 from tests.unit.small_schemes import as_float, brute_force, case_of, feeder_scheme, voting_scheme
 
 SEED = 20_240
@@ -88,6 +91,26 @@ def test_chunks_add_up_to_one_run(delay: Uniform | None) -> None:
     assert (parts[2] + parts[0]) + parts[1] == whole
     assert whole.ranges == ((0, 300),)
     assert simulate(case, 300, SEED + 1).ends != whole.ends
+
+
+@pytest.mark.parametrize("scheme", [feeder_scheme, voting_scheme], ids=["feeder", "voting"])
+def test_trials_run_by_history_end_as_each_run_on_its_own(scheme: Any) -> None:
+    case = case_of(scheme(as_float))
+    assert not case.random
+    each = Counter(
+        End(r.outcome, r.final_mask)
+        for r in (run_event(case, DrawnAnswers(case.program, SEED, t)) for t in range(5, 705))
+    )
+    assert dict(simulate(case, 700, SEED, first_trial=5, chunk=300).ends) == each
+    assert len(each) > 2
+
+
+def test_answers_drawn_in_a_row_are_those_drawn_one_by_one(case: Case) -> None:
+    program = case.program
+    for q, question in enumerate(program.questions):
+        row = drawn_answers(program, SEED, q, 3, 200)
+        each = [DrawnAnswers(program, SEED, t).answer(q, question.probability) for t in range(3, 203)]
+        assert row.tolist() == each
 
 
 def test_random_delays_are_drawn() -> None:
