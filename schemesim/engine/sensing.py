@@ -16,7 +16,7 @@ from schemesim.engine.program import Program
 from schemesim.plant.current import Neighbourhood
 from schemesim.plant.grid import Grid, grid_of
 from schemesim.plant.model import Location
-from schemesim.plant.paths import within
+from schemesim.plant.paths import lengths, within
 from schemesim.scheme.conditions import (
     Always,
     Condition,
@@ -207,7 +207,11 @@ class _LogicallySensed:
 def _reaches(
     program: Program, condition: Reach, carrying: Set[str], paths: Mapping[tuple[str, float], int]
 ) -> bool:
-    """Within reach and in direction: the nearer side of the CTs tells where the fault lies."""
+    """Within reach and in direction: the nearer side of the CTs tells where the fault lies.
+
+    A fault as near by the way ahead as by the way behind (over a parallel line) counts as ahead:
+    the current that flows says so, and only the number of devices passed says otherwise.
+    """
     if not any(t.ct in carrying for t in condition.terminals):
         return False
     far = 1 << 62
@@ -217,11 +221,14 @@ def _reaches(
         other = d.b if d.a == t.inner else d.a
         inner = min(inner, paths.get(program.paths.point(t.ct, t.inner), far))
         outer = min(outer, paths.get(program.paths.point(t.ct, other), far))
-    if condition.direction is Direction.FORWARD:
-        return inner < outer and within(inner, condition.reach)
-    if condition.direction is Direction.REVERSE:
-        return outer < inner and within(outer, condition.reach)
-    return within(min(inner, outer), condition.reach)
+    near = min(inner, outer)
+    if condition.direction is Direction.BOTH or not within(near, condition.reach):
+        return within(near, condition.reach)
+    ahead = inner < outer
+    if outer < inner:
+        ways = (paths[p] + w for p, w in program.paths.ahead(condition.terminals) if p in paths)
+        ahead = any(lengths(way) == lengths(outer) for way in ways)
+    return ahead if condition.direction is Direction.FORWARD else not ahead and outer < inner
 
 
 def _devices_of(condition: Condition) -> tuple[str, ...]:

@@ -13,15 +13,24 @@ from functools import cached_property
 from itertools import pairwise
 
 from schemesim.plant.model import Location, Plant
+from schemesim.plant.terminals import Terminal
 
 DEVICE_BITS = 16
 _PER_UNIT = 1000
+
+Point = tuple[str, float]
+"""A section and the position along it at which devices are attached."""
 
 
 
 def weight(length: float) -> int:
     """The integer distance of a length."""
     return round(length * _PER_UNIT) << DEVICE_BITS
+
+
+def lengths(distance: int) -> int:
+    """The length in a distance, the devices passed not counted."""
+    return distance >> DEVICE_BITS
 
 
 def within(distance: int, reach: float) -> bool:
@@ -37,6 +46,7 @@ class PathGraph:
 
     def __init__(self, plant: Plant) -> None:
         self.plant = plant
+        self._ahead: dict[tuple[Terminal, ...], tuple[tuple[Point, int], ...]] = {}
 
     @cached_property
     def _points(self) -> dict[str, tuple[float, ...]]:
@@ -75,6 +85,33 @@ class PathGraph:
     def points_of(self, section: str) -> tuple[tuple[str, float], ...]:
         """The points of one section at which devices are attached."""
         return tuple((section, p) for p in self._points[section])
+
+    def ahead(self, terminals: tuple[Terminal, ...]) -> tuple[tuple[Point, int], ...]:
+        """What lies ahead of a set of CTs, on their inner side, at the end of the first length.
+
+        Returns
+        -------
+        tuple of (point, distance to it)
+            For a line end: the other end of the line and the line's length. A fault that is no
+            nearer behind the CTs than it is by that way is ahead of them too: of two parallel
+            lines to a fault beyond, either sees it forward.
+        """
+        known = self._ahead.get(terminals)
+        if known is None:
+            own = {t.ct for t in terminals}
+            queue = [self.point(t.ct, t.inner) for t in terminals]
+            seen, found = set(queue), []
+            while queue:
+                for other, w, device in self._near[queue.pop()]:
+                    if device in own or other in seen:
+                        continue
+                    if w >> DEVICE_BITS:
+                        found.append((other, w))
+                    else:
+                        seen.add(other)
+                        queue.append(other)
+            known = self._ahead[terminals] = tuple(sorted(found))
+        return known
 
     def distances(
         self, fault: Location, opened: Set[str], cutoff: float
