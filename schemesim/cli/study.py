@@ -23,6 +23,9 @@ from schemesim.study.location import LocationResult
 from schemesim.study.locations import LocationStudy
 
 MAX_WORKERS = 256
+MARKS = {"better": "+", "worse": "-", "higher": ">", "lower": "<", "same": "=", "not told apart": "~"}
+"""A verdict of a comparison as one sign beside its bracket."""
+_GIVEN = frozenset({"faults_per_yr"})
 MAX_POINTS = 40
 """Most single points of failure in a text."""
 
@@ -77,7 +80,8 @@ def study(scenario: Scenario, options: argparse.Namespace) -> int:
             for c in side_by_side.rows
         ]
         text += ["policies side by side", "", table_text(*_side_by_side(finished)), ""]
-        text.append(f"verdicts against {side_by_side.base!r} stand where the brackets do not overlap")
+        text.append(f"against {side_by_side.base!r}: " + ", ".join(f"{m} {v}" for v, m in MARKS.items()))
+        text.append("a verdict stands only where the brackets do not overlap")
     put(options, scenario.name, content, rows, text)
     if not complete:
         print("interrupted", file=sys.stderr)
@@ -214,7 +218,7 @@ def _text(scenario: Scenario, name: str, s: LocationStudy, epsilon: float) -> li
     text = [*head, table_text(odds, columns), ""]
     text += [table_text(times, list(times[0]) if times else []), ""]
     text += [
-        "t_ms: clearing time with no failure; t_p95_ms, t_worst_ms: its 95th percentile, the worst that was explored;",
+        "t_ms: clearing time with no failure; t_p95_ms, t_worst_ms: its 95th percentile, the worst explored that cleared;",
         "breakers: how many open, with the probability each has at least;",
         "spof: single points of failure, not_cleared: those of them that leave the fault uncleared",
         "",
@@ -278,7 +282,7 @@ def _side_by_side(studies: Mapping[str, LocationStudy]) -> tuple[list[dict[str, 
         row: dict[str, object] = {"measure": measure}
         for name in comparison.variants:
             cell = comparison.of(measure, name)
-            word = f" ({cell.verdict})" if cell.verdict else ""
-            row[name] = show(cell.value.low, cell.value.high) + word
+            mark = "" if measure in _GIVEN else MARKS.get(cell.verdict, "")
+            row[name] = f"{show(cell.value.low, cell.value.high)} {mark}".rstrip()
         rows.append(row)
     return rows, ["measure", *comparison.variants]
