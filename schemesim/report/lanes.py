@@ -132,12 +132,17 @@ def _subject(t: ClearingSequence, row: Row) -> str:
 
 
 def _latch_of(case: Case, name: str) -> str:
-    """The latch that a timer sets and nothing else reads, or the timer itself."""
+    """The latch that a timer sets and nothing else reads (but for a gate of their own), or the timer itself."""
     i = case.index[name]
-    readers = case.consumers[i]
-    if len(readers) == 1 and case.kind[readers[0]] is Kind.LATCH and case.inputs[readers[0]][0][0] == i:
-        return case.names[readers[0]]
-    return name
+    while True:
+        readers = case.consumers[i]
+        if len(readers) != 1 or case.inputs[readers[0]][0] != (i, False):
+            return name
+        i = readers[0]
+        if case.kind[i] is Kind.LATCH:
+            return case.names[i]
+        if case.kind[i] is not Kind.GATE or case.contacts[i] is not None or len(case.inputs[i]) != 1:
+            return name
 
 
 def _fault(t: ClearingSequence) -> Lane:

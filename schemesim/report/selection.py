@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Set
 
 from schemesim.engine.case import Case
 from schemesim.engine.outcome import Row, Run
 from schemesim.engine.program import Kind
-from schemesim.scheme.model import ComponentKind, Gate, Latch, Timer, signal_of
+from schemesim.scheme.model import ComponentKind, Gate, Latch, Timer
 
 _SWITCHES = {
     "sense": {"picks up": True, "drops out": False},
@@ -36,7 +36,8 @@ _IN_BETWEEN = ("starts", "starts to reset")
 def select(case: Case, run: Run) -> tuple[frozenset[int], tuple[int, ...]]:
     """Rows that tell the story, and rows kept for reading."""
     log, beside = run.log, support(case, run)
-    telling = [r for r in log if r.what in _TELLING.get(r.kind, ()) and not _is_aside(case, r)]
+    happened = {q for q, yes in run.asked if yes}
+    telling = [r for r in log if r.what in _TELLING.get(r.kind, ()) and not _is_aside(case, r, happened)]
     way = _ancestors(log, (r for r in telling if r.kind in _DECISIVE), beside)
     behind = _ancestors(log, (r for r in telling if r.kind != "timer"), beside)
     story = way | {i for i in behind if log[i].kind in _PLAIN and log[i].what not in _IN_BETWEEN}
@@ -51,12 +52,14 @@ def select(case: Case, run: Run) -> tuple[frozenset[int], tuple[int, ...]]:
     return frozenset(story), tuple(sorted(kept))
 
 
-def _is_aside(case: Case, row: Row) -> bool:
-    """What tells nothing by itself: a seal-in that resets again, a signal only held, or under way over a channel."""
+def _is_aside(case: Case, row: Row, happened: Set[int]) -> bool:
+    """What tells nothing by itself: a seal-in that resets again, a timer that only holds, or counts not."""
     block = case.program.scheme.block.get(row.subject)
     if isinstance(block, Latch):
         return block.reset is not None
-    return only_holds(case, row.subject) or is_channel(case, row.subject)
+    return isinstance(block, Timer) and (
+        only_holds(case, row.subject) or is_channel(case, row.subject) or _is_idle(case, row.subject, happened)
+    )
 
 
 def only_holds(case: Case, name: str) -> bool:
@@ -66,16 +69,36 @@ def only_holds(case: Case, name: str) -> bool:
 
 
 def is_channel(case: Case, name: str) -> bool:
-    """Whether a timer is the time a signal takes over a channel."""
-    blocks = case.program.scheme.block
-    block = blocks.get(name)
-    while isinstance(block, Timer):
-        name = signal_of(block.input)
-        block = blocks[name]
-    if not isinstance(block, Gate):
-        return False
+    """Whether a timer is the time a signal takes over a channel: what comes after it may fail with the channel."""
     components = case.program.scheme.component
-    return any(components[a.component].kind is ComponentKind.CHANNEL for a in block.unless)
+    return isinstance(case.program.scheme.block.get(name), Timer) and any(
+        components[a.component].kind is ComponentKind.CHANNEL
+        for g in _gates_behind(case, name)
+        for a in (*g.unless, *g.given)
+    )
+
+
+def _is_idle(case: Case, name: str, happened: Set[int]) -> bool:
+    """Whether a timer would count only under a failure that has not happened."""
+    gates = [case.index[g.name] for g in _gates_behind(case, name)]
+    return bool(gates) and all(
+        case.given[g] and not any(q in happened for a in case.given[g] for q in case.asks[a]) for g in gates
+    )
+
+
+def _gates_behind(case: Case, name: str) -> list[Gate]:
+    """The gates that read a timer, directly or through further timers."""
+    found: list[Gate] = []
+    stack, seen = [case.index[name]], {case.index[name]}
+    while stack:
+        for c in case.consumers[stack.pop()]:
+            block = case.program.scheme.block[case.names[c]]
+            if isinstance(block, Gate):
+                found.append(block)
+            elif isinstance(block, Timer) and c not in seen:
+                seen.add(c)
+                stack.append(c)
+    return found
 
 
 def _ancestors(log: tuple[Row, ...], rows: Iterable[Row], beside: Mapping[int, tuple[int, ...]]) -> set[int]:

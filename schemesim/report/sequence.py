@@ -74,9 +74,9 @@ class ClearingSequence:
         Of several things that a gate needs together (inputs, and a failure that is required
         for it), it is the one that came last.
         """
-        i = self._led_by(row)
+        i = self._behind[row.index][0]
         while i >= 0 and not all and i not in self._shown:
-            i = self._led_by(self.run.log[i])
+            i = self._behind[i][0]
         return self.run.log[i] if i >= 0 else None
 
     def since_us(self, row: Row) -> int:
@@ -85,16 +85,7 @@ class ClearingSequence:
         A trip output of which nothing depends at first is asked about later (rule R4); its row
         stands where it was asked, but it has been operated since its inputs have.
         """
-        if row.kind not in ("gate", "trip output") or row.what != "operates":
-            return row.t_us
-        cause = self._led_by(row)
-        return self.since_us(self.run.log[cause]) if cause >= 0 else 0  # so it was before the event
-
-    def _led_by(self, row: Row) -> int:
-        together = self._beside.get(row.index)
-        if not together:
-            return row.cause
-        return max(together, key=lambda i: (self.since_us(self.run.log[i]), i))
+        return self._behind[row.index][1]
 
     def because(self, row: Row, all: bool = False) -> str:
         """The row that led to one, in words."""
@@ -119,8 +110,17 @@ class ClearingSequence:
         return dict(zip(asked, (q for q, _ in self.run.asked), strict=True))
 
     @cached_property
-    def _beside(self) -> Mapping[int, tuple[int, ...]]:
-        return support(self.case, self.run)
+    def _behind(self) -> tuple[tuple[int, int], ...]:
+        """For each row the one that led to it, and since when what it says has been so."""
+        together = support(self.case, self.run)
+        found: list[tuple[int, int]] = []
+        for row in self.run.log:
+            led = max(together.get(row.index) or (row.cause,), key=lambda i: (found[i][1] if i >= 0 else 0, i))
+            since = row.t_us
+            if row.kind in ("gate", "trip output") and row.what == "operates":
+                since = found[led][1] if led >= 0 else 0  # without a cause: it was so before the event
+            found.append((led, since))
+        return tuple(found)
 
 
 def shorten(text: str, width: int) -> str:

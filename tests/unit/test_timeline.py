@@ -10,6 +10,7 @@ from __future__ import annotations
 import io
 import subprocess
 import sys
+from dataclasses import replace
 from functools import cache
 from itertools import combinations
 from pathlib import Path
@@ -58,7 +59,7 @@ SITUATIONS = {
 
 
 @cache
-def case_of(section: str, auxiliary: bool = False) -> Case:
+def case_of(section: str) -> Case:
     b = PlantBuilder()
     line(b, "L1", 40, kv=110)
     generator(b, "G1", station="Elm")
@@ -70,9 +71,7 @@ def case_of(section: str, auxiliary: bool = False) -> Case:
     policy = duplicate_chain(
         local_backup=LocalBackup(delay=Fixed(400_000), bus_delay=Fixed(270_000)),
         end_fault=True,
-        breaker_failure=BreakerFailurePolicy(
-            times=BreakerFailureTimes(timer=Fixed(150_000)), auxiliary=auxiliary
-        ),
+        breaker_failure=BreakerFailurePolicy(times=BreakerFailureTimes(timer=Fixed(150_000))),
         reaches=Reaches(zone_2_delay=Fixed(350_000), zone_3_delay=Fixed(1_000_000)),
         times=PolicyTimes(
             lockout=Fixed(10_000),
@@ -223,11 +222,14 @@ def test_an_output_asked_about_late_says_since_when_it_is_on() -> None:
 
 
 def test_what_held_before_the_event_is_said_to_and_takes_no_credit() -> None:
-    # with the 52a contact beside the current detector: closed all along, asked about when a trip begins
-    case = case_of("L1", auxiliary=True)
-    found = timeline(case, replay(case, STUCK))
-    contact = next(r for r in found.rows() if r.subject == "Elm.L1.CB/50BF 52a true")
-    assert (contact.t_us, found.since_us(contact), found.cause_of(contact)) == (20_000, 0, None)
+    # the log of a detector that had picked up before the event: the gate behind it has no cause
+    run = timeline_of("stuck").run
+    current = next(r for r in run.log if r.subject == "Elm.L1.CB/50BF current" and r.what == "picks up")
+    gate = next(r for r in run.log if r.kind == "gate" and r.what == "operates" and r.cause == current.index)
+    log = tuple(replace(r, cause=-1) if r is gate else r for r in run.log)
+    found = timeline(case_of("L1"), replace(run, log=log))
+    contact = log[gate.index]
+    assert (found.since_us(contact), found.cause_of(contact)) == (0, None)
     assert found.because(contact) == "as before the event"
     assert found.because(found.run.log[0]) == ""
     trip = next(r for r in found.rows() if r.subject == "Elm.L1.CB/50BF" and r.what == "operates")
