@@ -276,13 +276,15 @@ def permissive(b: SchemeBuilder, name: str, element: Input, receipts: Sequence[s
 
 
 def echo(b: SchemeBuilder, name: str, receipt: str, forward: Input, reverse: Input, pulse: Delay) -> str:
-    """Echo for a weak or open end: sends a receipt back once if nothing is seen here in either direction."""
-    used = f"{name} used"
-    inputs: tuple[Input, ...] = (receipt, _not(forward), _not(reverse), Not(used))
-    b.add(Gate(name=name, inputs=inputs, k=4))
-    b.add(Timer(name=f"{name} pulse", input=name, pick_up=pulse, drop_out=AT_ONCE))
-    b.add(Latch(name=used, set=f"{name} pulse"))
-    return name
+    """Echo for a weak or open end: one pulse sent back if nothing is seen here in either direction.
+
+    It is sent once in a run, so two ends never echo each other's echo for ever.
+    """
+    inputs: tuple[Input, ...] = (receipt, _not(forward), _not(reverse))
+    b.add(Gate(name=f"{name} wanted", inputs=inputs, k=3))
+    begun = b.add(Latch(name=f"{name} begun", set=f"{name} wanted"))
+    over = b.add(Timer(name=f"{name} pulse", input=begun, pick_up=pulse, drop_out=AT_ONCE))
+    return b.add(Gate(name=name, inputs=(begun, Not(over)), k=2))
 
 
 def blocking(b: SchemeBuilder, name: str, waited: Sequence[Input], block: str) -> str:

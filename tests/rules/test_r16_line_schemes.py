@@ -11,13 +11,14 @@ from dataclasses import replace
 
 import pytest
 
+from schemesim.engine.outcome import Status
 from schemesim.plant.layouts import Bay, generator, line, single_bus
 from schemesim.plant.model import Plant, PlantBuilder
 from schemesim.scheme.delays import Fixed
 from schemesim.scheme.dress import dress
 from schemesim.scheme.functions import ElementTimes
 from schemesim.scheme.model import Sense, Timer
-from schemesim.scheme.policy import LineScheme, Policy, PolicyTimes, ProtectionSet, single_set
+from schemesim.scheme.policy import BreakerFailurePolicy, LineScheme, Policy, PolicyTimes, ProtectionSet, single_set
 from tests.rules.small import chain, opened, play, roles
 
 LOST, LATE, FALSE = (f"L1/channel 1: {mode}" for mode in ("lost", "late", "false_receipt"))
@@ -154,3 +155,12 @@ def test_r16_faster_elements_do_not_beat_the_channel() -> None:
     # Elements that operate in 10: permitted at 25, open at 75.
     quick = PolicyTimes(distance=ElementTimes(operate=Fixed(10_000)))
     assert alder(with_line(LineScheme.PERMISSIVE_OVERREACH, times=quick), INSIDE) == 75_000
+
+
+@pytest.mark.parametrize("place", [INSIDE, BEYOND, "Birch.B1"])
+def test_r16_two_ends_never_echo_each_others_echo_for_ever(place: str) -> None:
+    """Once the fault is cleared both ends see nothing and receive what was under way: one pulse each."""
+    changes = {"echo": True, "vt_supervision": False, "breaker_failure": BreakerFailurePolicy(auxiliary=True)}
+    run = play(chain(), with_line(LineScheme.PERMISSIVE_OVERREACH, **changes, coil_dc=(("1", "1"), ("2", "1"))), place)
+    assert run.outcome.status is Status.CLEARED
+    assert not run.outcome.at_horizon
