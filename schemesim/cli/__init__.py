@@ -27,12 +27,17 @@ study
     ``no_fault`` (rows) if asked for; ``comparison`` (rows) if there are several.
 inject
     ``policy``, ``event``, ``order``, ``rows`` as in the CSV.
+decide
+    ``unit`` of money; ``locations`` with their ``faults_per_yr``, ``left_out_per_yr``; ``variants`` (rows as in the
+    CSV), ``costs`` a year by policy and kind, ``frontier``, ``next_best``, ``tornado``, ``uncertainty`` (rows),
+    ``order`` of the additions made, ``not_possible`` ones and why.
 
 CSV
 ---
 With ``--csv FILE`` the table of the command is written, whole or not at all: the rows of the
 sequence (show), one row for each policy and location (study), one for each combination of
-failures (inject), one for each policy (check). The first row names the columns, as in the JSON.
+failures (inject), one for each measure and variant (decide), one for each
+policy (check). The first row names the columns, as in the JSON.
 """
 
 from schemesim.cli.parser import main

@@ -7,6 +7,7 @@ import os
 import sys
 from collections.abc import Sequence
 
+from schemesim.cli.decide import add_decide
 from schemesim.cli.output import BAD_INPUT, CANNOT_GO_ON, DONE, INTERRUPTED, NOTE, check_place
 from schemesim.errors import InputError, SchemesimError
 
@@ -60,6 +61,7 @@ def parser() -> argparse.ArgumentParser:
     inject = commands.add_parser("inject", parents=[common, place], help="every single failure, or every pair")
     inject.add_argument("--order", metavar="1|2", default="1", help="1: every single failure; 2: every pair too")
     inject.add_argument("--all", action="store_true", help="failures that change nothing too")
+    add_decide(commands, common)
     return top
 
 
@@ -95,10 +97,11 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 def _run(options: argparse.Namespace) -> int:
     from schemesim.cli.commands import check, inject, show  # heavy: not needed to tell of bad arguments
+    from schemesim.cli.decide import decide
     from schemesim.cli.study import study
     from schemesim.scenario import load_scenario
 
     if options.csv is not None:
         check_place(options.csv, options.file)
-    command = {"check": check, "show": show, "inject": inject, "study": study}[options.command]
+    command = {"check": check, "show": show, "inject": inject, "study": study, "decide": decide}[options.command]
     return command(load_scenario(options.file), options)

@@ -10,6 +10,7 @@ from schemesim.scenario.build_plant import plant_of
 from schemesim.scenario.build_study import frequencies_of, limits_of, run_of, settings_of
 from schemesim.scenario.locate import Path
 from schemesim.scenario.model import Scenario
+from schemesim.scenario.money import money_of
 from schemesim.scenario.names import BUILT_IN
 from schemesim.scenario.notes import Notes
 from schemesim.scenario.parts import Apply
@@ -28,6 +29,7 @@ def scenario_of(notes: Notes, said: ScenarioIn) -> Scenario | None:
         return None
     frequencies = frequencies_of(notes, plant, said.fault_frequencies, settings.positions)
     runs = [run_of(notes, plant, run, ("runs", i)) for i, run in enumerate(said.runs)]
+    money = money_of(notes, said.money, plant, policies)
     if notes.problems:
         return None
     return Scenario(
@@ -44,6 +46,7 @@ def scenario_of(notes: Notes, said: ScenarioIn) -> Scenario | None:
         frequency_hz=said.frequency_hz or None,
         name=said.name,
         description=said.description,
+        money=money,
     )
 
 

@@ -10,6 +10,7 @@ from schemesim.errors import reject
 from schemesim.plant.model import Location, Plant, SectionKind
 from schemesim.scenario.locate import Data
 from schemesim.scenario.model import ListedRun, Scenario
+from schemesim.scenario.money import money_data
 from schemesim.scenario.parts import policy_data
 from schemesim.scenario.scalars import ms
 from schemesim.scenario.schema import VERSION
@@ -46,6 +47,7 @@ def document_of(scenario: Scenario) -> Data:
             "restore_h": s.restore_h,
         },
         "runs": [_run(r) for r in scenario.runs],
+        "money": _money(scenario),
     }
     return _pruned(data)
 
@@ -118,6 +120,13 @@ def exact(plant: Plant, where: Location) -> str:
     """A location as text that reads back as the same, to the last digit of its position."""
     is_line = plant.section[where.section].kind is SectionKind.LINE
     return f"{where.section}@{where.position!r}" if is_line else where.section
+
+
+def _money(scenario: Scenario) -> dict[str, Any] | None:
+    if scenario.money is None:
+        return None
+    where = [exact(scenario.plant, at) for at in scenario.money.locations]
+    return money_data(scenario.money) | ({"locations": where} if where else {})
 
 
 def _run(run: ListedRun) -> dict[str, Any]:

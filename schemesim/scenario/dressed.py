@@ -9,6 +9,7 @@ from schemesim.engine.sensing import NoFault
 from schemesim.errors import InputError, Problem, nearest
 from schemesim.scenario.locate import Path
 from schemesim.scenario.model import ListedRun, Scenario
+from schemesim.scenario.money import check_costs
 from schemesim.scenario.notes import Notes
 from schemesim.scheme.model import MODES, Ask, Component, Scheme
 
@@ -18,6 +19,7 @@ def check_dressed(notes: Notes, scenario: Scenario) -> None:
     schemes = _dress(notes, scenario)
     if notes.problems:
         return
+    check_costs(notes, scenario.money, schemes)
     components: dict[str, Component] = {}
     for scheme in schemes.values():
         components.update(scheme.component)

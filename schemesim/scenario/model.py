@@ -15,6 +15,7 @@ from schemesim.scheme.dress import dress
 from schemesim.scheme.failure_data import FailureData
 from schemesim.scheme.model import Ask, Scheme
 from schemesim.scheme.policy import Policy
+from schemesim.study.money import Money
 
 if TYPE_CHECKING:
     from schemesim.engine.case import Case
@@ -142,6 +143,8 @@ class Scenario:
     frequency_hz : float or None
         Power frequency; None where it is not stated.
     name, description : str
+    money : Money or None
+        Costs and values, for decisions.
 
     Raises
     ------
@@ -162,6 +165,7 @@ class Scenario:
     frequency_hz: float | None = None
     name: str = ""
     description: str = ""
+    money: Money | None = None
     document: Data = field(default=None, compare=False, repr=False)
     """The plain data it was read from, used again when saved as long as it says the same."""
     _made: dict[object, object] = field(default_factory=dict, init=False, compare=False, repr=False)

@@ -14,6 +14,7 @@ from pydantic import BeforeValidator, Field, PlainValidator
 
 from schemesim.plant.bays import CORES, WINDINGS, CtPlacement
 from schemesim.plant.model import DeviceKind, SectionKind
+from schemesim.scenario.money import MoneyIn
 from schemesim.scenario.parts import Part, PolicyIn
 from schemesim.scenario.scalars import (
     Flag,
@@ -297,3 +298,4 @@ class ScenarioIn(Part):
     limits: LimitsIn = LimitsIn()
     study: StudyIn = StudyIn()
     runs: Annotated[list[RunIn], Field(max_length=MAX_RUNS)] = []
+    money: MoneyIn = MoneyIn()

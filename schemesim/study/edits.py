@@ -93,7 +93,8 @@ class Recipe:
 def _second_relay(p: Policy) -> Policy:
     if len(p.sets) != 1:
         return p
-    return replace(p, sets=(p.sets[0], replace(p.sets[0], label="2")))
+    coil = "2" if "2" in dict(p.coil_dc) else p.sets[0].coil  # a second coil that is there already is used
+    return replace(p, sets=(p.sets[0], replace(p.sets[0], label="2", coil=coil)))
 
 
 def _of_set_2(p: Policy, item: str) -> Policy:

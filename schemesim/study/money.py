@@ -26,6 +26,7 @@ from fnmatch import fnmatchcase
 from typing import TYPE_CHECKING
 
 from schemesim.errors import ErrorList
+from schemesim.plant.model import Location
 from schemesim.scheme.model import Component, ComponentKind, Scheme
 from schemesim.study.currency import EXPECTED, is_unit
 
@@ -277,6 +278,8 @@ class Money:
     error_factors : tuple of (kind, factor)
         For the uncertainty run: the 95th percentile of a kind's failure data over their median
         (log-normal); ``no_fault`` stands for the rates of tripping with no fault.
+    locations : tuple of Location
+        Fault locations studied, each standing for others of its kind; empty: all of them.
     """
 
     unit: str
@@ -286,6 +289,7 @@ class Money:
     additions: tuple[str, ...] = ()
     ranges: tuple[tuple[str, float, float], ...] = ()
     error_factors: tuple[tuple[str, float], ...] = ()
+    locations: tuple[Location, ...] = ()
 
     def __post_init__(self) -> None:
         errors = ErrorList()

@@ -195,7 +195,7 @@ class Tornado:
         return str(self.table().to_html(index=False))
 
 
-def tornado(weigher: Weigher, money: Money, *, whole: bool = False) -> Tornado:
+def tornado(weigher: Weigher, money: Money, *, whole: bool = False, most_steps: int | None = None) -> Tornado:
     """Move each assumption over its range and see what it does to the plan and to the order of additions.
 
     Parameters
@@ -206,8 +206,10 @@ def tornado(weigher: Weigher, money: Money, *, whole: bool = False) -> Tornado:
     whole : bool
         Make the whole list of additions anew at each end; False: order the additions weighed
         first, which takes no further run. Failure data are moved for the first additions only.
+    most_steps : int or None
+        As in :meth:`Weigher.next_best`.
     """
-    plan = weigher.next_best(money)
+    plan = weigher.next_best(money, most_steps)
     first = {w.name: weigher.get((w.name,))[1] for w in (plan.steps[0].weighed if plan.steps else ())}
 
     def net(m: Money, factors: Factors) -> float:
@@ -215,7 +217,7 @@ def tornado(weigher: Weigher, money: Money, *, whole: bool = False) -> Tornado:
 
     def order(m: Money, factors: Factors) -> tuple[str, ...]:
         if whole and not factors:
-            return weigher.next_best(m).order
+            return weigher.next_best(m, most_steps).order
         before = m.costs.of(plan.start.program.scheme).per_yr
         ranked: list[tuple[float, str]] = []
         for name, ledger in first.items():

@@ -35,6 +35,8 @@ if TYPE_CHECKING:
 LEAST_DIFFERING = 10
 """Trials that must differ before a normal interval is given to their difference (a rule of thumb)."""
 
+_ROUNDING = 1e-11  # sums over the same places in another order differ by less, relative
+
 
 @dataclass(frozen=True, slots=True)
 class Paired:
@@ -237,9 +239,10 @@ def paired(variant: Floats, base: Floats, confidence: float = 0.95) -> Paired:
     The variance with independent trials is the sum of both variances.
     """
     change = variant - base
+    change[np.abs(change) <= _ROUNDING * np.maximum(np.abs(variant), np.abs(base))] = 0.0
     n = len(change)
     mean = float(change.mean())
-    spread = float(change.var(ddof=1))
+    spread = float(change.var(ddof=1)) if np.ptp(change) > _ROUNDING * float(np.abs(change).max()) else 0.0
     apart = float(variant.var(ddof=1)) + float(base.var(ddof=1))
     half = NormalDist().inv_cdf(0.5 + confidence / 2) * math.sqrt(spread / n)
     factor = apart / spread if spread > 0 else math.inf
