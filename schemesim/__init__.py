@@ -67,6 +67,7 @@ if TYPE_CHECKING:
     from schemesim.report.pictures import plot_timeline
     from schemesim.report.timeline import replay, timeline
     from schemesim.scenario import Scenario, load_scenario, save_scenario
+    from schemesim.scenario.deciding import decide
     from schemesim.scheme.build import SchemeBuilder
     from schemesim.scheme.conditions import Current, External, InZone, Reach
     from schemesim.scheme.delays import Fixed, fixed_ms
@@ -103,6 +104,8 @@ if TYPE_CHECKING:
     from schemesim.study.brackets import Bracket
     from schemesim.study.comparison import compare
     from schemesim.study.dependability import outputs_of, study_dependability
+    from schemesim.study.edits import Edit, Recipe
+    from schemesim.study.frontier import frontier, next_best
     from schemesim.study.importance import importance
     from schemesim.study.injection import inject
     from schemesim.study.intervals import clopper_pearson, wilson
@@ -118,10 +121,14 @@ if TYPE_CHECKING:
         p_selective,
         p_within_limit,
     )
+    from schemesim.study.money import CostRule, Costs, Money, Values
     from schemesim.study.montecarlo import simulate
     from schemesim.study.no_fault import study_no_fault
     from schemesim.study.races import races
+    from schemesim.study.risk import Explorer
+    from schemesim.study.sensitivity import uncertainty
     from schemesim.study.tree import Narrow, Tree, explore
+    from schemesim.study.variants import study_variants
     from schemesim.study.weak_points import minimal_sets, single_points
 
 __version__ = "0.1.0"
@@ -174,9 +181,16 @@ _HOMES = {
     "schemesim.study.locations": "iter_locations study_locations",
     "schemesim.study.comparison": "compare",
     "schemesim.study.intervals": "clopper_pearson wilson",
+    "schemesim.study.money": "CostRule Costs Money Values",
+    "schemesim.study.edits": "Edit Recipe",
+    "schemesim.study.risk": "Explorer",
+    "schemesim.study.variants": "study_variants",
+    "schemesim.study.frontier": "frontier next_best",
+    "schemesim.study.sensitivity": "uncertainty",
     "schemesim.report.timeline": "replay timeline",
     "schemesim.report.pictures": "plot_timeline",
     "schemesim.scenario": "Scenario load_scenario save_scenario",
+    "schemesim.scenario.deciding": "decide",
 }
 
 __all__ = [
@@ -190,6 +204,8 @@ __all__ = [
     "Component",
     "ComponentKind",
     "Contact",
+    "CostRule",
+    "Costs",
     "CtPlacement",
     "Current",
     "DelayTimes",
@@ -197,6 +213,8 @@ __all__ = [
     "DeviceKind",
     "Dispatch",
     "DrawnAnswers",
+    "Edit",
+    "Explorer",
     "External",
     "FailureData",
     "FailureMode",
@@ -211,6 +229,7 @@ __all__ = [
     "LocalBackup",
     "Location",
     "LogicalSensing",
+    "Money",
     "Narrow",
     "NoFault",
     "Not",
@@ -223,6 +242,7 @@ __all__ = [
     "ProtectionSet",
     "Reach",
     "Reaches",
+    "Recipe",
     "Role",
     "Run",
     "RunError",
@@ -239,6 +259,7 @@ __all__ = [
     "Terminal",
     "Timer",
     "Tree",
+    "Values",
     "VoltageTransformer",
     "bind",
     "breaker_and_a_half",
@@ -250,6 +271,7 @@ __all__ = [
     "compare",
     "compile_scheme",
     "coverage_audit",
+    "decide",
     "double_bus",
     "dress",
     "duplicate_chain",
@@ -258,6 +280,7 @@ __all__ = [
     "explore",
     "feeder",
     "fixed_ms",
+    "frontier",
     "generator",
     "importance",
     "infeed",
@@ -268,6 +291,7 @@ __all__ = [
     "load_scenario",
     "merged_elements",
     "minimal_sets",
+    "next_best",
     "outputs_of",
     "p_by_main",
     "p_by_role",
@@ -289,8 +313,10 @@ __all__ = [
     "study_dependability",
     "study_locations",
     "study_no_fault",
+    "study_variants",
     "timeline",
     "transformer",
+    "uncertainty",
     "wilson",
     "zone_graph",
 ]

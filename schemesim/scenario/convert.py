@@ -29,7 +29,7 @@ def scenario_of(notes: Notes, said: ScenarioIn) -> Scenario | None:
         return None
     frequencies = frequencies_of(notes, plant, said.fault_frequencies, settings.positions)
     runs = [run_of(notes, plant, run, ("runs", i)) for i, run in enumerate(said.runs)]
-    money = money_of(notes, said.money, plant, policies)
+    money = money_of(notes, said.money, plant, policies, settings.restore_h)
     if notes.problems:
         return None
     return Scenario(

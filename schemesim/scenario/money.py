@@ -63,8 +63,13 @@ class MoneyIn(Part):
     locations: Annotated[list[Text], Field(max_length=1000)] = []
 
 
-def money_of(notes: Notes, said: MoneyIn, plant: Plant, policies: Mapping[str, Policy]) -> Money | None:
-    """The model of the section, or None where it is wrong or not there."""
+def money_of(
+    notes: Notes, said: MoneyIn, plant: Plant, policies: Mapping[str, Policy], restore_h: float
+) -> Money | None:
+    """The model of the section, or None where it is wrong or not there.
+
+    ``restore_h`` is that of the study, where the section states no ``restoration_h``.
+    """
     from schemesim.scenario.model import location  # the model holds money itself
 
     if not said.model_fields_set:
@@ -93,7 +98,7 @@ def money_of(notes: Notes, said: MoneyIn, plant: Plant, policies: Mapping[str, P
         for i, item in enumerate(said.costs)
     ]
     part: Part = said.values
-    given = {name: getattr(part, name) for name in part.model_fields_set}
+    given = {"restoration_h": restore_h} | {name: getattr(part, name) for name in part.model_fields_set}
     values = _made(notes, (TOP, "values"), lambda: Values(**given))
     if len(notes.problems) > before or values is None:
         return None
