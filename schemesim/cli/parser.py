@@ -7,8 +7,10 @@ import os
 import sys
 from collections.abc import Sequence
 
+from schemesim.cli.audit import add_audit
 from schemesim.cli.decide import add_decide
 from schemesim.cli.output import BAD_INPUT, CANNOT_GO_ON, DONE, INTERRUPTED, NOTE, check_place
+from schemesim.cli.register import add_register
 from schemesim.errors import InputError, SchemesimError
 
 _EXAMPLES = """examples:
@@ -62,6 +64,8 @@ def parser() -> argparse.ArgumentParser:
     inject.add_argument("--order", metavar="1|2", default="1", help="1: every single failure; 2: every pair too")
     inject.add_argument("--all", action="store_true", help="failures that change nothing too")
     add_decide(commands, common)
+    add_register(commands, common)
+    add_audit(commands, common)
     return top
 
 
@@ -96,12 +100,15 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 
 def _run(options: argparse.Namespace) -> int:
+    from schemesim.cli.audit import audit
     from schemesim.cli.commands import check, inject, show  # heavy: not needed to tell of bad arguments
     from schemesim.cli.decide import decide
+    from schemesim.cli.register import outages, register
     from schemesim.cli.study import study
     from schemesim.scenario import load_scenario
 
     if options.csv is not None:
         check_place(options.csv, options.file)
-    command = {"check": check, "show": show, "inject": inject, "study": study, "decide": decide}[options.command]
+    command = {"check": check, "show": show, "inject": inject, "study": study, "decide": decide,
+               "register": register, "outages": outages, "audit": audit}[options.command]  # fmt: skip
     return command(load_scenario(options.file), options)

@@ -26,6 +26,14 @@ SET, DC, CHANNEL, BREAKER = "set", "dc", "channel", "breaker"
 KINDS = (SET, DC, CHANNEL, BREAKER)
 """What can be out for work."""
 
+PER_YR = (
+    "uncleared_per_yr",
+    "late_or_uncleared_per_yr",
+    "added_uncleared_per_yr",
+    "added_late_or_uncleared_per_yr",
+)
+"""Yearly figures of an outage."""
+
 
 @dataclass(frozen=True, slots=True)
 class Outage:
@@ -82,9 +90,11 @@ class OutageResult:
     new_points : tuple of (Location, SinglePoint)
         Single failures that spoil a location now, or spoil it worse than with all in service.
     hours_per_yr : float or None
+    uncleared_per_yr, late_or_uncleared_per_yr : Bracket or None
+        Faults per year that fall in the hours out and are not cleared, or late or not cleared; None without hours
+        or fault frequencies.
     added_uncleared_per_yr, added_late_or_uncleared_per_yr : Bracket or None
-        What the hours out add to the faults per year not cleared, and late or not cleared, against the same
-        hours with all in service; None without hours or fault frequencies.
+        How many more these are than in the same hours with all in service.
     """
 
     outage: Outage
@@ -93,6 +103,8 @@ class OutageResult:
     worse: tuple[Worse, ...]
     new_points: tuple[tuple[Location, SinglePoint], ...]
     hours_per_yr: float | None
+    uncleared_per_yr: Bracket | None
+    late_or_uncleared_per_yr: Bracket | None
     added_uncleared_per_yr: Bracket | None
     added_late_or_uncleared_per_yr: Bracket | None
 
@@ -116,7 +128,7 @@ class OutageResult:
             "new_single_points_not_cleared": len({p.failure for _, p in self.new_points if p.not_cleared}),
             "hours_per_yr": self.hours_per_yr,
         }
-        for name in ("added_uncleared_per_yr", "added_late_or_uncleared_per_yr"):
+        for name in PER_YR:
             b: Bracket | None = getattr(self, name)
             row[f"{name}_low"], row[f"{name}_high"] = (None, None) if b is None else (float(b.low), float(b.high))
         return row
@@ -152,6 +164,16 @@ class OutageStudy:
                 return r
         known = [r.outage.name for r in self.results]
         raise reject("outage", name, "an outage studied", tip=nearest(name, known))
+
+    @property
+    def uncleared_per_yr(self) -> Bracket | None:
+        """Faults per year not cleared, in the hours out of all outages; None without hours or frequencies."""
+        return _sum(r.uncleared_per_yr for r in self.results)
+
+    @property
+    def late_or_uncleared_per_yr(self) -> Bracket | None:
+        """Faults per year late or not cleared, in the hours out of all outages."""
+        return _sum(r.late_or_uncleared_per_yr for r in self.results)
 
     @property
     def added_uncleared_per_yr(self) -> Bracket | None:
@@ -193,7 +215,7 @@ class OutageStudy:
         more = "" if self.complete else ", interrupted"
         return (
             f"OutageStudy({len(self.results)} outages at {len(self.base.results)} locations{more}; alone {bad} leave a "
-            f"fault uncleared, {late} late; added uncleared faults per year: {self.added_uncleared_per_yr})"
+            f"fault uncleared, {late} late; uncleared faults per year, in the hours out: {self.uncleared_per_yr})"
         )
 
     def _repr_html_(self) -> str:

@@ -198,8 +198,12 @@ def _result(
     worse: list[Worse] = []
     points: list[tuple[Location, SinglePoint]] = []
     uncleared, late = exactly(0), exactly(0)
+    then_uncleared, then_late = exactly(0), exactly(0)
     for now in study.results:
         was = before[now.location]
+        rate = exactly((study.frequencies or {}).get(now.location, 0.0))
+        then_uncleared = then_uncleared + rate * _if_fed(now, now.p_not_cleared)
+        then_late = then_late + rate * _if_fed(now, now.p_late_or_uncleared)
         if now is was:
             continue
         spoiled = _worse(now, was, limits[now.location]) if now.fed else None
@@ -208,7 +212,6 @@ def _result(
         known = {p.failure: _SEVERITY[p.kind] for p in was.single_points}
         found = (p for p in now.single_points if _SEVERITY[p.kind] > known.get(p.failure, Effect.NONE))
         points += [(now.location, p) for p in found]
-        rate = exactly((study.frequencies or {}).get(now.location, 0.0))
         uncleared = uncleared + rate * (_if_fed(now, now.p_not_cleared) - _if_fed(was, was.p_not_cleared))
         late = late + rate * (_if_fed(now, now.p_late_or_uncleared) - _if_fed(was, was.p_late_or_uncleared))
     share = None if hours is None or study.frequencies is None else exactly(Fraction(hours) / HOURS_PER_YR)
@@ -219,6 +222,8 @@ def _result(
         worse=tuple(worse),
         new_points=tuple(points),
         hours_per_yr=hours,
+        uncleared_per_yr=None if share is None else share * then_uncleared,
+        late_or_uncleared_per_yr=None if share is None else share * then_late,
         added_uncleared_per_yr=None if share is None else share * uncleared,
         added_late_or_uncleared_per_yr=None if share is None else share * late,
     )

@@ -1,0 +1,123 @@
+"""A scenario's single points of failure, and what becomes critical with one item out for work: one call each."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Mapping
+from concurrent.futures import Executor
+
+from schemesim.engine.sensing import LogicalSensing
+from schemesim.errors import nearest, reject
+from schemesim.plant.model import Location
+from schemesim.scenario.model import Scenario
+from schemesim.study.footnote import Monitored
+from schemesim.study.outage_results import KINDS, Outage, OutageStudy
+from schemesim.study.outages import planned_outages, study_outages
+from schemesim.study.register import Register, register
+
+Progress = Callable[[int, int], None]
+
+
+def register_scenario(
+    scenario: Scenario,
+    policy: str | None = None,
+    *,
+    locations: Iterable[Location] | None = None,
+    monitored: Iterable[Monitored] = (),
+    pairs: bool = False,
+    executor: Executor | None = None,
+    progress: Progress | None = None,
+) -> Register:
+    """The register of single points of failure of a scenario, each location against the limit of its voltage.
+
+    Parameters
+    ----------
+    scenario : Scenario
+    policy : str or None
+        The policy in use by default.
+    locations : iterable of Location or None
+        By default every location of the scenario.
+    monitored, pairs, executor, progress
+        See :func:`~schemesim.study.register.register`.
+    """
+    chosen = _chosen(scenario, locations)
+    return register(
+        scenario.program(policy),
+        LogicalSensing(),
+        chosen,
+        limit_us={at: scenario.limit_us(at) for at in chosen},
+        monitored=monitored,
+        pairs=pairs,
+        dispatch=scenario.study.dispatch,
+        horizon_us=scenario.study.horizon_us,
+        executor=executor,
+        progress=progress,
+    )
+
+
+def outages_scenario(
+    scenario: Scenario,
+    policy: str | None = None,
+    *,
+    locations: Iterable[Location] | None = None,
+    kinds: Iterable[str] = KINDS,
+    names: Iterable[str] | None = None,
+    hours_per_yr: Mapping[str, float] | None = None,
+    epsilon: float = 1e-3,
+    executor: Executor | None = None,
+    progress: Progress | None = None,
+) -> OutageStudy:
+    """A scenario with each set, DC domain, channel or breaker out for work.
+
+    Parameters
+    ----------
+    scenario : Scenario
+    policy : str or None
+        The policy in use by default.
+    locations : iterable of Location or None
+        By default every location of the scenario.
+    kinds : iterable of str
+        Of ``"set"``, ``"dc"``, ``"channel"``, ``"breaker"``.
+    names : iterable of str or None
+        Only these outages, as named by :func:`~schemesim.study.outages.planned_outages`.
+    hours_per_yr, epsilon, executor, progress
+        See :func:`~schemesim.study.outages.study_outages`.
+
+    Raises
+    ------
+    InputError
+        For an outage that is none, and as that function does.
+    """
+    chosen = _chosen(scenario, locations)
+    program = scenario.program(policy)
+    outages: tuple[Outage, ...] = planned_outages(program, kinds)
+    if names is not None:
+        by_name = {o.name: o for o in outages}
+        wanted = list(dict.fromkeys(names))
+        for name in wanted:
+            if name not in by_name:
+                raise reject("outage", name, "an item that can be taken out", tip=nearest(name, by_name))
+        outages = tuple(by_name[name] for name in wanted)
+    rates = {at: scenario.frequencies.get(at, 0.0) for at in chosen}
+    return study_outages(
+        program,
+        LogicalSensing(),
+        chosen,
+        limit_us={at: scenario.limit_us(at) for at in chosen},
+        outages=outages,
+        hours_per_yr=hours_per_yr,
+        frequencies=rates if any(rates.values()) else None,
+        epsilon=epsilon,
+        dispatch=scenario.study.dispatch,
+        horizon_us=scenario.study.horizon_us,
+        executor=executor,
+        progress=progress,
+    )
+
+
+def _chosen(scenario: Scenario, locations: Iterable[Location] | None) -> list[Location]:
+    chosen = list(dict.fromkeys(scenario.frequencies if locations is None else locations))
+    known = scenario.plant.section
+    for at in chosen:
+        if at.section not in known:
+            raise reject("section", at.section, "a section", tip=nearest(at.section, known))
+    return chosen
