@@ -23,6 +23,7 @@ def add_decide(commands: Any, common: argparse.ArgumentParser) -> None:
     decide.add_argument("--epsilon", metavar="MASS", default="1e-3", help="left unexplored at each location (1e-3)")
     decide.add_argument("--location", metavar="SECTION[@POS]", action="append", help="stands for others of its kind")
     decide.add_argument("--everywhere", action="store_true", help="every location, whatever the scenario says")
+    decide.add_argument("--faults-only", action="store_true", help="without trips with no fault, which is quicker")
     decide.add_argument("--trials", metavar="N", default="0", help="trials with common random numbers besides")
     decide.add_argument("--samples", metavar="N", default="200", help="sets of uncertain failure data (200)")
     decide.add_argument("--steps", metavar="N", help="at most so many additions")
@@ -47,6 +48,7 @@ def decide(scenario: Scenario, options: argparse.Namespace) -> int:
         start=options.start,
         locations=where,
         epsilon=number_of(options.epsilon, "--epsilon", 1e-12, 0.5),
+        no_fault=not options.faults_only,
         trials=whole_of(options.trials, "--trials", 0, 100_000_000),
         samples=whole_of(options.samples, "--samples", 2, 100_000),
         most_steps=None if options.steps is None else whole_of(options.steps, "--steps", 0, 1000),

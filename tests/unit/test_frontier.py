@@ -285,10 +285,12 @@ def test_the_command(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None
     file = tmp_path / "two.yaml"
     file.write_text(PLANT + PRICES + REST, encoding="utf-8")
     csv = tmp_path / "rows.csv"
-    assert main(["decide", str(file), "--quiet", "--json", "--samples", "5", "--csv", str(csv)]) == 0
+    assert main(["decide", str(file), "--quiet", "--json", "--samples", "5", "--csv", str(csv), "--faults-only"]) == 0
     data = json.loads(capsys.readouterr().out)
     assert (data["kind"], data["unit"]) == ("decide", "EUR")
     assert {r["variant"] for r in data["frontier"]} >= {"one", "two"}
+    needless = [r for r in data["variants"] if r["measure"] == "no_fault_trips_per_yr"]
+    assert [(r["low"], r["high"]) for r in needless] == [(0, 0), (0, 0)]
     assert len(csv.read_text(encoding="utf-8").splitlines()) == len(data["variants"]) + 1
     assert main(["decide", str(file), "--samples", "5", "--steps", "0", "--trials", "20", "--policy", "two"]) == 0
     text = capsys.readouterr()
