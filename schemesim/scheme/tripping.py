@@ -73,7 +73,8 @@ def transfer_trip(b: SchemeBuilder, signal: str, station: str, where: str, path:
     unit = b.component(f"{first}-{second}/channel {path.channel}", ComponentKind.CHANNEL, first)
     here, there = b.dc(station, path.dc), b.dc(where, path.dc)
     way = ChannelPath(unit, here, there, policy.times.channel, policy.times.channel_late_by)
-    name = f"{signal} to {where} over channel {path.channel}"
+    on_dc = "" if path.dc == path.channel else f" on DC {path.dc}"
+    name = f"{signal} to {where} over channel {path.channel}{on_dc}"
     receipt = fn.received(b, f"{name} received", [(signal, ())], way)
     mark = Contact("transfer trip", Role.MAIN, beyond=Role.MAIN, station=where, element=where)
     return b.add(Gate(name=name, inputs=(receipt,), unless=(Ask(there, FailureMode.LOST),), contact=mark))

@@ -255,6 +255,16 @@ def test_a_transformer_without_a_breaker_to_its_line_intertrips() -> None:
         assert opened(left) == {"Alder.L1.CB": 1_070_000, "Birch.T1.CB": 80_000}
 
 
+def test_sets_on_two_dc_domains_may_share_lockout_and_channel_of_an_intertrip() -> None:
+    # Either DC domain lost leaves the other set's trip to Birch; its own wire over the channel hangs on its domain.
+    plant = unit_of_line_and_transformer(ct=True)
+    sets = tuple(ProtectionSet(label=x, dc=x, coil=x, line=LineScheme.DISTANCE) for x in ("1", "2"))
+    policy = single_set(sets=sets, coil_dc=(("1", "1"), ("2", "2")), votes=1, lockout=False)
+    for failed in ((), ("Birch/DC 1: lost",), ("Birch/DC 2: lost",)):
+        assert opened(play(plant, policy, "T1", *failed)) == {"Alder.L1.CB": 85_000, "Birch.T1.CB": 70_000}
+    assert opened(play(plant, replace(policy, lockout=True), "T1"))["Alder.L1.CB"] == 95_000
+
+
 def test_a_line_joined_to_its_transformer_is_one_element() -> None:
     plant = unit_of_line_and_transformer(ct=False)
     for place in ("L1", "T1"):
