@@ -68,11 +68,13 @@ if TYPE_CHECKING:
     from schemesim.report.timeline import replay, timeline
     from schemesim.scenario import Scenario, load_scenario, save_scenario
     from schemesim.scenario.deciding import decide
+    from schemesim.scenario.weak import outages_scenario, register_scenario
     from schemesim.scheme.build import SchemeBuilder
     from schemesim.scheme.conditions import Current, External, InZone, Reach
     from schemesim.scheme.delays import Fixed, fixed_ms
     from schemesim.scheme.dress import dress
     from schemesim.scheme.failure_data import FailureData, Override
+    from schemesim.scheme.independence import independence
     from schemesim.scheme.model import (
         Ask,
         Breaker,
@@ -101,10 +103,13 @@ if TYPE_CHECKING:
         duplicate_relay,
         single_set,
     )
+    from schemesim.scheme.trip_comparison import compare_trip_matrix
+    from schemesim.scheme.trip_matrix import trip_matrix
     from schemesim.study.brackets import Bracket
     from schemesim.study.comparison import compare
     from schemesim.study.dependability import outputs_of, study_dependability
     from schemesim.study.edits import Edit, Recipe
+    from schemesim.study.footnote import Monitored
     from schemesim.study.frontier import frontier, next_best
     from schemesim.study.importance import importance
     from schemesim.study.injection import inject
@@ -124,7 +129,9 @@ if TYPE_CHECKING:
     from schemesim.study.money import CostRule, Costs, Money, Values
     from schemesim.study.montecarlo import simulate
     from schemesim.study.no_fault import study_no_fault
+    from schemesim.study.outages import planned_outages, study_outages
     from schemesim.study.races import races
+    from schemesim.study.register import register
     from schemesim.study.risk import Explorer
     from schemesim.study.sensitivity import uncertainty
     from schemesim.study.tree import Narrow, Tree, explore
@@ -191,6 +198,13 @@ _HOMES = {
     "schemesim.report.pictures": "plot_timeline",
     "schemesim.scenario": "Scenario load_scenario save_scenario",
     "schemesim.scenario.deciding": "decide",
+    "schemesim.scheme.trip_matrix": "trip_matrix",
+    "schemesim.scheme.trip_comparison": "compare_trip_matrix",
+    "schemesim.scheme.independence": "independence",
+    "schemesim.study.register": "register",
+    "schemesim.study.footnote": "Monitored",
+    "schemesim.study.outages": "planned_outages study_outages",
+    "schemesim.scenario.weak": "outages_scenario register_scenario",
 }
 
 __all__ = [
@@ -230,6 +244,7 @@ __all__ = [
     "Location",
     "LogicalSensing",
     "Money",
+    "Monitored",
     "Narrow",
     "NoFault",
     "Not",
@@ -269,6 +284,7 @@ __all__ = [
     "clearing_time",
     "clopper_pearson",
     "compare",
+    "compare_trip_matrix",
     "compile_scheme",
     "coverage_audit",
     "decide",
@@ -283,6 +299,7 @@ __all__ = [
     "frontier",
     "generator",
     "importance",
+    "independence",
     "infeed",
     "inject",
     "isolation_zones",
@@ -292,15 +309,19 @@ __all__ = [
     "merged_elements",
     "minimal_sets",
     "next_best",
+    "outages_scenario",
     "outputs_of",
     "p_by_main",
     "p_by_role",
     "p_cleared",
     "p_selective",
     "p_within_limit",
+    "planned_outages",
     "plot_timeline",
     "protected_object",
     "races",
+    "register",
+    "register_scenario",
     "replay",
     "ring",
     "run_event",
@@ -313,9 +334,11 @@ __all__ = [
     "study_dependability",
     "study_locations",
     "study_no_fault",
+    "study_outages",
     "study_variants",
     "timeline",
     "transformer",
+    "trip_matrix",
     "uncertainty",
     "wilson",
     "zone_graph",

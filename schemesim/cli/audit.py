@@ -6,7 +6,7 @@ import argparse
 from typing import TYPE_CHECKING, Any
 
 from schemesim.cli.output import DONE, check_place, put, table_text, write_csv
-from schemesim.errors import reject
+from schemesim.errors import InputError, reject
 
 if TYPE_CHECKING:
     from schemesim.scenario import Scenario
@@ -34,7 +34,10 @@ def audit(scenario: Scenario, options: argparse.Namespace) -> int:
     from schemesim.scheme.trip_matrix import trip_matrix
 
     if options.matrix is not None:
-        check_place(options.matrix, options.file)
+        try:
+            check_place(options.matrix, options.file)
+        except InputError as error:
+            raise reject("--matrix", options.matrix, error.problems[0].expectation) from error
         if options.csv is not None and options.csv == options.matrix:
             raise reject("--matrix", options.matrix, "another file than --csv")
     scheme = scenario.scheme(options.policy)

@@ -34,7 +34,8 @@ _SEVERITY = {"more breakers": Effect.MORE_BREAKERS, "late": Effect.LATE, "not cl
 def planned_outages(program: Program, kinds: Iterable[str] = KINDS) -> tuple[Outage, ...]:
     """Everything of these kinds that can be taken out for work.
 
-    Sets are all chains of trip outputs: main sets, local back-up, breaker failure. Breakers
+    Sets are all chains of trip outputs: main sets, local back-up, breaker failure; a relay whose outputs name no
+    element or chain is one by itself. Breakers
     that are open anyway are left out, and so is what is out of service already.
 
     Raises
@@ -50,11 +51,12 @@ def planned_outages(program: Program, kinds: Iterable[str] = KINDS) -> tuple[Out
     scheme = program.scheme
     out: list[Outage] = []
     if SET in chosen:
-        sets: dict[tuple[str, str, str], set[str]] = {}
+        sets: dict[str, set[str]] = {}
         for c in scheme.contacts.values():
             if c.relay:
-                sets.setdefault((c.station, c.element, c.chain), set()).add(c.relay)
-        out += [Outage(SET, set_name(*key), frozenset(relays)) for key, relays in sorted(sets.items())]
+                name = set_name(c.station, c.element, c.chain) if c.element and c.chain else c.relay
+                sets.setdefault(name, set()).add(c.relay)
+        out += [Outage(SET, name, frozenset(relays)) for name, relays in sorted(sets.items())]
     for kind, component_kind in ((DC, ComponentKind.DC), (CHANNEL, ComponentKind.CHANNEL)):
         if kind in chosen:
             names = (c.name for c in scheme.components if c.kind is component_kind)
