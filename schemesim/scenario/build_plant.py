@@ -5,6 +5,7 @@ from __future__ import annotations
 from schemesim.errors import InputError, Problem
 from schemesim.plant import layouts
 from schemesim.plant.model import Device, Dispatch, Plant, PlantBuilder, Section, Source, VoltageTransformer
+from schemesim.plant.wiring import doubtful_wiring
 from schemesim.scenario.locate import Path
 from schemesim.scenario.notes import Notes
 from schemesim.scenario.schema import Layout, PlantIn, StationIn
@@ -48,10 +49,15 @@ def plant_of(notes: Notes, said: PlantIn) -> Plant | None:
     if len(notes.problems) > before:
         return None
     try:
-        return b.build()
+        plant = b.build()
     except InputError as error:
         notes.take(error)
-    return None
+        return None
+    slips = doubtful_wiring(plant)
+    if slips:
+        notes.take(InputError(slips))
+        return None
+    return plant
 
 
 def station_of(notes: Notes, b: PlantBuilder, said: StationIn, path: Path) -> None:

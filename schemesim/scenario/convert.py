@@ -50,6 +50,20 @@ def scenario_of(notes: Notes, said: ScenarioIn) -> Scenario | None:
     )
 
 
+def parts_of(notes: Notes, said: ScenarioIn, bad: frozenset[str]) -> None:
+    """Note the mistakes of the sections that stand on their own and are not in ``bad``."""
+    if "plant" not in bad:
+        plant_of(notes, said.plant)
+    if not bad & {"policies", "policy", "exceptions", "runs"}:
+        policies_of(notes, said)
+    if "failure_data" not in bad:
+        failure_data_of(notes, said.failure_data)
+    if "study" not in bad:
+        settings_of(notes, said.study)
+    if "limits" not in bad:
+        limits_of(notes, said.limits)
+
+
 def policies_of(notes: Notes, said: ScenarioIn) -> dict[str, Policy]:
     """All policies that are defined or named, with the base of each applied."""
     apply = Apply(notes.tree, said.frequency_hz or None)

@@ -8,7 +8,7 @@ from pathlib import Path as FilePath
 from pydantic import ValidationError
 
 from schemesim.errors import InputError, Problem
-from schemesim.scenario.convert import scenario_of
+from schemesim.scenario.convert import parts_of, scenario_of
 from schemesim.scenario.document import document_of
 from schemesim.scenario.dressed import check_dressed
 from schemesim.scenario.imports import import_tables
@@ -133,10 +133,30 @@ def _read(tree: Tree, folder: FilePath | None) -> tuple[Notes, Scenario | None]:
         problems.extend(problems_of(error, tree, ScenarioIn))
     notes = Notes(tree, names)
     notes.problems = problems
+    if problems:
+        _look_further(notes)
     if said is None or problems:
         return notes, None
     scenario = scenario_of(notes, said)
     return notes, None if scenario is None else replace(scenario, document=tree.data)
+
+
+def _look_further(notes: Notes) -> None:
+    """Note what else is wrong in the sections of a file that fit the schema, though others do not."""
+    data = notes.tree.data
+    bad = {_section(p.path) for p in notes.problems}
+    if not isinstance(data, dict) or "schemesim" in bad or "" in bad:
+        return
+    good = {key: value for key, value in data.items() if key not in bad}
+    try:
+        said = ScenarioIn.model_validate({"plant": {}, **good})
+    except ValidationError:
+        return
+    parts_of(notes, said, frozenset(bad | (set() if "plant" in good else {"plant"})))
+
+
+def _section(path: str) -> str:
+    return path.replace("[", ".").partition(".")[0]
 
 
 def _once(problems: list[Problem]) -> list[Problem]:

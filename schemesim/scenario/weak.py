@@ -1,4 +1,18 @@
-"""A scenario's single points of failure, and what becomes critical with one item out for work: one call each."""
+"""A scenario's single points of failure, and what becomes critical with one item out for work: one call each.
+
+What they say of the demo, in plain words. With a single set every group of the footnote is filled: a relay,
+a channel, a DC supply, a trip coil or a lockout relay alone makes some fault late or leaves it. A second
+relay in every place ("relay twice") empties the first group and no other: both relays hang on one core, supply, coil and
+channel, so the register stays nearly as long. A second chain throughout ("full") empties all four groups; what is
+left stands apart: breakers (one beside every fault, however many relays), relays that trip beyond their zone, and the
+common causes that the audit finds shared. Taking the second battery away again ("one battery") brings back one
+group, the DC supplies, and with it the worst entries of all: with no DC at Birch or Alder nothing there clears a fault.
+
+One item out turns a duplicate into a single set for as long as the work takes. With the first DC supply of Alder
+out, a fault on L1 is still cleared in time, but hangs on the second supply, relay, core, winding and coil; as the
+breaker-failure relays hang on the first supply, a stuck breaker there is not backed up at all. With only the first
+set of L1 out at Alder the stuck breaker is.
+"""
 
 from __future__ import annotations
 

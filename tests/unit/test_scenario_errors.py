@@ -35,6 +35,7 @@ BAD: tuple[tuple[str, str, int | None, str, str, int], ...] = (
     ("empty", "", 1, "", "a scenario", 1),
     ("empty_section", "", 17, "runs", "a list (leave the key out", 1),
     ("epsilon_zero", "", 18, "study.epsilon", "a number from 1e-12 to 0.5", 1),
+    ("feeder_joined_to_nothing", "", 12, "plant.feeders[1]", "a bay that leads to it", 1),
     ("fraction_for_whole_number", "", 18, "study.seed", "a whole number", 1),
     ("frequency_negative", "", 18, "fault_frequencies.elements.L1", "a number from 0", 1),
     ("import_bad_cell", "cell.csv", 3, "[1].length", "write 30 alone", 1),
@@ -51,6 +52,7 @@ BAD: tuple[tuple[str, str, int | None, str, str, int], ...] = (
     ("key_of_another_layout", "", 9, "plant.stations[1].coupler_closed", "no such key for the layout single_bus", 1),
     ("later_version", "", 1, "schemesim", "the version of the file format", 1),
     ("limit_in_seconds", "", 18, "limits.limit_ms", "0.15 s is 150 ms", 1),
+    ("line_ends_at_one_place", "", 10, "plant.lines[0]", "one at 0, one at 1", 1),
     ("line_without_length", "", 10, "plant.lines[0].length", "a number over 0", 1),
     ("list_for_mapping", "", 14, "policies", "a mapping of keys to values", 1),
     ("long_number", "", 10, "plant.lines[0].length", "at most 18 digits", 1),
@@ -120,6 +122,7 @@ BAD: tuple[tuple[str, str, int | None, str, str, int], ...] = (
     ("unknown_policy", "", 16, "policy", "did you mean 'plain'?", 1),
     ("unknown_section", "", 6, "plant.stations[0].bays[0]", "the name of a section", 1),
     ("votes_over_sets", "", 16, "policies.plain.votes", "a whole number from 1 to 1", 1),
+    ("voltages_that_differ", "", 7, "plant.stations[0].bays[1]", "one voltage on both its sides", 1),
 )
 
 SEVERAL = (
@@ -157,7 +160,7 @@ def test_all_mistakes_of_a_file_come_at_once() -> None:
 
 
 def test_no_bad_file_is_left_out_of_the_table() -> None:
-    assert {p.stem for p in BAD_FILES.glob("*.yaml")} == {row[0] for row in BAD} | {"several_at_once"}
+    assert {p.stem for p in BAD_FILES.glob("*.yaml")} == {row[0] for row in BAD} | {"several_at_once", "several_kinds"}
 
 
 def test_messages_speak_plainly() -> None:
@@ -182,3 +185,14 @@ def test_what_is_no_file_is_refused(tmp_path: Path, kind: str) -> None:
     path = tmp_path if kind == "folder" else tmp_path / "nothing.yaml"
     with pytest.raises(InputError, match="a directory" if kind == "folder" else "no such file"):
         load_scenario(path)
+
+
+def test_mistakes_of_several_kinds_come_together() -> None:
+    """A name, a time in seconds, probabilities that sum over 1 and a negative limit, each in a section of its own."""
+    found = [(p.line, p.path) for p in problems_in("several_kinds")]
+    assert found == [
+        (9, "plant.stations[1].bays[1]"),
+        (16, "policies.plain.reaches.zone_2_delay_ms"),
+        (20, "failure_data.modes.relay"),
+        (22, "limits.limit_ms"),
+    ]
