@@ -31,13 +31,24 @@ decide
     ``unit`` of money; ``locations`` with their ``faults_per_yr``, ``left_out_per_yr``; ``variants`` (rows as in the
     CSV), ``costs`` a year by policy and kind, ``frontier``, ``next_best``, ``tornado``, ``uncertainty`` (rows),
     ``order`` of the additions made, ``not_possible`` ones and why.
+register
+    ``policy``, ``complete``, ``locations`` (count); ``entries``: for each failure or pair its ``group``, whether it is
+    ``exempt`` and ``why``, the worst over its locations, and ``where`` (rows); ``anyway``: locations spoiled
+    with no failure at all.
+outages
+    ``policy``, ``complete``, ``locations`` (count); ``outages`` (rows as in the CSV); ``critical``: locations
+    spoiled by an outage alone (``failure`` empty) or by one failure more; ``uncleared_per_yr``,
+    ``late_or_uncleared_per_yr`` and both ``added_…`` (``low``, ``high``; null without hours).
+audit
+    ``policy``; ``elements``, for each its ``sets``, ``fully_duplicated`` and ``shared_kinds``; ``shared`` (rows as in
+    the CSV); ``trip_matrix``: one row for each way; ``differences`` and the marks ``compared`` (null without a table).
 
 CSV
 ---
 With ``--csv FILE`` the table of the command is written, whole or not at all: the rows of the
 sequence (show), one row for each policy and location (study), one for each combination of
-failures (inject), one for each measure and variant (decide), one for each
-policy (check). The first row names the columns, as in the JSON.
+failures (inject), one for each measure and variant (decide), one for each single point or
+pair and location (register), each item out (outages), each item shared (audit), one for each policy (check). The first row names the columns, as in the JSON.
 """
 
 from schemesim.cli.parser import main

@@ -2,7 +2,7 @@
 
 What they say of the demo, in plain words. With a single set every group of the footnote is filled: a relay,
 a channel, a DC supply, a trip coil or a lockout relay alone makes some fault late or leaves it. A second
-relay in every place ("relay twice") empties the first group and no other: both relays hang on one core, supply, coil and
+relay in every place ("relay twice") empties the first group and no other: both hang on one core, supply, coil and
 channel, so the register stays nearly as long. A second chain throughout ("full") empties all four groups; what is
 left stands apart: breakers (one beside every fault, however many relays), relays that trip beyond their zone, and the
 common causes that the audit finds shared. Taking the second battery away again ("one battery") brings back one

@@ -12,7 +12,8 @@ c. a single station DC supply (exempt: one that is monitored and reported for bo
 d. a single control circuit, auxiliary and lockout relays included, from the DC supply
    through the trip coil (the trip coil may be left out if it is monitored and reported).
 
-Failures to operate belong there, late operation included. Breakers, CT cores, VT windings
+What is comparable is judged by the limit: an item is in the register only where its failure
+leaves a fault uncleared, late, or with more breakers opened. Failures to operate belong there, late operation included. Breakers, CT cores, VT windings
 and common causes do not, nor does unwanted operation: they are listed apart.
 """
 

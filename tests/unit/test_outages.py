@@ -215,3 +215,19 @@ def test_bad_names_are_refused(small: Scenario) -> None:
         outages_scenario(small, names=["Birch/DC1"])
     with pytest.raises(InputError, match="an outage studied"):
         of_feeders(outages=[Outage("dc", "DC", frozenset({"DC"}))]).of("F1 set 1")
+
+
+def test_what_is_said_of_the_demo() -> None:
+    """With one DC supply of Alder out L1 hangs on the other, and a stuck breaker is not backed up."""
+    demo = load_scenario(SMALL.parents[2] / "scenarios" / "demo.yaml")
+    names = ["Alder/DC 1", "Alder/L1 set 1"]
+    found = outages_scenario(demo, "full", locations=[Location("L1")], names=names)
+    points = {r.outage.name: {p.failure: p.kind for _, p in r.new_points} for r in found.results}
+    assert [r.worst for r in found.results] == [Effect.NONE, Effect.NONE]
+    supply = points["Alder/DC 1"]
+    assert {supply["Alder/DC 2: lost"], supply["Alder.L1.CB/coil 2: failure_to_operate"]} == {"not cleared"}
+    assert {supply[f"Alder.L1.{x}"] for x in ("CTb/core 2: open", "VT/winding 2: lost")} == {"late"}
+    assert supply["Alder/L1/relay 2: failure_to_operate"] == "late"
+    assert supply["Alder.L1.CB: does_not_open"] == "not cleared"
+    assert "Alder.L1.CB: does_not_open" not in points["Alder/L1 set 1"]
+    assert points["Alder/L1 set 1"]["Alder/L1/relay 2: failure_to_operate"] == "late"

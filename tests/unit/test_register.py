@@ -221,3 +221,22 @@ def test_an_interrupt_keeps_what_is_finished() -> None:
     found = of_feeders(progress=stop)
     assert (found.complete, found.locations) == (False, 1)
     assert IN not in {e.name for e in found.singles}  # of F2, which was not reached
+
+
+@pytest.mark.parametrize(
+    ("policy", "filled"),
+    [("single", "abcd"), ("relay twice", "bcd"), ("one battery", "c"), ("full", "")],
+)
+def test_what_is_said_of_the_demo(policy: str, filled: str) -> None:
+    """Each duplicate empties groups of the footnote; what is left stands apart."""
+    demo = load_scenario(SMALL.parents[2] / "scenarios" / "demo.yaml")
+    at = [Location("L1"), Location("L3", 0.05), Location("Alder.B1"), Location("Birch.B1")]
+    found = register_scenario(demo, policy, locations=at)
+    groups = [g for g in Group if g is not Group.APART]
+    assert "".join(g.value[0] for g in groups if found.group(g)) == filled
+    assert {"breaker", "unwanted operation"} <= {e.grouped[0].why for e in found.group(Group.APART)}
+    if policy == "one battery":
+        assert {e.worst for e in found.singles if e.name in ("Birch/DC 1: lost", "Alder/DC 1: lost")} == {
+            Effect.NOT_CLEARED
+        }
+        assert found.singles[0].name == "Birch/DC 1: lost"
