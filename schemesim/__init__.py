@@ -358,4 +358,4 @@ def __getattr__(name: str) -> object:
 
 def __dir__() -> list[str]:
     """Public names, for completion."""
-    return sorted([*globals(), *__all__])
+    return sorted({*globals(), *__all__})

@@ -56,7 +56,7 @@ class AtRest(NamedTuple):
     touched: frozenset[int]
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Case:
     """An event bound to a program. Indices are local to the case, in the program's order.
 
@@ -124,6 +124,9 @@ class Case:
     at_rest: list[AtRest] = field(default_factory=list)
     _topologies: dict[int, Topology] = field(default_factory=dict)
     _changes: dict[tuple[int, int], tuple[tuple[int, bool], ...]] = field(default_factory=dict)
+
+    def __repr__(self) -> str:
+        return f"Case({self.event}: {len(self.names)} blocks, {len(self.breakers)} breakers that may open)"
 
     @property
     def questions(self) -> tuple[Question, ...]:
@@ -222,6 +225,10 @@ def bind(
         if not isinstance(program.scheme.block.get(name), Gate):
             known = [b.name for b in program.scheme.blocks if isinstance(b, Gate)]
             raise reject("observed output", name, "the name of a gate", tip=nearest(name, known))
+    if not isinstance(event, Location | NoFault):
+        raise reject("event", event, "a Location or a NoFault")
+    if isinstance(event, Location) and not 0.0 <= event.position <= 1.0:
+        raise reject(f"position on {event.section!r}", event.position, "a number from 0 to 1")
     if isinstance(event, Location) and event.section not in program.plant.section:
         raise reject("section", event.section, "a section", tip=nearest(event.section, program.plant.section))
     if isinstance(event, NoFault) and event.component not in program.scheme.component:

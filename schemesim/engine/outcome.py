@@ -92,7 +92,7 @@ class Row:
     margin_us: int | None = None
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, repr=False)
 class Run:
     """A finished run: its outcome, the questions it asked, and its log if one was kept.
 
@@ -112,3 +112,9 @@ class Run:
     final_mask: int
     events: int
     log: tuple[Row, ...] = ()
+
+    def __repr__(self) -> str:
+        o = self.outcome
+        when = "" if o.t_clear_us is None else f" at {o.t_clear_us / 1000:g} ms"
+        counts = f"{len(o.openings)} openings, {len(self.asked)} questions, {len(self.log)} log rows"
+        return f"Run({o.status}{when}, {counts})"

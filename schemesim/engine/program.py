@@ -70,7 +70,7 @@ class Question:
     probability: Probability
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Program:
     """A scheme on a plant, compiled.
 
@@ -109,6 +109,9 @@ class Program:
     asks: Mapping[Ask, tuple[int, ...]]
     constant: Mapping[Ask, bool]
     free: frozenset[int]
+
+    def __repr__(self) -> str:
+        return f"Program({len(self.blocks)} blocks, {len(self.questions)} questions)"
 
 
 def compile_scheme(plant: Plant, scheme: Scheme) -> Program:

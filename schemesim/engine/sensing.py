@@ -78,6 +78,9 @@ class Sensing(Protocol):
 class LogicalSensing:
     """Sensing by connectivity, reach and direction on the graph of the plant."""
 
+    def __repr__(self) -> str:
+        return "LogicalSensing()"
+
     def candidates(self, program: Program, event: Event, dispatch: str | None) -> list[int]:  # noqa: ARG002
         """See :class:`Sensing`; openings only lengthen paths, so what is out of reach stays so."""
         senses = _senses(program)

@@ -309,6 +309,9 @@ class PlantBuilder:
                 case Dispatch():
                     self.dispatches.append(item)
 
+    def __repr__(self) -> str:
+        return f"PlantBuilder({len(self.sections)} sections, {len(self.devices)} devices, {len(self.sources)} sources)"
+
     def build(self) -> Plant:
         """The frozen plant, checked."""
         return Plant(

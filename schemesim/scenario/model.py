@@ -119,7 +119,7 @@ class ListedRun:
         return (*(f"{a.component}: {a.mode}" for a in self.failures), *causes)
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, repr=False)
 class Scenario:
     """Everything a scenario file says, as a model.
 
@@ -169,6 +169,10 @@ class Scenario:
     document: Data = field(default=None, compare=False, repr=False)
     """The plain data it was read from, used again when saved as long as it says the same."""
     _made: dict[object, object] = field(default_factory=dict, init=False, compare=False, repr=False)
+
+    def __repr__(self) -> str:
+        what = f"{len(self.plant.breakers)} breakers, {len(self.policies)} policies, {len(self.runs)} listed runs"
+        return f"Scenario({self.name or 'without a name'}: {what})"
 
     def __post_init__(self) -> None:
         errors = ErrorList()

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 
-from schemesim.errors import nearest
+from schemesim.errors import nearest, reject
 from schemesim.plant.coverage import default_objects
 from schemesim.plant.model import Plant, SectionKind
 from schemesim.scheme.backup import dress_breaker_failure, dress_end_faults, dress_local_backup
@@ -65,6 +65,9 @@ def dress(
     >>> scheme.contacts["Alder/F1/1 50 trip"].function
     '50'
     """
+    for name, item in {"policy": policy, **(exceptions or {})}.items():
+        if not isinstance(item, Policy):
+            raise reject(f"policy for {name!r}", item, "a Policy, such as duplicate_chain() makes")
     b = SchemeBuilder(plant, data, out_of_service)
     special = dict(exceptions or {})
     objects = default_objects(plant)

@@ -483,3 +483,11 @@ def test_two_out_of_three(failed: tuple[str, ...]) -> None:
     run = play_program(program_of(policy), "L1", *names)
     expected = {"Birch.L1.CB": 70_000} if len(failed) > 1 else {"Alder.L1.CB": 70_000, "Birch.L1.CB": 70_000}
     assert opened(run) == expected
+
+
+def test_a_name_is_no_policy() -> None:
+    plant = unit_of_line_and_transformer(ct=True)
+    with pytest.raises(InputError, match="a Policy, such as"):
+        dress(plant, "duplicate_chain")  # type: ignore[arg-type]  # a slip of a user's
+    with pytest.raises(InputError, match="policy for 'T1'"):
+        dress(plant, single_set(), exceptions={"T1": "single_set"})  # type: ignore[dict-item]  # likewise

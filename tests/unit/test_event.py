@@ -10,9 +10,12 @@ import pytest
 import simpy
 
 from schemesim.engine.answers import DrawnAnswers, FixedAnswers
+from schemesim.engine.case import bind
 from schemesim.engine.event import EventRun, run_event
 from schemesim.engine.outcome import Row
+from schemesim.engine.sensing import LogicalSensing
 from schemesim.errors import InputError, reject
+from schemesim.plant.model import Location
 from schemesim.scheme.conditions import External
 from schemesim.scheme.model import (
     Block,
@@ -274,3 +277,22 @@ def test_drawn_answers_do_not_depend_on_when_they_are_asked_and_modes_exclude_ea
     # five standard deviations of a binomial count: 5 * sqrt(4000 * 0.3 * 0.7) = 145
     assert abs(count[stuck] - 1200) < 145
     assert abs(count[late] - 800) < 145
+
+
+def test_what_is_no_event_or_lies_outside_a_section_is_refused() -> None:
+    bound = case(radial(), chain(), [relay("R1")])
+    with pytest.raises(InputError, match="a Location or a NoFault"):
+        bind(bound.program, "F1", LogicalSensing())  # type: ignore[arg-type]  # a slip of a user's
+    for position in (-0.1, 1.9, float("nan")):
+        with pytest.raises(InputError, match="a number from 0 to 1"):
+            bind(bound.program, Location("F1", position), LogicalSensing())
+
+
+def test_what_a_user_looks_at_shows_in_one_line() -> None:
+    bound = case(radial(), chain(), [relay("R1")])
+    run = run_event(bound, FixedAnswers(bound.program))
+    assert repr(run).startswith("Run(cleared at ")
+    assert "F1" in repr(bound)
+    for thing in (run, bound, bound.program):
+        assert len(repr(thing)) < 120
+        assert "\n" not in repr(thing)
