@@ -48,7 +48,8 @@ CSV
 With ``--csv FILE`` the table of the command is written, whole or not at all: the rows of the
 sequence (show), one row for each policy and location (study), one for each combination of
 failures (inject), one for each measure and variant (decide), one for each single point or
-pair and location (register), each item out (outages), each item shared (audit), one for each policy (check). The first row names the columns, as in the JSON.
+pair and location (register), each item out (outages), each item shared (audit), one for each
+policy (check). The first row names the columns, as in the JSON.
 """
 
 from schemesim.cli.parser import main

@@ -13,8 +13,9 @@ d. a single control circuit, auxiliary and lockout relays included, from the DC 
    through the trip coil (the trip coil may be left out if it is monitored and reported).
 
 What is comparable is judged by the limit: an item is in the register only where its failure
-leaves a fault uncleared, late, or with more breakers opened. Failures to operate belong there, late operation included. Breakers, CT cores, VT windings
-and common causes do not, nor does unwanted operation: they are listed apart.
+leaves a fault uncleared, late, or with more breakers opened. Failures to operate belong there,
+late operation included. Breakers, CT cores, VT windings and common causes do not, nor does
+unwanted operation: they are listed apart.
 """
 
 from __future__ import annotations
