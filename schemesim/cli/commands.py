@@ -5,7 +5,7 @@ from __future__ import annotations
 import argparse
 from typing import TYPE_CHECKING, Any
 
-from schemesim.cli.output import DONE, put, table_text, whole_of
+from schemesim.cli.output import DONE, listing, put, table_text, whole_of
 from schemesim.errors import reject
 from schemesim.scenario import Scenario
 from schemesim.scenario.model import location
@@ -86,8 +86,12 @@ def show(scenario: Scenario, options: argparse.Namespace) -> int:
         for row in sequence.table(options.all).reset_index().astype(object).to_dict("records")
     ]
     failures = [case.questions[q].name for q, yes in found.asked if yes]
+    out = sorted(case.program.scheme.out_of_service)
     content: dict[str, object] = {
+        "run": options.run,
         "policy": policy,
+        "dispatch": case.dispatch,
+        "out_of_service": out,
         "event": str(case.event),
         "failures": failures,
         "limit_ms": limit_us / 1000,
@@ -96,7 +100,8 @@ def show(scenario: Scenario, options: argparse.Namespace) -> int:
         "expect": expect,
         "rows": rows,
     }
-    text = [f"policy: {policy}", sequence.to_text(options.all)]
+    text = [] if options.run is None else [f"run: {options.run}"]
+    text += [*conditions(policy, case), sequence.to_text(options.all)]
     if expect:
         text += ["", f"expected: {expect}"]
     if scenario.frequency_hz is None:
@@ -108,6 +113,12 @@ def show(scenario: Scenario, options: argparse.Namespace) -> int:
 def _case(scenario: Scenario, options: argparse.Namespace) -> Case:
     where = location(scenario.plant, options.fault)
     return scenario.case(where, options.policy, dispatch=options.dispatch)
+
+
+def conditions(policy: str, case: Case) -> list[str]:
+    """Lines that say under what a case was run: policy, dispatch, what is out of service."""
+    head = f"policy: {policy}; dispatch: {case.dispatch or 'all sources in service'}"
+    return [head, *listing("out of service:", sorted(case.program.scheme.out_of_service) or ["nothing"])]
 
 
 def outcome_data(outcome: Outcome) -> dict[str, Any]:

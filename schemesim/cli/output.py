@@ -58,6 +58,23 @@ def table_text(rows: Sequence[Mapping[str, object]], columns: Sequence[str]) -> 
     return "\n".join(line(texts) for texts in [list(columns), *cells])
 
 
+def listing(label: str, names: Sequence[str]) -> list[str]:
+    """Names after a label, on as many lines as they need; no name is broken.
+
+    Examples
+    --------
+    >>> listing("out of service:", ["Alder/DC 1", "L1/channel 2"])
+    ['out of service: Alder/DC 1, L1/channel 2']
+    """
+    lines = [label]
+    for i, name in enumerate(names):
+        word = name if i == len(names) - 1 else f"{name},"
+        if len(lines[-1]) + 1 + len(word) > WIDTH and lines[-1].strip():
+            lines.append(" ")
+        lines[-1] += f" {word}"
+    return lines
+
+
 def _is_number(value: object) -> bool:
     return value is None or (isinstance(value, (int, float)) and not isinstance(value, bool))
 

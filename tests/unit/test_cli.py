@@ -14,11 +14,13 @@ from typing import Any
 
 import pytest
 
+from schemesim.cli.output import WIDTH, listing
 from schemesim.scenario import Scenario, load_scenario
 from schemesim.scenario.studying import study_scenario
 
 ROOT = Path(__file__).resolve().parents[2]
 SMALL = ROOT / "tests" / "data" / "small.yaml"
+DEMO = ROOT / "scenarios" / "demo.yaml"
 BAD = ROOT / "tests" / "data" / "bad"
 NOTE = "never replace a qualified engineer's review, local codes and the equipment's own documentation"
 ENV = {**os.environ, "PYTHONPATH": str(ROOT), "PYTHONIOENCODING": "utf-8", "PYTHONWARNINGS": "error"}
@@ -86,6 +88,35 @@ def test_show_tells_the_run(small: Scenario) -> None:
     assert data["failures"] == ["Birch/L1/relay 1: failure_to_operate"]
     assert data["limit_ms"] == 120
     assert data["rows"][0]["t_ms"] == 0
+
+
+def test_show_says_under_what_it_ran() -> None:
+    flooded = data_of("show", SMALL, "--run", "flooded")
+    assert flooded["run"] == "flooded"
+    assert flooded["out_of_service"] == ["Cedar/DC 1", "L1/channel 2"]
+    assert flooded["dispatch"] == "no north"
+    text = good("show", SMALL, "--run", "flooded")
+    head = text[: text.index("row ")]
+    for words in ("run: flooded", "dispatch: no north", "out of service: Cedar/DC 1, L1/channel 2"):
+        assert words in head
+    given = data_of("show", SMALL, "--fault", "L1")
+    assert given["run"] is None
+    assert given["out_of_service"] == ["L1/channel 2"]
+
+
+def test_show_of_the_demo_tells_the_outage_of_the_run() -> None:
+    text = good("show", DEMO, "--run", "retrip")
+    assert "out of service: Dunmore/F5/relay 2\n" in text
+    assert "dispatch: all sources in service" in text
+
+
+def test_a_list_of_names_is_broken_between_names_only() -> None:
+    names = [f"Alder station {n}/relay {n}" for n in range(20)]
+    lines = listing("out of service:", names)
+    assert len(lines) > 2
+    assert max(map(len, lines)) <= WIDTH
+    assert " ".join(line.strip() for line in lines) == "out of service: " + ", ".join(names)
+    assert all(any(line.rstrip(",").endswith(name) for name in names) for line in lines)
 
 
 def test_a_fault_may_be_given_in_place_of_a_run() -> None:
