@@ -14,6 +14,9 @@ if TYPE_CHECKING:
     from schemesim.engine.case import Case
     from schemesim.engine.outcome import Outcome
 
+MOST_ON_A_LINE = 50
+"""Characters of a pair of failures on one line of a table."""
+
 
 def check(scenario: Scenario, options: argparse.Namespace) -> int:
     """Say what is in a scenario that has been found good."""
@@ -174,8 +177,15 @@ def inject(scenario: Scenario, options: argparse.Namespace) -> int:
         f"fault on {case.event}, limit {limit_us / 1000:g} ms; {len(rows) - 1} combinations of up to {order}, "
         f"{sum(bool(r['changed']) for r in rows)} change the outcome",
         "",
-        table_text(shown, columns),
+        table_text(_on_lines(shown), columns),
     ]
     content = {"policy": policy, "event": str(case.event), "order": order, "limit_ms": limit_us / 1000, "rows": rows}
     put(options, scenario.name, content, rows, text)
     return DONE
+
+
+def _on_lines(rows: list[dict[str, object]]) -> list[dict[str, object]]:
+    """The rows with each failure of a pair on a line of its own, where a pair is long."""
+    if all(len(str(r["failures"])) <= MOST_ON_A_LINE for r in rows):
+        return rows
+    return [{**r, "failures": str(r["failures"]).replace(", ", ",\n  ")} for r in rows]

@@ -8,6 +8,7 @@ import io
 import json
 import math
 import os
+import shutil
 import sys
 import time
 from collections.abc import Callable, Iterable, Mapping, Sequence
@@ -29,11 +30,26 @@ VERSION = 1
 """Version of the JSON and CSV forms."""
 
 WIDTH = 118
-"""Most columns of a text table."""
+"""Columns a text has at least; a wider terminal has more."""
 
 
-def table_text(rows: Sequence[Mapping[str, object]], columns: Sequence[str]) -> str:
+def text_width() -> int:
+    """Columns a text may take: those of the terminal where it is wider than ``WIDTH``."""
+    return max(WIDTH, shutil.get_terminal_size((WIDTH, 24)).columns)
+
+
+def table_text(rows: Sequence[Mapping[str, object]], columns: Sequence[str], whole: int = 1) -> str:
     """Rows as a text table: numbers to the right, texts to the left, long ones lose their middle.
+
+    Parameters
+    ----------
+    rows : sequence of mapping
+    columns : sequence of str
+        In order; the others are left out.
+    whole : int
+        How many of the first columns name what a row is about: they are never shortened, and neither are
+        the names of columns, numbers and brackets. Where these have no room the table is wider than the text.
+        A cell of the very first may have several lines.
 
     Examples
     --------
@@ -45,17 +61,31 @@ def table_text(rows: Sequence[Mapping[str, object]], columns: Sequence[str]) -> 
     from schemesim.report.sequence import shorten
 
     cells = [[_cell(row.get(c)) for c in columns] for row in rows]
-    widths = [max([len(c), *(len(line[i]) for line in cells)]) for i, c in enumerate(columns)]
-    while sum(widths) + 2 * (len(widths) - 1) > WIDTH and max(widths) > 12:
-        widths[widths.index(max(widths))] -= 1
+    lines = [[max(map(len, text.splitlines()), default=0) for text in line] for line in cells]
+    widths = [max([len(c), *(line[i] for line in lines)]) for i, c in enumerate(columns)]
     right = [bool(rows) and all(_is_number(row.get(c)) for row in rows) for c in columns]
+    least = [
+        w if i < whole or not any(_has_words(line[i]) for line in cells) else min(w, max(len(c), 18))
+        for i, (w, c) in enumerate(zip(widths, columns, strict=True))
+    ]
+    room = text_width() - 2 * (len(widths) - 1)
+    while sum(widths) > room and widths != least:
+        widest = max(range(len(widths)), key=lambda i: (widths[i] > least[i], widths[i]))
+        widths[widest] -= 1
 
     def line(texts: Sequence[str]) -> str:
-        parts = [shorten(t, w) for t, w in zip(texts, widths, strict=True)]
+        first, *more = (texts[0].splitlines() or [""]) if texts else [""]
+        parts = [shorten(t, w) for t, w in zip([first, *texts[1:]], widths, strict=True)]
         sides = zip(parts, widths, right, strict=True)
-        return "  ".join(f"{p:>{w}}" if r else f"{p:<{w}}" for p, w, r in sides).rstrip()
+        top = "  ".join(f"{p:>{w}}" if r else f"{p:<{w}}" for p, w, r in sides).rstrip()
+        return "\n".join([top, *more])
 
-    return "\n".join(line(texts) for texts in [list(columns), *cells])
+    return "\n".join(line(texts) for texts in [list(columns), *cells]) if columns else ""
+
+
+def _has_words(text: str) -> bool:
+    """Whether a cell may be shortened: it holds words, so is no number and no bracket of two."""
+    return any(c.isalpha() for c in text.replace("e", ""))
 
 
 def listing(label: str, names: Sequence[str]) -> list[str]:
@@ -69,7 +99,7 @@ def listing(label: str, names: Sequence[str]) -> list[str]:
     lines = [label]
     for i, name in enumerate(names):
         word = name if i == len(names) - 1 else f"{name},"
-        if len(lines[-1]) + 1 + len(word) > WIDTH and lines[-1].strip():
+        if len(lines[-1]) + 1 + len(word) > text_width() and lines[-1].strip():
             lines.append(" ")
         lines[-1] += f" {word}"
     return lines

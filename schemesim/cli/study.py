@@ -11,6 +11,7 @@ import sys
 from collections.abc import Iterator, Mapping
 from concurrent.futures import Executor, ProcessPoolExecutor
 from contextlib import contextmanager
+from typing import Any
 
 from schemesim.cli.output import DONE, INTERRUPTED, Progress, number_of, put, table_text, whole_of
 from schemesim.errors import nearest, reject
@@ -230,10 +231,27 @@ def _text(scenario: Scenario, name: str, s: LocationStudy, epsilon: float) -> li
             text.append(f"… and {len(points) - MAX_POINTS} more; all of them with --json")
         text.append("")
     if s.no_fault is not None and s.no_fault.trips:
-        frame = s.no_fault.table()
-        records = [{str(k): v for k, v in row.items()} for row in frame.to_dict("records")]
-        text += ["trips with no fault", "", table_text(records, [str(c) for c in frame.columns]), ""]
+        records = [_bracketed(row) for row in s.no_fault.table().to_dict("records")]
+        text += ["trips with no fault", "", table_text(records, list(records[0])), ""]
     return text
+
+
+def _bracketed(row: Mapping[Any, Any]) -> dict[str, object]:
+    """A row with each pair of a low and a high end as one bracket.
+
+    Examples
+    --------
+    >>> _bracketed({"component": "Alder/L1/relay 1", "p_any_low": 0.5, "p_any_high": 0.75})
+    {'component': 'Alder/L1/relay 1', 'p_any': '0.5…0.75'}
+    """
+    found: dict[str, object] = {}
+    for key, value in row.items():
+        name = str(key)
+        if name.endswith("_low"):
+            found[name.removesuffix("_low")] = show(value, row[name.removesuffix("_low") + "_high"])
+        elif not name.endswith("_high"):
+            found[name] = value
+    return found
 
 
 def _time(low_us: int | None, high_us: int | None) -> str:

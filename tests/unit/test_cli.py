@@ -14,7 +14,7 @@ from typing import Any
 
 import pytest
 
-from schemesim.cli.output import WIDTH, listing
+from schemesim.cli.output import WIDTH, listing, table_text
 from schemesim.scenario import Scenario, load_scenario
 from schemesim.scenario.studying import study_scenario
 
@@ -117,6 +117,49 @@ def test_a_list_of_names_is_broken_between_names_only() -> None:
     assert max(map(len, lines)) <= WIDTH
     assert " ".join(line.strip() for line in lines) == "out of service: " + ", ".join(names)
     assert all(any(line.rstrip(",").endswith(name) for name in names) for line in lines)
+
+
+def test_a_table_keeps_what_names_its_rows_whatever_the_width(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setenv("COLUMNS", "80")
+    rows = [
+        {"at": f"{'Alder station ' * 6}relay {n} of its set", "by": f"{'x' * 70}{n}{'y' * 70}", "p": "0.1234…0.1235"}
+        for n in range(3)
+    ]
+    one = table_text(rows, ["at", "by", "p"]).splitlines()
+    assert [line[: len(r["at"])] for line, r in zip(one[1:], rows, strict=True)] == [r["at"] for r in rows]
+    assert all("xx…yy" in line and line.endswith("0.1234…0.1235") for line in one[1:])
+    two = table_text(rows, ["at", "by", "p"], whole=2).splitlines()
+    assert all(r["by"] in line for line, r in zip(two[1:], rows, strict=True))
+
+
+def test_a_table_takes_the_width_of_a_wider_terminal(monkeypatch: pytest.MonkeyPatch) -> None:
+    rows = [{"at": "L1", "by": "long " * 30 + "end"}]
+    for columns, widest in (("60", WIDTH), ("140", 140), ("300", len("L1  ") + len(rows[0]["by"]))):
+        monkeypatch.setenv("COLUMNS", columns)
+        assert max(map(len, table_text(rows, ["at", "by"]).splitlines())) == widest
+
+
+def test_a_cell_of_the_first_column_may_have_lines() -> None:
+    text = table_text([{"at": "L1,\n  L2", "n": 2}, {"at": "", "n": 3}], ["at", "n"])
+    assert text.splitlines() == ["at    n", "L1,   2", "  L2", "      3"]
+
+
+def test_rows_of_the_tables_can_be_told_apart() -> None:
+    text = good("study", SMALL, "--location", "L1@0.2", "--no-fault", "--quiet")
+    table = text[text.index("trips with no fault") :].splitlines()
+    data = data_of("study", SMALL, "--location", "L1@0.2", "--no-fault")
+    names = [r["component"] for r in data["policies"][0]["no_fault"]]
+    assert len(names) > 10
+    for name in names:
+        assert len([line for line in table if line.startswith(f"{name}  ")]) == 1
+    pairs = good("inject", SMALL, "--fault", "L1@0.5", "--order", "2", "--all")
+    rows = data_of("inject", SMALL, "--fault", "L1@0.5", "--order", "2", "--all")["rows"]
+    body = pairs[pairs.index("failures  ") :].split("\n\n")[0].splitlines()
+    found = set()
+    for i, line in enumerate(body):
+        first = line.split("  ")[0]
+        found.add(f"{first} {body[i + 1].strip()}" if first.endswith(",") else first)
+    assert {r["failures"] for r in rows} <= found
 
 
 def test_a_fault_may_be_given_in_place_of_a_run() -> None:
