@@ -219,7 +219,8 @@ def _text(scenario: Scenario, name: str, s: LocationStudy, epsilon: float) -> li
     text = [*head, table_text(odds, columns), ""]
     text += [table_text(times, list(times[0]) if times else []), ""]
     text += [
-        "t_ms: clearing time with no failure; t_p95_ms: its 95th percentile; t_worst_ms: the worst that cleared;",
+        "t_ms: clearing time with no failure; t_p95_ms: its 95th percentile; t_worst_ms: the longest among the runs",
+        "explored that cleared (what is not explored may take longer);",
         "breakers: how many open, with the probability each has at least;",
         "spof: single points of failure, not_cleared: those of them that leave the fault uncleared",
         "",

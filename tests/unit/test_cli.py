@@ -214,6 +214,11 @@ def test_study_gives_the_brackets_of_the_library(small: Scenario, tmp_path: Path
     assert [(r["policy"], r["location"]) for r in rows] == [(p, at) for p in ("plain", "strong") for at in places]
 
 
+def test_the_study_says_that_its_worst_is_the_worst_explored() -> None:
+    text = " ".join(good("study", SMALL, "--location", "F1", "--epsilon", "1e-2", "--quiet").split())
+    assert "t_worst_ms: the longest among the runs explored that cleared (what is not explored may take longer)" in text
+
+
 def test_workers_change_nothing() -> None:
     options = ["--location", "L1@0.2", "--location", "F1", "--epsilon", "1e-3"]
     one, two = (data_of("study", SMALL, *options, "--workers", n) for n in ("1", "2"))
