@@ -21,7 +21,7 @@ MOST_ROWS = 60
 
 COLUMNS = {
     "failures": "failure", "p": "p", "worst": "worst", "not_cleared": "stays", "late": "late", "more_breakers": "more",
-    "t_clear_ms_worst": "t_ms", "breakers_worst": "breakers", "load_lost_mw_worst": "load_mw",
+    "t_clear_ms_worst": "t_ms", "breakers_worst": "opened", "load_lost_mw_worst": "mw",
 }  # fmt: skip
 """Columns of an entry in a text, and what they are called there."""
 
@@ -137,13 +137,15 @@ def _register_text(found: Register, policy: object) -> list[str]:
         text += [f"with no failure at all: {where}", ""]
     text += [
         "stays, late, more: at how many locations the fault is not cleared, is cleared after the limit, takes more",
-        "breakers; t_ms: longest clearing time of those that clear; breakers, load_mw: the most that opened, was lost",
+        "breakers; t_ms: longest clearing time of those that clear; opened, mw: most breakers opened, most load lost",
     ]
     return text
 
 
 def _short(row: dict[str, object]) -> dict[str, object]:
-    return {short: row[name] for name, short in COLUMNS.items()} | {"why": row["why"]}
+    words = {"not cleared": "stays", "more breakers": "more"}
+    worst = {"worst": words.get(str(row["worst"]), row["worst"]), "why": row["why"]}
+    return {short: row[name] for name, short in COLUMNS.items()} | worst
 
 
 def _table(rows: list[dict[str, object]], columns: list[str]) -> list[str]:
