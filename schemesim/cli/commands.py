@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+from collections.abc import Mapping
 from typing import TYPE_CHECKING, Any
 
 from schemesim.cli.output import DONE, listing, put, table_text, whole_of
@@ -13,9 +14,6 @@ from schemesim.scenario.model import location
 if TYPE_CHECKING:
     from schemesim.engine.case import Case
     from schemesim.engine.outcome import Outcome
-
-MOST_ON_A_LINE = 50
-"""Characters of a pair of failures on one line of a table."""
 
 
 def check(scenario: Scenario, options: argparse.Namespace) -> int:
@@ -169,23 +167,41 @@ def inject(scenario: Scenario, options: argparse.Namespace) -> int:
         for r in found.rows
     ]
     policy = options.policy or scenario.policy
-    shown = rows if options.all else [r for r in rows if r["changed"] or not r["order"]]
+    plain = _seen(rows[0])
+    told = [r for r in rows[1:] if options.all or _seen(r) != plain]
+    shown = [rows[0], *sorted(told, key=_worst_first)]
     limit_us = scenario.limit_us(case.event)
     columns = ["failures", "p", "status", "t_clear_ms", "cleared_by", "breakers", "breakers_excess"]
+    differ = sum(_seen(r) != plain for r in rows)
     text = [
-        f"policy: {policy}",
+        *conditions(policy, case),
         f"fault on {case.event}, limit {limit_us / 1000:g} ms; {len(rows) - 1} combinations of up to {order}, "
         f"{sum(bool(r['changed']) for r in rows)} change the outcome",
+        "change the outcome: anything observed differs from the run with no failure, be it only when or by what a",
+        f"breaker was tripped; in {differ} the clearing time, status, role, breakers or excess differ",
         "",
-        table_text(_on_lines(shown), columns),
+        table_text(shown, columns),
     ]
+    if len(shown) < len(rows):
+        text += ["", f"{len(rows) - len(shown)} more leave all these as with no failure; listed with --all"]
     content = {"policy": policy, "event": str(case.event), "order": order, "limit_ms": limit_us / 1000, "rows": rows}
     put(options, scenario.name, content, rows, text)
     return DONE
 
 
-def _on_lines(rows: list[dict[str, object]]) -> list[dict[str, object]]:
-    """The rows with each failure of a pair on a line of its own, where a pair is long."""
-    if all(len(str(r["failures"])) <= MOST_ON_A_LINE for r in rows):
-        return rows
-    return [{**r, "failures": str(r["failures"]).replace(", ", ",\n  ")} for r in rows]
+def _seen(row: Mapping[str, object]) -> tuple[object, ...]:
+    """What a reader of the table compares."""
+    return tuple(row[k] for k in ("status", "t_clear_ms", "cleared_by", "tripped", "breakers_excess"))
+
+
+def _worst_first(row: Mapping[str, object]) -> tuple[int, float, int, str]:
+    """Order of the table: not cleared, then the longest, then most breakers, then by name.
+
+    Examples
+    --------
+    >>> _worst_first({"status": "cleared", "t_clear_ms": 70.0, "breakers": 2, "failures": "a"})
+    (2, -70.0, -2, 'a')
+    """
+    rank = {"not cleared": 0, "undetermined at the horizon": 1}.get(str(row["status"]), 2)
+    t_ms = row["t_clear_ms"]
+    return rank, -float(str(t_ms)) if t_ms is not None else 0.0, -int(str(row["breakers"])), str(row["failures"])

@@ -49,7 +49,7 @@ def table_text(rows: Sequence[Mapping[str, object]], columns: Sequence[str], who
     whole : int
         How many of the first columns name what a row is about: they are never shortened, and neither are
         the names of columns, numbers and brackets. Where these have no room the table is wider than the text.
-        A cell of the very first may have several lines.
+        Several names in the very first column stand on lines of their own where they are too long for one.
 
     Examples
     --------
@@ -61,14 +61,16 @@ def table_text(rows: Sequence[Mapping[str, object]], columns: Sequence[str], who
     from schemesim.report.sequence import shorten
 
     cells = [[_cell(row.get(c)) for c in columns] for row in rows]
-    lines = [[max(map(len, text.splitlines()), default=0) for text in line] for line in cells]
-    widths = [max([len(c), *(line[i] for line in lines)]) for i, c in enumerate(columns)]
+    room = text_width() - 2 * (len(columns) - 1)
+    least = _least(cells, columns, whole)
+    if whole and columns and sum(least) > room:
+        most = room - sum(least[1:])
+        cells = [[_split(line[0]) if len(line[0]) > most else line[0], *line[1:]] for line in cells]
+        least = _least(cells, columns, whole)
+        if sum(least) > room:
+            least = _least(cells, columns, whole, words=10)
+    widths = _widths(cells, columns)
     right = [bool(rows) and all(_is_number(row.get(c)) for row in rows) for c in columns]
-    least = [
-        w if i < whole or not any(_has_words(line[i]) for line in cells) else min(w, max(len(c), 18))
-        for i, (w, c) in enumerate(zip(widths, columns, strict=True))
-    ]
-    room = text_width() - 2 * (len(widths) - 1)
     while sum(widths) > room and widths != least:
         widest = max(range(len(widths)), key=lambda i: (widths[i] > least[i], widths[i]))
         widths[widest] -= 1
@@ -81,6 +83,32 @@ def table_text(rows: Sequence[Mapping[str, object]], columns: Sequence[str], who
         return "\n".join([top, *more])
 
     return "\n".join(line(texts) for texts in [list(columns), *cells]) if columns else ""
+
+
+def _widths(cells: Sequence[Sequence[str]], columns: Sequence[str]) -> list[int]:
+    """Width of each column with nothing shortened."""
+    longest = [[max(map(len, text.splitlines()), default=0) for text in line] for line in cells]
+    return [max([len(c), *(line[i] for line in longest)]) for i, c in enumerate(columns)]
+
+
+def _least(cells: Sequence[Sequence[str]], columns: Sequence[str], whole: int, words: int = 18) -> list[int]:
+    """Width that each column must have; one of ``words`` may be shortened to so many characters."""
+    return [
+        w if i < whole or not any(_has_words(line[i]) for line in cells) else min(w, max(len(c), words))
+        for i, (w, c) in enumerate(zip(_widths(cells, columns), columns, strict=True))
+    ]
+
+
+def _split(text: str) -> str:
+    """Several names, each on a line of its own.
+
+    Examples
+    --------
+    >>> print(_split("Alder/DC 1: lost, L1/channel 1: lost"))
+    Alder/DC 1: lost,
+      L1/channel 1: lost
+    """
+    return text.replace(", ", ",\n  ")
 
 
 def _has_words(text: str) -> bool:

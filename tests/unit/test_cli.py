@@ -186,6 +186,35 @@ def test_inject_gives_every_failure(tmp_path: Path) -> None:
     assert [float(r["p"]) for r in rows] == [r["p"] for r in data["rows"]]
 
 
+def test_inject_lists_what_differs_worst_first_and_counts_the_rest() -> None:
+    options = ["--fault", "L1@0.8", "--order", "2"]
+    rows = data_of("inject", SMALL, *options)["rows"]
+    seen = ("status", "t_clear_ms", "cleared_by", "tripped", "breakers_excess")
+    differ = [r for r in rows if any(r[k] != rows[0][k] for k in seen)]
+    immaterial = len(rows) - 1 - len(differ)
+    assert differ
+    assert immaterial > 0
+    assert sum(r["changed"] for r in rows) > len(differ)
+    text = good("inject", SMALL, *options)
+    assert f"{immaterial} more leave all these as with no failure" in text
+    assert f"in {len(differ)} the clearing time, status, role, breakers or excess differ" in text
+    assert "change the outcome: anything observed differs from the run with no failure" in text
+    body = text[text.index("failures  ") :].split("\n\n")[0].splitlines()[1:]
+    table = [line for line in body if not line.startswith("  ")]
+    assert table[0].startswith("none ")
+    assert len(table) == 1 + len(differ)
+    cleared = [" not cleared " not in line for line in table[1:]]
+    assert cleared == sorted(cleared)
+    assert set(cleared) == {True, False}
+    shown = [line.split(" cleared ")[1].split() for line in table[1:] if " not cleared " not in line]
+    times = [float(cells[0]) for cells in shown]
+    assert times == sorted(times, reverse=True)
+    opened = [(-t, -int(cells[-2])) for t, cells in zip(times, shown, strict=True)]
+    assert opened == sorted(opened)
+    whole = good("inject", SMALL, *options, "--all")
+    assert "more leave all these" not in whole
+
+
 def test_study_gives_the_brackets_of_the_library(small: Scenario, tmp_path: Path) -> None:
     table = tmp_path / "study.csv"
     places = ("L1@0.2", "F1", "Cedar.B1")
