@@ -171,7 +171,7 @@ def inject(scenario: Scenario, options: argparse.Namespace) -> int:
     told = [r for r in rows[1:] if options.all or _seen(r) != plain]
     shown = [rows[0], *sorted(told, key=_worst_first)]
     limit_us = scenario.limit_us(case.event)
-    columns = ["failures", "p", "status", "t_clear_ms", "cleared_by", "breakers", "breakers_excess"]
+    columns = ["failures", "p", "status", "t_clear_ms", "cleared_by", "breakers", "excess"]
     differ = sum(_seen(r) != plain for r in rows)
     text = [
         *conditions(policy, case),
@@ -180,7 +180,7 @@ def inject(scenario: Scenario, options: argparse.Namespace) -> int:
         "change the outcome: anything observed differs from the run with no failure, be it only when or by what a",
         f"breaker was tripped; in {differ} the clearing time, status, role, breakers or excess differ",
         "",
-        table_text(shown, columns),
+        table_text([{**r, "excess": r["breakers_excess"]} for r in shown], columns),
     ]
     if len(shown) < len(rows):
         text += ["", f"{len(rows) - len(shown)} more leave all these as with no failure; listed with --all"]

@@ -68,7 +68,7 @@ def table_text(rows: Sequence[Mapping[str, object]], columns: Sequence[str], who
         cells = [[_split(line[0]) if len(line[0]) > most else line[0], *line[1:]] for line in cells]
         least = _least(cells, columns, whole)
         if sum(least) > room:
-            least = _least(cells, columns, whole, words=10)
+            least = _least(cells, columns, whole, words=11)
     widths = _widths(cells, columns)
     right = [bool(rows) and all(_is_number(row.get(c)) for row in rows) for c in columns]
     while sum(widths) > room and widths != least:
