@@ -86,6 +86,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
         print(error, file=sys.stderr)
         if count > 1:
             print(f"{count} mistakes", file=sys.stderr)
+        if any(p.line is not None for p in error.problems):  # they stand in a file, which was read no further
+            print("once these are mended, mistakes of a later kind may appear", file=sys.stderr)
         return BAD_INPUT
     except SchemesimError as error:
         print(error, file=sys.stderr)

@@ -273,6 +273,23 @@ def test_a_bad_scenario_exits_2_with_every_mistake(name: str) -> None:
         assert str(BAD) in done.stderr
 
 
+def test_mistakes_of_a_later_kind_are_announced(tmp_path: Path) -> None:
+    word = "once these are mended, mistakes of a later kind may appear"
+    text = SMALL.read_text(encoding="utf-8")
+    assert text.count("out_of_service: [L1/channel 2]") == 1
+    text = text.replace("out_of_service: [L1/channel 2]", "out_of_service: [L1/chanel 2]")
+    assert text.count("trials: 200") == 1
+    file = tmp_path / "two.yaml"
+    file.write_text(text.replace("trials: 200", "trails: 200"), encoding="utf-8")
+    first = call("check", file).stderr
+    assert "trails" in first
+    assert "chanel" not in first
+    assert first.splitlines()[-1] == word
+    file.write_text(text, encoding="utf-8")
+    assert "did you mean 'L1/channel 2'?" in call("check", file).stderr
+    assert word not in call("show", SMALL, "--fault", "L2").stderr
+
+
 @pytest.mark.parametrize(
     ("arguments", "phrase"),
     [
