@@ -17,7 +17,8 @@ check
     ``components``, ``blocks`` and ``questions``; ``runs`` (names); ``coverage_gaps`` (sections in no
     protected zone).
 show
-    ``policy``, ``event``, ``failures``, ``limit_ms``; ``outcome`` with ``status``, ``t_clear_ms``,
+    ``run`` (null for ``--fault``), ``policy``, ``dispatch`` (null: all sources in service), ``out_of_service``,
+    ``event``, ``failures``, ``limit_ms``; ``outcome`` with ``status``, ``t_clear_ms``,
     ``at_horizon`` and ``openings`` (``breaker``, ``t_trip_ms``, ``t_open_ms``, ``role``, ``via``, ``interrupted``);
     ``expect``; ``rows`` of the sequence, as in the CSV.
 study

@@ -93,7 +93,7 @@ def _text(found: Decision) -> list[str]:
     text = [
         f"{sum(found.rates.values()):.4g} faults a year at {len(found.rates)} locations{left}; money in {unit} a year",
         "",
-        table_text(rows, columns),
+        table_text(rows, columns, 2),
         "",
         "cost against risk",
         "",
@@ -131,7 +131,7 @@ def _text(found: Decision) -> list[str]:
         for w in s.weighed
     ]
     if steps:
-        text += [table_text(steps, list(steps[0])), ""]
+        text += [table_text(steps, list(steps[0]), 2), ""]
     text += [f"not possible: {name}: {why}" for name, why in found.next_best.impossible]
     if found.tornado.bars:
         shown = ["assumption", "low", "high", "net_low", "net_base", "net_high", "order_changes"]
