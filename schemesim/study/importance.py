@@ -81,6 +81,8 @@ class Importance:
     @property
     def risk_reduction_worth(self) -> Bracket:
         """P(E) / P(E | no failure)."""
+        if self.p_event_given_none.low > 0:
+            return self._both_ways(lambda one, none, p: (p * one + (1 - p) * none) / none)
         return self.p_event / self.p_event_given_none
 
     def _both_ways(self, ratio: Any) -> Bracket:
