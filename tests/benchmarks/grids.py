@@ -51,8 +51,8 @@ def joined(grid: str, copies: int) -> Scenario:
         plant.setdefault(name, [])
     between: dict[str, dict[str, Any]] = {}
     for name in ("Gate", "Hub"):
-        between[name] = {"name": name, "layout": "single_bus", "kv": 138, "bays": [f"{name}.G"]}
-        plant["generators"].append({"name": f"{name}.G", "station": name, "kv": 138})
+        between[name] = {"name": name, "layout": "single_bus", "bays": [f"{name}.G"]}
+        plant["generators"].append({"name": f"{name}.G", "station": name})
     _join(plant["stations"], JOINED_AT[grid], between["Gate"], plant["lines"], "to gate", TO_GATE)
     _join([between["Gate"]], "Gate", between["Hub"], plant["lines"], "to hub", TO_HUB)
     source = (SCENARIOS / FILES["rts96"]).read_text(encoding="utf-8")
@@ -74,7 +74,7 @@ def _join(
     """A line from a station among some to another one."""
     next(s for s in stations if s["name"] == at)["bays"].append({"to": name, "at": 0})
     other["bays"].append({"to": name, "at": 1})
-    lines.append({"name": name, "length": length, "kv": 138})
+    lines.append({"name": name, "length": length})
 
 
 def _rename(plant: dict[str, Any], prefix: str) -> None:
