@@ -1,0 +1,123 @@
+"""The delays behind what happened in a logged run: one chain back to the fault, or every way a timer is started."""
+
+from __future__ import annotations
+
+from schemesim.engine.outcome import Run
+from schemesim.engine.program import Program
+from schemesim.scheme.delays import Delay
+from schemesim.scheme.model import Block, Breaker, Gate, Latch, Sense, Timer, inputs_of, signal_of
+
+Chain = list[tuple[str, Delay]]
+"""Blocks and their delays, from the fault on."""
+
+_RISES = ("picks up", "operates", "opens", "seals in")
+
+
+def _delay(block: Block) -> Delay | None:
+    match block:
+        case Sense():
+            return block.operate
+        case Timer():
+            return block.pick_up
+        case Breaker():
+            return block.interrupting
+        case _:
+            return None
+
+
+def chain_of(run: Run, program: Program, row: int) -> Chain:
+    """The delays that led to a row of the log, from the fault on.
+
+    Behind a gate stands the input that came last; the log names the one that was looked at last.
+    """
+    rises: dict[str, list[int]] = {}
+    for r in run.log:
+        if r.what in _RISES:
+            rises.setdefault(r.subject, []).append(r.index)
+
+    def back(index: int) -> int:
+        line = run.log[index]
+        block = program.scheme.block.get(line.subject)
+        if not isinstance(block, Gate) or line.what not in _RISES:
+            return line.cause
+        inputs = [x for x in block.inputs if isinstance(x, str)]
+        before = [max((i for i in rises.get(x, ()) if i < index), default=-1) for x in inputs]
+        return max((i for i in (line.cause, *before) if i >= 0), key=came, default=-1)
+
+    def came(index: int) -> int:
+        while index >= 0 and delay_of(index) is None and run.log[index].cause >= 0:
+            index = back(index)
+        return run.log[index].t_us
+
+    def delay_of(index: int) -> Delay | None:
+        line = run.log[index]
+        block = program.scheme.block.get(line.subject)
+        return _delay(block) if block is not None and line.what in ("picks up", "operates", "opens") else None
+
+    found: Chain = []
+    while row >= 0:
+        delay = delay_of(row)
+        if delay is not None:
+            found.append((run.log[row].subject, delay))
+        row = back(row)
+    return found[::-1]
+
+
+def starts_of(program: Program, run: Run, timer: str, initiate: str) -> list[Chain]:
+    """Chains of delays of everything that would start the timer before it has run out.
+
+    Any of the inputs of an OR may; of those that must come together the one that came last counts.
+
+    Parameters
+    ----------
+    program : Program
+    run : Run
+        With its log; the timer ran out in it.
+    timer, initiate : str
+        The timer's block, and the gate that starts it where there are several trips.
+    """
+    block = program.scheme.block
+    out = next((r.t_us for r in run.log if r.subject == timer and r.what == "operates"), 0)
+    rose: dict[str, int] = {}
+    for r in run.log:
+        if r.what in _RISES and r.t_us < out:
+            rose.setdefault(r.subject, r.t_us)
+
+    def behind(name: str, seen: frozenset[str]) -> list[Chain]:
+        item = block[name]
+        if name in seen:
+            return []
+        seen |= {name}
+        match item:
+            case Sense():
+                return [[(name, item.operate)]]
+            case Timer():
+                return [[*chain, (name, item.pick_up)] for chain in behind(signal_of(item.input), seen)]
+            case Latch():
+                return behind(signal_of(item.set), seen)
+            case Gate():
+                inputs = [x for x in item.inputs if isinstance(x, str) and x in rose]
+                if item.k > 1:
+                    inputs = sorted(inputs, key=lambda x: rose[x])[-1:]
+                return [chain for x in inputs for chain in behind(x, seen)]
+            case _:
+                return []
+
+    start = initiate if initiate in block else signal_of(inputs_of(block[timer])[0])
+    first = block[start]
+    if initiate not in block and isinstance(first, Gate):  # a single trip starts the timer, or its own seal does
+        start = signal_of(first.inputs[0])
+    found = {tuple(n for n, _ in chain): chain for chain in behind(start, frozenset())} if start in rose else {}
+    return list(found.values())
+
+
+def apart(chains: list[Chain]) -> tuple[list[Chain], Chain]:
+    """What each chain has for itself, and what all have in common."""
+    common = [x for x in chains[0] if all(x in c for c in chains)]
+    return [[x for x in c if x not in common] for c in chains], common
+
+
+def overlap(chains: list[Chain]) -> bool:
+    """Whether a delay is in more than one of the chains."""
+    names = [n for c in chains for n, _ in c]
+    return len(set(names)) < len(names)
