@@ -1,7 +1,8 @@
 """Failure data: what each component's modes cost in probability, by kind and by name.
 
-Defaults stand for a kind; overrides name one component or a pattern with ``*`` and
-``?``; later overrides win. A beta factor makes a common cause of the relays that
+Defaults stand for a kind; rates, with the tests and repairs that go with them, stand for a
+kind or a pattern of names and win over these; overrides name one component or a pattern with ``*`` and
+``?`` and win over both; later ones win. A beta factor makes a common cause of the relays that
 protect the same element at the same station.
 """
 
@@ -21,6 +22,7 @@ from schemesim.scheme.model import (
     FailureMode,
     Probability,
 )
+from schemesim.scheme.unavailability import Over, RateRule, unavailability
 
 Modes = Mapping[FailureMode, Probability]
 
@@ -81,6 +83,10 @@ class FailureData:
         element at the same station (0: none).
     common_causes : tuple of CommonCause
         Further causes; their members' own probabilities are taken as given.
+    rates : tuple of RateRule
+        Modes whose probability follows from a rate, tests and repairs.
+    over : Over
+        Whether that is the mean over the test interval or the worst in it.
 
     Examples
     --------
@@ -94,6 +100,8 @@ class FailureData:
     overrides: tuple[Override, ...] = ()
     relay_beta: float = 0.0
     common_causes: tuple[CommonCause, ...] = ()
+    rates: tuple[RateRule, ...] = ()
+    over: Over = Over.MEAN
 
     def __post_init__(self) -> None:
         if not 0 <= self.relay_beta <= 1:
@@ -103,12 +111,23 @@ class FailureData:
         """The component with its data."""
         found = dict(self.modes.get(kind, {}))
         rate = self.no_fault_per_yr.get(kind, 0.0)
+        for r in self.rates:
+            if r.kind is kind and fnmatchcase(name, r.pattern):
+                found[r.mode] = unavailability(r.data).over(self.over)
         for o in self.overrides:
             if fnmatchcase(name, o.pattern):
                 found.update({m: p for m, p in o.modes.items() if m in MODES[kind]})
                 rate = rate if o.no_fault_per_yr is None else o.no_fault_per_yr
         modes = tuple((m, p) for m, p in sorted(found.items()) if p != 0)
         return Component(name, kind, modes, rate, station)
+
+    def rule_of(self, name: str, kind: ComponentKind, mode: FailureMode) -> RateRule | None:
+        """The rule that the probability of a mode follows from; None where it is given as such."""
+        for o in self.overrides:
+            if mode in o.modes and fnmatchcase(name, o.pattern):
+                return None
+        fit = (r for r in reversed(self.rates) if (r.kind, r.mode) == (kind, mode) and fnmatchcase(name, r.pattern))
+        return next(fit, None)
 
     def share(self, groups: Mapping[str, list[Component]]) -> tuple[dict[str, Component], tuple[CommonCause, ...]]:
         """Split a beta factor off the relays of each group into a common cause.
