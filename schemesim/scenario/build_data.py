@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 
 from schemesim.errors import nearest
 from schemesim.scenario.locate import Path
 from schemesim.scenario.notes import Notes
+from schemesim.scenario.rates import rates_of
 from schemesim.scenario.schema import FailureDataIn
 from schemesim.scheme.failure_data import NO_FAULT_PER_YR, ORDERS_OF_MAGNITUDE, FailureData, Modes, Override
 from schemesim.scheme.model import MODES, Ask, CommonCause, ComponentKind, FailureMode, Probability
+from schemesim.scheme.unavailability import Over, RateRule, unavailability
 
 
 def failure_data_of(notes: Notes, said: FailureDataIn) -> FailureData:
@@ -24,6 +26,10 @@ def failure_data_of(notes: Notes, said: FailureDataIn) -> FailureData:
             allowed = MODES[kind]
             modes[kind] = modes.get(kind, {}) | modes_of(notes, (*top, "modes", key), given, allowed)
             check_sum(notes, (*top, "modes", key), f"modes of {key}", modes[kind])
+    rules = rates_of(notes, said.rates)
+    for rated in sorted({r.kind for r in rules}):
+        together = everywhere(modes.get(rated, {}), rules, rated, said.rates_over)
+        check_sum(notes, (*top, "rates"), f"modes of {rated}", together)
     for key, rate in said.no_fault_per_yr.items():
         kind = kind_of(notes, (*top, "no_fault_per_yr", key), key)
         if kind is not None:
@@ -52,7 +58,15 @@ def failure_data_of(notes: Notes, said: FailureDataIn) -> FailureData:
         overrides=tuple(overrides),
         relay_beta=said.relay_beta,
         common_causes=tuple(sorted(causes, key=lambda c: c.name)),
+        rates=rules,
+        over=said.rates_over,
     )
+
+
+def everywhere(start: Modes, rules: Iterable[RateRule], kind: ComponentKind, over: Over) -> Modes:
+    """Modes of a kind where only the rules for all its components hold."""
+    fit = (r for r in rules if r.kind is kind and r.pattern == "*")
+    return {**start, **{r.mode: unavailability(r.data).over(over) for r in fit}}
 
 
 def kind_of(notes: Notes, path: Path, word: str) -> ComponentKind | None:

@@ -12,6 +12,7 @@ from schemesim.scenario.locate import Data
 from schemesim.scenario.model import ListedRun, Scenario
 from schemesim.scenario.money import money_data
 from schemesim.scenario.parts import policy_data
+from schemesim.scenario.rates import rates_data
 from schemesim.scenario.scalars import ms
 from schemesim.scenario.schema import VERSION
 from schemesim.scheme.failure_data import FailureData
@@ -105,6 +106,8 @@ def _failure_data(data: FailureData) -> dict[str, Any]:
         "overrides": overrides,
         "relay_beta": data.relay_beta,
         "common_causes": causes,
+        "rates": rates_data(data.rates),
+        "rates_over": str(data.over),
     }
 
 

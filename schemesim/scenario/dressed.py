@@ -11,6 +11,7 @@ from schemesim.scenario.locate import Path
 from schemesim.scenario.model import ListedRun, Scenario
 from schemesim.scenario.money import check_costs
 from schemesim.scenario.notes import Notes
+from schemesim.scenario.rates import TOP, check_patterns
 from schemesim.scheme.model import MODES, Ask, Component, Scheme
 
 
@@ -39,6 +40,7 @@ def check_dressed(notes: Notes, scenario: Scenario) -> None:
                 known = sorted({str(m) for c in fit for m in MODES[c.kind]})
                 expected = f"a failure mode of what the pattern fits: {', '.join(known)}"
                 notes.note((*path, "modes", str(mode)), "failure mode", str(mode), expected)
+    check_patterns(notes, scenario.data.rates, components.values())
     by_name = {c.name: c for c in scenario.data.common_causes}
     for i, name in enumerate(_names(order)):
         if name in by_name:
@@ -85,10 +87,16 @@ def _dress(notes: Notes, scenario: Scenario) -> dict[str, Scheme]:
 
 
 def _override(scenario: Scenario, problem: Problem) -> Path:
-    """The override behind a mistake in the failure data of a component: the last that fits it."""
+    """The override, or rate, behind a mistake in the failure data of a component: the last that fits it."""
     name = problem.subject.partition("'")[2].removesuffix("'")
     fit = [i for i, o in enumerate(scenario.data.overrides) if fnmatchcase(name, o.pattern)]
-    return ("failure_data", "overrides", fit[-1]) if fit else ("failure_data",)
+    if fit:
+        return ("failure_data", "overrides", fit[-1])
+    rules = enumerate(scenario.data.rates)
+    rated = [(i, r.kind) for i, r in rules if r.pattern != "*" and fnmatchcase(name, r.pattern)]
+    if not rated:
+        return ("failure_data",)
+    return (*TOP, rated[-1][0]) if len({kind for _, kind in rated}) == 1 else TOP
 
 
 def _component(

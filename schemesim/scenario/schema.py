@@ -16,6 +16,7 @@ from schemesim.plant.bays import CORES, WINDINGS, CtPlacement
 from schemesim.plant.model import DeviceKind, SectionKind
 from schemesim.scenario.money import MoneyIn
 from schemesim.scenario.parts import Part, PolicyIn
+from schemesim.scenario.rates import OverIn, RateIn
 from schemesim.scenario.scalars import (
     Flag,
     Name,
@@ -32,6 +33,7 @@ from schemesim.scenario.scalars import (
     take_text,
     whole,
 )
+from schemesim.scheme.unavailability import Over
 
 VERSION = 1
 """Version of the file format, under the key ``schemesim``."""
@@ -241,6 +243,8 @@ class FailureDataIn(Part):
     overrides: Annotated[list[OverrideIn], MANY] = []
     relay_beta: Share = 0.0
     common_causes: Annotated[list[CauseIn], MANY] = []
+    rates: Annotated[list[RateIn], MANY] = []
+    rates_over: OverIn = Over.MEAN
 
 
 class FrequenciesIn(Part):
