@@ -40,6 +40,11 @@ outages
     ``policy``, ``complete``, ``locations`` (count); ``outages`` (rows as in the CSV); ``critical``: locations
     spoiled by an outage alone (``failure`` empty) or by one failure more; ``uncleared_per_yr``,
     ``late_or_uncleared_per_yr`` and both ``added_…`` (``low``, ``high``; null without hours).
+intervals
+    ``policy``, ``class`` (``kind``, ``pattern``, ``components``); ``rows`` as in the CSV; ``best_yr``; ``single_yr``:
+    by mode the interval best for one item by itself.
+misoperations
+    ``policy``; ``per_yr`` by category (``low``, ``high``; null without frequencies); ``rows`` as in the CSV.
 audit
     ``policy``; ``elements``, for each its ``sets``, ``fully_duplicated`` and ``shared_kinds``; ``shared`` (rows as in
     the CSV); ``trip_matrix``: one row for each way; ``differences`` and the marks ``compared`` (null without a table).

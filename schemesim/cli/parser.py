@@ -11,6 +11,7 @@ from schemesim.cli.audit import add_audit
 from schemesim.cli.decide import add_decide
 from schemesim.cli.output import BAD_INPUT, CANNOT_GO_ON, DONE, INTERRUPTED, NOTE, check_place
 from schemesim.cli.register import add_register
+from schemesim.cli.testing import add_testing
 from schemesim.errors import InputError, SchemesimError
 
 _EXAMPLES = """examples:
@@ -66,6 +67,7 @@ def parser() -> argparse.ArgumentParser:
     add_decide(commands, common)
     add_register(commands, common)
     add_audit(commands, common)
+    add_testing(commands, common)
     return top
 
 
@@ -107,10 +109,12 @@ def _run(options: argparse.Namespace) -> int:
     from schemesim.cli.decide import decide
     from schemesim.cli.register import outages, register
     from schemesim.cli.study import study
+    from schemesim.cli.testing import intervals, misoperations
     from schemesim.scenario import load_scenario
 
     if options.csv is not None:
         check_place(options.csv, options.file)
     command = {"check": check, "show": show, "inject": inject, "study": study, "decide": decide,
-               "register": register, "outages": outages, "audit": audit}[options.command]  # fmt: skip
+               "register": register, "outages": outages, "audit": audit,
+               "intervals": intervals, "misoperations": misoperations}[options.command]  # fmt: skip
     return command(load_scenario(options.file), options)
