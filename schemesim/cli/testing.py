@@ -23,6 +23,7 @@ def add_testing(commands: Any, common: argparse.ArgumentParser) -> None:
     one.add_argument("--kind", metavar="KIND", default="relay", help="kind of component (relay)")
     one.add_argument("--pattern", metavar="NAMES", default="*", help="only those, with * and ?")
     one.add_argument("--every", metavar="YEARS", action="append", help="an interval; several times")
+    one.add_argument("--values", metavar="CSV", help="failure data from this table; 'shipped': the starting values")
     one.add_argument("--by-turns", action="store_true", help="items that stand in for each other tested by turns")
     one.add_argument("--together", action="store_true", help="tested together; else as failure_data says")
     two = commands.add_parser("misoperations", parents=[common, shared], help="misoperations by PRC-004 category")
@@ -31,12 +32,16 @@ def add_testing(commands: Any, common: argparse.ArgumentParser) -> None:
 
 def intervals(scenario: Scenario, options: argparse.Namespace) -> int:
     """Risk against the test interval."""
-    from schemesim.scenario.testing import intervals_scenario
+    from schemesim.scenario.testing import intervals_scenario, with_values
+    from schemesim.scheme.starting_values import load_starting_values
     from schemesim.study.brackets import show
     from schemesim.study.proof_intervals import INTERVALS_YR
 
     if options.by_turns and options.together:
         raise reject("--together", "beside --by-turns", "one of them")
+    if options.values is not None:
+        path = None if options.values == "shipped" else options.values
+        scenario = with_values(scenario, load_starting_values(path))
     every = options.every or [str(t) for t in INTERVALS_YR]
     found = intervals_scenario(
         scenario,

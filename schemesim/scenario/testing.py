@@ -10,16 +10,26 @@ decides.
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable
+from dataclasses import replace
 
 from schemesim.engine.sensing import LogicalSensing
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
 from schemesim.scenario.model import Scenario
 from schemesim.scheme.model import ComponentKind
+from schemesim.scheme.starting_values import StartingValues
 from schemesim.study.misoperations import MisoperationStudy, study_misoperations
 from schemesim.study.proof_intervals import INTERVALS_YR, IntervalStudy, TestCosts, study_test_intervals
 
 Progress = Callable[[int, int], None]
+
+
+def with_values(scenario: Scenario, values: StartingValues) -> Scenario:
+    """The scenario with its failure data replaced by a table's; beta factor, causes and trips with no fault stay."""
+    old = scenario.data
+    data = values.failure_data(old.over, old.relay_beta)
+    data = replace(data, no_fault_per_yr=old.no_fault_per_yr, common_causes=old.common_causes)
+    return replace(scenario, data=data, document=None)
 
 
 def intervals_scenario(

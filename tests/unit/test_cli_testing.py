@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import json
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -13,7 +14,8 @@ from schemesim.cli import main
 from schemesim.errors import InputError
 from schemesim.scenario import Scenario, load_scenario
 from schemesim.scenario.model import location
-from schemesim.scenario.testing import intervals_scenario, misoperations_scenario
+from schemesim.scenario.testing import intervals_scenario, misoperations_scenario, with_values
+from schemesim.scheme.starting_values import load_starting_values
 from schemesim.study.misoperations import Misoperation
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -69,6 +71,23 @@ def test_intervals_are_those_of_the_library(
     assert [r["tests_per_yr"] for r in turns] == [r["tests_per_yr"] for r in together]
 
 
+def test_a_table_of_values_takes_the_place_of_the_scenarios(
+    capsys: pytest.CaptureFixture[str], small: Scenario
+) -> None:
+    """No relay of the file has a rate; the starting values give them one, and the file's beta factor stays."""
+    arguments = ("intervals", "--kind", "relay", "--every", "2", *HERE, "--values")
+    data = data_of(capsys, *arguments, "shipped")
+    other = with_values(small, load_starting_values())
+    assert other.data.relay_beta == small.data.relay_beta == 0.05
+    assert [c.name for c in other.data.common_causes] == ["flood"]
+    found = intervals_scenario(
+        other, "relay", intervals_yr=(2,), locations=[location(small.plant, "F1")], epsilon=1e-3
+    )
+    assert data["rows"] == found.records()
+    assert data["single_yr"]["relay failure_to_operate"] == pytest.approx(1.3515, abs=1e-4)
+    assert "a readable CSV file" in said(capsys, *arguments, "nowhere.csv", status=2)
+
+
 def test_misoperations_are_those_of_the_library(capsys: pytest.CaptureFixture[str], small: Scenario) -> None:
     data = data_of(capsys, "misoperations", *HERE)
     found = misoperations_scenario(small, locations=[location(small.plant, "F1")], epsilon=1e-3)
@@ -101,10 +120,6 @@ def test_bad_arguments_are_refused(
 
 def test_a_test_without_a_cost_is_no_free_test() -> None:
     """The demo has money; of a class whose rule states no test the cost is asked for, not taken as zero."""
-    from dataclasses import replace
-
-    from schemesim.scheme.starting_values import load_starting_values
-
     demo = load_scenario(ROOT / "scenarios" / "demo.yaml")
     assert demo.money is not None
     rules = tuple(replace(r, per_test=0.0, test_interval_yr=None) for r in demo.money.costs.rules)
