@@ -68,6 +68,7 @@ if TYPE_CHECKING:
     from schemesim.report.timeline import replay, timeline
     from schemesim.scenario import Scenario, load_scenario, save_scenario
     from schemesim.scenario.deciding import decide
+    from schemesim.scenario.testing import intervals_scenario, misoperations_scenario
     from schemesim.scenario.weak import outages_scenario, register_scenario
     from schemesim.scheme.build import SchemeBuilder
     from schemesim.scheme.conditions import Current, External, InZone, Reach
@@ -103,8 +104,11 @@ if TYPE_CHECKING:
         duplicate_relay,
         single_set,
     )
+    from schemesim.scheme.redundancy import iec_61508_pfd, redundant
+    from schemesim.scheme.starting_values import load_starting_values
     from schemesim.scheme.trip_comparison import compare_trip_matrix
     from schemesim.scheme.trip_matrix import trip_matrix
+    from schemesim.scheme.unavailability import RateData, RateRule, optimal_interval_yr, unavailability
     from schemesim.study.brackets import Bracket
     from schemesim.study.comparison import compare
     from schemesim.study.dependability import outputs_of, study_dependability
@@ -126,10 +130,12 @@ if TYPE_CHECKING:
         p_selective,
         p_within_limit,
     )
+    from schemesim.study.misoperations import misoperation, study_misoperations
     from schemesim.study.money import CostRule, Costs, Money, Values
     from schemesim.study.montecarlo import simulate
     from schemesim.study.no_fault import study_no_fault
     from schemesim.study.outages import planned_outages, study_outages
+    from schemesim.study.proof_intervals import TestCosts, study_test_intervals
     from schemesim.study.races import races
     from schemesim.study.register import register
     from schemesim.study.risk import Explorer
@@ -205,6 +211,12 @@ _HOMES = {
     "schemesim.study.footnote": "Monitored",
     "schemesim.study.outages": "planned_outages study_outages",
     "schemesim.scenario.weak": "outages_scenario register_scenario",
+    "schemesim.scheme.unavailability": "RateData RateRule optimal_interval_yr unavailability",
+    "schemesim.scheme.redundancy": "iec_61508_pfd redundant",
+    "schemesim.scheme.starting_values": "load_starting_values",
+    "schemesim.study.proof_intervals": "TestCosts study_test_intervals",
+    "schemesim.study.misoperations": "misoperation study_misoperations",
+    "schemesim.scenario.testing": "intervals_scenario misoperations_scenario",
 }
 
 __all__ = [
@@ -255,6 +267,8 @@ __all__ = [
     "Policy",
     "Program",
     "ProtectionSet",
+    "RateData",
+    "RateRule",
     "Reach",
     "Reaches",
     "Recipe",
@@ -272,6 +286,7 @@ __all__ = [
     "Start",
     "Status",
     "Terminal",
+    "TestCosts",
     "Timer",
     "Tree",
     "Values",
@@ -298,17 +313,23 @@ __all__ = [
     "fixed_ms",
     "frontier",
     "generator",
+    "iec_61508_pfd",
     "importance",
     "independence",
     "infeed",
     "inject",
+    "intervals_scenario",
     "isolation_zones",
     "iter_locations",
     "line",
     "load_scenario",
+    "load_starting_values",
     "merged_elements",
     "minimal_sets",
+    "misoperation",
+    "misoperations_scenario",
     "next_best",
+    "optimal_interval_yr",
     "outages_scenario",
     "outputs_of",
     "p_by_main",
@@ -320,6 +341,7 @@ __all__ = [
     "plot_timeline",
     "protected_object",
     "races",
+    "redundant",
     "register",
     "register_scenario",
     "replay",
@@ -333,12 +355,15 @@ __all__ = [
     "single_set",
     "study_dependability",
     "study_locations",
+    "study_misoperations",
     "study_no_fault",
     "study_outages",
+    "study_test_intervals",
     "study_variants",
     "timeline",
     "transformer",
     "trip_matrix",
+    "unavailability",
     "uncertainty",
     "wilson",
     "zone_graph",
