@@ -48,7 +48,8 @@ def intervals_scenario(
 
     With a section ``money`` a test costs what its rules say (``per_test``; the mean over the class), and a fault
     cleared late or not at all the cost of instability times its probability, one not cleared the cap of the damage
-    besides. Lost load is not counted.
+    besides. Lost load is not counted. Tests are those of the whole class: with some locations only, name a pattern
+    that goes with them.
 
     Parameters
     ----------
