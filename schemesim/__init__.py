@@ -69,6 +69,7 @@ if TYPE_CHECKING:
     from schemesim.scenario import Scenario, load_scenario, save_scenario
     from schemesim.scenario.deciding import decide
     from schemesim.scenario.testing import intervals_scenario, misoperations_scenario
+    from schemesim.scenario.timers import dial_scenario, importance_scenario, timer_scenario
     from schemesim.scenario.weak import outages_scenario, register_scenario
     from schemesim.scheme.build import SchemeBuilder
     from schemesim.scheme.conditions import Current, External, InZone, Reach
@@ -112,10 +113,12 @@ if TYPE_CHECKING:
     from schemesim.study.brackets import Bracket
     from schemesim.study.comparison import compare
     from schemesim.study.dependability import outputs_of, study_dependability
+    from schemesim.study.dials import dial_policies, study_dial
     from schemesim.study.edits import Edit, Recipe
     from schemesim.study.footnote import Monitored
     from schemesim.study.frontier import frontier, next_best
     from schemesim.study.importance import importance
+    from schemesim.study.importance_study import study_importance
     from schemesim.study.injection import inject
     from schemesim.study.intervals import clopper_pearson, wilson
     from schemesim.study.locations import iter_locations, study_locations
@@ -140,6 +143,7 @@ if TYPE_CHECKING:
     from schemesim.study.register import register
     from schemesim.study.risk import Explorer
     from schemesim.study.sensitivity import uncertainty
+    from schemesim.study.timer_study import Weights, study_timers
     from schemesim.study.tree import Narrow, Tree, explore
     from schemesim.study.variants import study_variants
     from schemesim.study.weak_points import minimal_sets, single_points
@@ -217,6 +221,10 @@ _HOMES = {
     "schemesim.study.proof_intervals": "TestCosts study_test_intervals",
     "schemesim.study.misoperations": "misoperation study_misoperations",
     "schemesim.scenario.testing": "intervals_scenario misoperations_scenario",
+    "schemesim.study.timer_study": "Weights study_timers",
+    "schemesim.study.dials": "dial_policies study_dial",
+    "schemesim.study.importance_study": "study_importance",
+    "schemesim.scenario.timers": "dial_scenario importance_scenario timer_scenario",
 }
 
 __all__ = [
@@ -291,6 +299,7 @@ __all__ = [
     "Tree",
     "Values",
     "VoltageTransformer",
+    "Weights",
     "bind",
     "breaker_and_a_half",
     "breakers_distribution",
@@ -303,6 +312,8 @@ __all__ = [
     "compile_scheme",
     "coverage_audit",
     "decide",
+    "dial_policies",
+    "dial_scenario",
     "double_bus",
     "dress",
     "duplicate_chain",
@@ -315,6 +326,7 @@ __all__ = [
     "generator",
     "iec_61508_pfd",
     "importance",
+    "importance_scenario",
     "independence",
     "infeed",
     "inject",
@@ -354,13 +366,17 @@ __all__ = [
     "single_points",
     "single_set",
     "study_dependability",
+    "study_dial",
+    "study_importance",
     "study_locations",
     "study_misoperations",
     "study_no_fault",
     "study_outages",
     "study_test_intervals",
+    "study_timers",
     "study_variants",
     "timeline",
+    "timer_scenario",
     "transformer",
     "trip_matrix",
     "unavailability",

@@ -49,12 +49,23 @@ audit
     ``policy``; ``elements``, for each its ``sets``, ``fully_duplicated`` and ``shared_kinds``; ``shared`` (rows as in
     the CSV); ``trip_matrix``: one row for each way; ``differences`` and the marks ``compared`` (null without a table).
 
+timer
+    ``policy``, ``per_yr`` (whether risks are per year), ``weights``; ``timers`` (rows as in the CSV); ``curves``:
+    for each timer asked for by name its rows against the setting.
+dial
+    ``policy``, ``dial``, ``positions``; ``figures`` (rows as in the CSV).
+importance
+    ``policy``, ``event``, ``complete``, ``locations`` (count), ``p_event`` (``low``, ``high``), ``faults_per_yr``;
+    ``components`` (rows as in the CSV); ``others`` (count) in no explored sequence, and ``others_at_most``: the
+    Birnbaum importance that any of these can have.
+
 CSV
 ---
 With ``--csv FILE`` the table of the command is written, whole or not at all: the rows of the
 sequence (show), one row for each policy and location (study), one for each combination of
 failures (inject), one for each measure and variant (decide), one for each single point or
-pair and location (register), each item out (outages), each item shared (audit), one for each
+pair and location (register), each item out (outages), each item shared (audit), each timer (timer), each
+group and position (dial), each component (importance), one for each
 policy (check). The first row names the columns, as in the JSON.
 """
 

@@ -12,6 +12,7 @@ from schemesim.cli.decide import add_decide
 from schemesim.cli.output import BAD_INPUT, CANNOT_GO_ON, DONE, INTERRUPTED, NOTE, check_place
 from schemesim.cli.register import add_register
 from schemesim.cli.testing import add_testing
+from schemesim.cli.timer import add_timer
 from schemesim.errors import InputError, SchemesimError
 
 _EXAMPLES = """examples:
@@ -68,6 +69,7 @@ def parser() -> argparse.ArgumentParser:
     add_register(commands, common)
     add_audit(commands, common)
     add_testing(commands, common)
+    add_timer(commands, common)
     return top
 
 
@@ -110,11 +112,13 @@ def _run(options: argparse.Namespace) -> int:
     from schemesim.cli.register import outages, register
     from schemesim.cli.study import study
     from schemesim.cli.testing import intervals, misoperations
+    from schemesim.cli.timer import dial, importance, timer
     from schemesim.scenario import load_scenario
 
     if options.csv is not None:
         check_place(options.csv, options.file)
     command = {"check": check, "show": show, "inject": inject, "study": study, "decide": decide,
                "register": register, "outages": outages, "audit": audit,
-               "intervals": intervals, "misoperations": misoperations}[options.command]  # fmt: skip
+               "intervals": intervals, "misoperations": misoperations,
+               "timer": timer, "dial": dial, "importance": importance}[options.command]  # fmt: skip
     return command(load_scenario(options.file), options)

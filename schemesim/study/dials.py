@@ -235,6 +235,7 @@ def study_dial(
     elements: Iterable[str] | None = None,
     data: FailureData | None = None,
     exceptions: Mapping[str, Policy] | None = None,
+    out_of_service: frozenset[str] = frozenset(),
     sensing: Sensing | None = None,
     locations: Iterable[Location] | None = None,
     frequencies: Mapping[Location, float] | None = None,
@@ -257,6 +258,8 @@ def study_dial(
         Only these; by default all. A station then has the elements chosen.
     data, exceptions
         As for :func:`~schemesim.scheme.dress.dress`; an exception keeps its own policy at every position.
+    out_of_service : frozenset of str
+        Components out for work; those that a position does not have are left aside.
     sensing : Sensing or None
     locations : iterable of Location or None
         Faults; by default every location of the plant.
@@ -281,7 +284,8 @@ def study_dial(
     senses = sensing or LogicalSensing()
     figures: list[Figures] = []
     for label, policy in points:
-        program = compile_scheme(plant, dress(plant, policy, data, exceptions=exceptions))
+        scheme = dress(plant, policy, data, exceptions=exceptions)
+        program = compile_scheme(plant, replace(scheme, out_of_service=out_of_service & set(scheme.component)))
         groups = _groups(program, policy, dict(exceptions or {}), wanted, timed)
         if not groups:
             raise reject("main protection", sorted(set().union(*(w or () for w in wanted))), "a relay that trips there")
@@ -304,11 +308,11 @@ def study_dial(
                 for key, parts in groups.items():
                     _judge(sums[key], parts, at.section, exactly(weight), found)
         for component in program.scheme.components:
-            if component.no_fault_per_yr > 0:
+            if component.no_fault_per_yr > 0 and component.name not in out_of_service:
                 found = tree_of(NoFault(component.name))
                 if found is not None:
                     for key, parts in groups.items():
-                        sums[key].rates.append(exactly(component.no_fault_per_yr) * found(_any(parts)))
+                        sums[key].rates.append(_rate(component.no_fault_per_yr, found(_any(parts))))
         figures += [
             Figures(label, kind, name, _mean(s.inside), _mean(s.outside), total(s.rates))
             for (kind, name), s in sums.items()
@@ -395,6 +399,10 @@ def _judge(
     if wrong:
         unwanted = _any(wrong)
         sums.outside.append((weight, found(lambda o: not unwanted(o))))
+
+
+def _rate(per_yr: float, p: Bracket) -> Bracket:
+    return exactly(per_yr) * p if p.high > 0 else exactly(0)
 
 
 def _mean(items: list[tuple[Bracket, Bracket]]) -> Bracket | None:

@@ -19,9 +19,10 @@ from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
 from schemesim.engine.case import Case
+from schemesim.engine.program import Program
 from schemesim.scheme.model import Probability
 from schemesim.study.brackets import Bracket, exactly
-from schemesim.study.odds import question_index
+from schemesim.study.odds import add, question_index
 from schemesim.study.tree import Happens, Tree, explore
 
 if TYPE_CHECKING:
@@ -186,3 +187,51 @@ def _failed_share(tree: Tree, modes: list[int], answers: dict[int, bool]) -> Fra
     refused = sum((Fraction(tree.questions[q].probability) for q in modes if q in answers), Fraction(0))
     left = sum((Fraction(tree.questions[q].probability) for q in modes if q not in answers), Fraction(0))
     return min(left / (1 - refused), Fraction(1)) if refused < 1 else Fraction(1)
+
+
+def modes_of(program: Program) -> dict[str, tuple[int, ...]]:
+    """Questions that are possible by component, each common cause for itself."""
+    found: dict[str, list[int]] = {}
+    for i, q in enumerate(program.questions):
+        if q.probability > 0:
+            found.setdefault(q.component or q.name, []).append(i)
+    return {name: tuple(modes) for name, modes in found.items()}
+
+
+def p_of(program: Program, modes: Iterable[int]) -> Probability:
+    """Probability that any of the modes happens."""
+    items = [program.questions[q].probability for q in modes]
+    exact = sum((Fraction(p) for p in items), Fraction(0))
+    exact = min(exact, Fraction(1))
+    return float(exact) if any(isinstance(p, float) for p in items) else exact
+
+
+def without(tree: Tree, modes: tuple[int, ...], happened: int | None, event: Happens) -> Bracket:
+    """P(event | this mode, asked in no leaf) or, with None, P(event | no mode), from a tree not conditioned on it.
+
+    A leaf in which none of the modes happened has, under the condition, its own probability over
+    that of not having the modes it refused.
+    """
+    odds = {q: Fraction(tree.questions[q].probability) for q in modes}
+    condition = 1 - sum(odds.values(), Fraction(0)) if happened is None else odds[happened]
+    if condition <= 0:
+        return Bracket(Fraction(0), Fraction(1))
+    bad = [event(end.outcome) for end in tree.ends]
+    groups: dict[tuple[bool, Fraction], list[Probability]] = {}
+    for leaf in tree.leaves:
+        answers = dict(leaf.asked)
+        if not any(answers.get(q) for q in modes):
+            left = 1 - sum((odds[q] for q in modes if q in answers), Fraction(0))
+            groups.setdefault((bad[leaf.end], left), []).append(leaf.probability)
+    low = high = seen = Fraction(0)
+    inexact = isinstance(tree.unexplored, float)
+    for (happens, left), masses in groups.items():
+        mass = add(masses)
+        inexact = inexact or isinstance(mass, float)
+        seen += Fraction(tree.floor(mass)) / left
+        if happens:
+            low += Fraction(tree.floor(mass)) / left
+            high += Fraction(tree.ceiling(mass)) / left
+    unseen = max(1 - seen, Fraction(0))
+    found = Bracket(min(low, Fraction(1)), min(high + unseen, Fraction(1)))
+    return found + Bracket(0.0, 0.0) if inexact else found

@@ -14,6 +14,7 @@ component in no leaf at all is at most the mass left unexplored: ``others_at_mos
 
 from __future__ import annotations
 
+import math
 import pickle
 from collections.abc import Iterable, Iterator, Mapping
 from concurrent.futures import Executor
@@ -30,14 +31,12 @@ from schemesim.engine.program import Program
 from schemesim.engine.sensing import Sensing
 from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Location
-from schemesim.scheme.model import Probability
 from schemesim.study.brackets import Bracket, exactly, total
-from schemesim.study.importance import Importance, importance_table
+from schemesim.study.importance import Importance, importance_table, modes_of, p_of, without
 from schemesim.study.locations import Progress
 from schemesim.study.measures import cleared_by_time
-from schemesim.study.odds import add
 from schemesim.study.register import limits_of
-from schemesim.study.tree import MAX_RUNS, Happens, Tree, explore
+from schemesim.study.tree import MAX_RUNS, Tree, explore
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -129,7 +128,7 @@ class ImportanceStudy:
         return Bracket(max(gained.low, 0), max(gained.high, 0)) if item.birnbaum.low >= 0 else gained
 
     def table(self, by: str = "criticality_ratio") -> pd.DataFrame:
-        """One row for each item, sorted by the low bound of a figure.
+        """One row for each item, sorted by the middle of a figure's bracket.
 
         Parameters
         ----------
@@ -141,9 +140,8 @@ class ImportanceStudy:
         InputError
             For another figure.
         """
-        if by not in FIGURES:
-            raise reject("figure to sort by", by, f"one of {list(FIGURES)}", tip=nearest(by, FIGURES))
-        order = sorted(self.items, key=lambda i: (-getattr(i, by).low, -getattr(i, by).high, i.failure))
+        check_figure(by)
+        order = sorted(self.items, key=lambda i: (-_middle(getattr(i, by)), i.failure))
         frame = importance_table(order).rename(columns={"failure": "component"})
         if self.faults_per_yr is not None:
             gains = [self.avoided_per_yr(i) or exactly(0) for i in order]
@@ -162,6 +160,24 @@ class ImportanceStudy:
 
     def _repr_html_(self) -> str:
         return str(self.table().to_html(index=False))
+
+
+def check_figure(by: str) -> None:
+    """Refuse a figure that importance has not.
+
+    Raises
+    ------
+    InputError
+        For another than those of ``FIGURES``.
+    """
+    if by not in FIGURES:
+        raise reject("figure to sort by", by, f"one of {list(FIGURES)}", tip=nearest(by, FIGURES))
+
+
+def _middle(b: Bracket) -> float:
+    """What an item is sorted by; an unbounded figure by its low end, which is known."""
+    low, high = float(b.low), float(b.high)
+    return low if math.isinf(high) or math.isinf(low) else (low + high) / 2
 
 
 @dataclass(frozen=True)
@@ -291,58 +307,10 @@ def importance_at(
                 runs += more.runs
                 parts.append(exactly(p) * more.bracket(happens))
             else:
-                parts.append(exactly(p) * _without(tree, modes, q, happens))
+                parts.append(exactly(p) * without(tree, modes, q, happens))
         failed = _clipped(total(parts) / exactly(p_of(program, modes)))
-        items[name] = Given(failed, _without(tree, modes, None, happens))
+        items[name] = Given(failed, without(tree, modes, None, happens))
     return ImportanceAt(location, True, tree.bracket(happens), items, runs, float(tree.unexplored))
-
-
-def modes_of(program: Program) -> dict[str, tuple[int, ...]]:
-    """Questions that are possible by component, each common cause for itself."""
-    found: dict[str, list[int]] = {}
-    for i, q in enumerate(program.questions):
-        if q.probability > 0:
-            found.setdefault(q.component or q.name, []).append(i)
-    return {name: tuple(modes) for name, modes in found.items()}
-
-
-def p_of(program: Program, modes: Iterable[int]) -> Probability:
-    """Probability that any of the modes happens."""
-    items = [program.questions[q].probability for q in modes]
-    exact = sum((Fraction(p) for p in items), Fraction(0))
-    exact = min(exact, Fraction(1))
-    return float(exact) if any(isinstance(p, float) for p in items) else exact
-
-
-def _without(tree: Tree, modes: tuple[int, ...], happened: int | None, event: Happens) -> Bracket:
-    """P(event | this mode, asked in no leaf) or, with None, P(event | no mode), from a tree not conditioned on it.
-
-    A leaf in which none of the modes happened has, under the condition, its own probability over
-    that of not having the modes it refused.
-    """
-    odds = {q: Fraction(tree.questions[q].probability) for q in modes}
-    condition = 1 - sum(odds.values(), Fraction(0)) if happened is None else odds[happened]
-    if condition <= 0:
-        return Bracket(Fraction(0), Fraction(1))
-    bad = [event(end.outcome) for end in tree.ends]
-    groups: dict[tuple[bool, Fraction], list[Probability]] = {}
-    for leaf in tree.leaves:
-        answers = dict(leaf.asked)
-        if not any(answers.get(q) for q in modes):
-            left = 1 - sum((odds[q] for q in modes if q in answers), Fraction(0))
-            groups.setdefault((bad[leaf.end], left), []).append(leaf.probability)
-    low = high = seen = Fraction(0)
-    inexact = isinstance(tree.unexplored, float)
-    for (happens, left), masses in groups.items():
-        mass = add(masses)
-        inexact = inexact or isinstance(mass, float)
-        seen += Fraction(tree.floor(mass)) / left
-        if happens:
-            low += Fraction(tree.floor(mass)) / left
-            high += Fraction(tree.ceiling(mass)) / left
-    unseen = max(1 - seen, Fraction(0))
-    found = Bracket(min(low, Fraction(1)), min(high + unseen, Fraction(1)))
-    return found + Bracket(0.0, 0.0) if inexact else found
 
 
 def _clipped(b: Bracket) -> Bracket:
@@ -374,7 +342,7 @@ def _summed(
     rest = mean((w, Bracket(0, min(a.unexplored, 1.0))) for w, a in counted).high
     return ImportanceStudy(
         event=event,
-        items=tuple(sorted(items, key=lambda i: (-i.criticality_ratio.low, -i.criticality_ratio.high, i.failure))),
+        items=tuple(sorted(items, key=lambda i: (-_middle(i.criticality_ratio), i.failure))),
         at=tuple(done),
         p_event=mean((w, a.p_event) for w, a in counted),
         faults_per_yr=float(weight.high) if per_yr else None,

@@ -15,7 +15,8 @@ from schemesim.engine.sensing import LogicalSensing
 from schemesim.errors import InputError
 from schemesim.plant.model import Location
 from schemesim.study.brackets import exactly
-from schemesim.study.importance_study import ImportanceStudy, Spoils, modes_of, study_importance
+from schemesim.study.importance import modes_of
+from schemesim.study.importance_study import ImportanceStudy, Spoils, study_importance
 from tests.unit.small_schemes import case_of, feeder_scheme, program_of, states
 
 LIMIT_US = 200_000
@@ -110,7 +111,7 @@ def test_a_back_up_that_every_loss_needs_has_all_the_criticality() -> None:
 def test_the_table_is_sorted_by_what_is_asked_for() -> None:
     found = study(Spoils.LATE)
     for by in ("criticality_ratio", "birnbaum", "risk_achievement_worth", "risk_reduction_worth"):
-        lows = found.table(by)[f"{by}_low"].tolist()
+        lows = found.table(by)[f"{by}_low"].tolist()  # exact trees: low and high are one
         assert lows == sorted(lows, reverse=True)
         assert len(lows) == len(found.items)
     # What an item's perfection would avoid in a year is at most all the late faults.
