@@ -19,12 +19,16 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from statistics import NormalDist
+from typing import TYPE_CHECKING
 
 import numpy as np
 
 from schemesim.errors import ErrorList, reject
 from schemesim.scheme.delay_checks import A_TIME, MAX_US, take_spread, take_times, whole_us
 from schemesim.scheme.delays import Delay
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
 
 MAX_SIGMA = 10.0
 """Largest log-standard deviation accepted (more is a slip of units)."""
@@ -66,6 +70,9 @@ class Uniform(Delay):
         return self.at(0.5)
 
     def _inverse(self, u: float) -> float:
+        return self.low_us + u * (self.high_us - self.low_us)
+
+    def _inverse_array(self, u: NDArray[np.float64]) -> NDArray[np.float64]:
         return self.low_us + u * (self.high_us - self.low_us)
 
     def _span(self) -> tuple[int, int]:
@@ -112,6 +119,12 @@ class Triangular(Delay):
         if u * width < rise:
             return self.low_us + math.sqrt(u * width * rise)
         return self.high_us - math.sqrt((1.0 - u) * width * (width - rise))
+
+    def _inverse_array(self, u: NDArray[np.float64]) -> NDArray[np.float64]:
+        width = self.high_us - self.low_us
+        rise = self.mode_us - self.low_us
+        rising = self.low_us + np.sqrt(u * width * rise)
+        return np.where(u * width < rise, rising, self.high_us - np.sqrt((1.0 - u) * width * (width - rise)))
 
     def _span(self) -> tuple[int, int]:
         return self.low_us, self.high_us
@@ -165,6 +178,13 @@ class Normal(Delay):
         if z <= z_low:
             return self.low_us
         return self.high_us if z >= z_high else self.mean_us + self.sd_us * z
+
+    def _inverse_array(self, u: NDArray[np.float64]) -> NDArray[np.float64]:
+        z_low = (self.low_us - self.mean_us) / self.sd_us
+        z_high = (self.high_us - self.mean_us) / self.sd_us
+        z = _all_between(u, z_low, z_high)
+        inside = self.mean_us + self.sd_us * np.clip(z, z_low, z_high)
+        return np.where(z <= z_low, self.low_us, np.where(z >= z_high, self.high_us, inside))
 
     def _span(self) -> tuple[int, int]:
         return self.low_us, self.high_us
@@ -221,6 +241,13 @@ class LogNormal(Delay):
             return self.low_us
         return self.high_us if z >= z_high else self.median_us * math.exp(self.sigma * z)
 
+    def _inverse_array(self, u: NDArray[np.float64]) -> NDArray[np.float64]:
+        z_low = math.log(self.low_us / self.median_us) / self.sigma if self.low_us else -math.inf
+        z_high = math.log(self.high_us / self.median_us) / self.sigma
+        z = _all_between(u, z_low, z_high)
+        inside = self.median_us * np.exp(self.sigma * np.clip(z, z_low, z_high))
+        return np.where(z <= z_low, self.low_us, np.where(z >= z_high, self.high_us, inside))
+
     def _span(self) -> tuple[int, int]:
         return self.low_us, self.high_us
 
@@ -272,6 +299,10 @@ class Empirical(Delay):
         size = len(self.sample_us)
         return self.sample_us[min(int(u * size), size - 1)]
 
+    def _inverse_array(self, u: NDArray[np.float64]) -> NDArray[np.float64]:
+        size = len(self.sample_us)
+        return np.array(self.sample_us, dtype=np.float64)[np.minimum((u * size).astype(np.intp), size - 1)]
+
     def _span(self) -> tuple[int, int]:
         return self.sample_us[0], self.sample_us[-1]
 
@@ -294,3 +325,15 @@ def _between(u: float, z_low: float, z_high: float) -> float:
     if lower <= 0.5:
         return _STANDARD.inv_cdf(lower)
     return -_STANDARD.inv_cdf(min(over + (1.0 - u) * inside, 0.5))
+
+
+def _all_between(u: NDArray[np.float64], z_low: float, z_high: float) -> NDArray[np.float64]:
+    """The same for many numbers."""
+    from scipy.special import ndtri  # heavy: only when such a delay is drawn in bulk
+
+    under, over = _below(z_low), _below(-z_high)
+    inside = 1.0 - under - over
+    lower = under + u * inside
+    upper = np.minimum(over + (1.0 - u) * inside, 0.5)
+    z = np.where(lower <= 0.5, ndtri(np.maximum(lower, 0.0)), -ndtri(upper))
+    return np.where(lower <= 0.0, z_low, z)

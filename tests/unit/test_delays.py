@@ -68,6 +68,43 @@ def test_r19_arrays_equal_single_values(case: tuple[Delay, int, int], u: list[fl
     assert many.tolist() == [case[0].at(x) for x in u]
 
 
+@given(kinds(), st.integers(0, 2**32))
+def test_r19_long_arrays_equal_single_values(case: tuple[Delay, int, int], seed: int) -> None:
+    u = np.random.Generator(np.random.Philox(seed)).random(300)
+    assert case[0].at_array(u).tolist() == [case[0].at(x) for x in u.tolist()]
+
+
+@given(kinds(), unit, unit)
+def test_r19_arrays_step_where_single_values_step(case: tuple[Delay, int, int], u: float, v: float) -> None:
+    """The very number at which the time steps, found by halving, and its neighbours."""
+    delay = case[0]
+    below, above = sorted((u, v))
+    while (middle := (below + above) / 2) not in (below, above):
+        if delay.at(middle) > delay.at(below):
+            above = middle
+        else:
+            below = middle
+    near = [above]
+    for _ in range(20):
+        near = [math.nextafter(near[0], 0.0), *near, min(math.nextafter(near[-1], 1.0), math.nextafter(1.0, 0.0))]
+    assert delay.at_array(np.array(near)).tolist() == [delay.at(x) for x in near]
+
+
+@pytest.mark.parametrize("delay", EXAMPLES, ids=lambda d: type(d).__name__)
+def test_many_times_are_hardly_ever_computed_one_by_one(delay: Delay, monkeypatch: pytest.MonkeyPatch) -> None:
+    single: list[float] = []
+    one_by_one = Delay.at
+
+    def counted(self: Delay, u: float) -> int:
+        single.append(u)
+        return one_by_one(self, u)
+
+    monkeypatch.setattr(Delay, "at", counted)
+    times = delay.at_array(MIDPOINTS)
+    assert len(times) == len(MIDPOINTS)
+    assert len(single) < 0.01 * len(MIDPOINTS)
+
+
 def test_arrays_keep_their_shape() -> None:
     u = np.array([[0.0, 0.25, 0.5], [0.625, 0.75, 0.875]])
     assert Uniform(0, 1000).at_array(u).tolist() == [[0, 250, 500], [625, 750, 875]]
