@@ -16,6 +16,7 @@ from typing import NamedTuple
 import networkx as nx
 
 from schemesim.engine.cut import (
+    NOTHING,
     BreakerAsk,
     backward,
     breaker_asks,
@@ -29,21 +30,28 @@ from schemesim.engine.cut import (
     readers,
     shut_before,
 )
+from schemesim.engine.inverse import rate_of
 from schemesim.engine.program import Kind, Program, Question, spread
-from schemesim.engine.sensing import Event, NoFault, Sensed, Sensing
+from schemesim.engine.sensing import Event, Measures, NoFault, Sensed, Sensing
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
 from schemesim.plant.zones import Duty, duty
+from schemesim.scheme.curves import Curve
 from schemesim.scheme.delays import Delay
 from schemesim.scheme.model import Breaker, Contact, Gate, Sense
 
 
 @dataclass(frozen=True, slots=True)
 class Topology:
-    """What a set of open breakers means for the case: conditions by sense block, fault fed or not."""
+    """What a set of open breakers means for the case: conditions by sense block, fault fed or not.
+
+    A sense block whose quantity lies between drop-out and pick-up is not in ``holds``: it stays as
+    it was. ``rates`` has the speed of every inverse-time block (rule R10).
+    """
 
     holds: tuple[tuple[int, bool], ...]
     fed: bool
+    rates: tuple[tuple[int, int], ...] = ()
 
 
 class AtRest(NamedTuple):
@@ -86,6 +94,8 @@ class Case:
     reach_mask : tuple of int
         For each block the breakers (bit = place in ``breakers``) and observed outputs (the
         bits above) that its output may still influence.
+    inverse : mapping of int to Curve
+        Sense blocks whose operate time is inverse; their ``on`` delay is nothing.
     """
 
     program: Program
@@ -121,6 +131,7 @@ class Case:
     observed: tuple[int, ...]
     reach_mask: tuple[int, ...]
     index: Mapping[str, int]
+    inverse: Mapping[int, Curve] = field(default_factory=dict)
     at_rest: list[AtRest] = field(default_factory=list)
     _topologies: dict[int, Topology] = field(default_factory=dict)
     _changes: dict[tuple[int, int], tuple[tuple[int, bool], ...]] = field(default_factory=dict)
@@ -146,19 +157,30 @@ class Case:
         if known is None:
             opened = self.opened(open_mask)
             holds, fed = self.sensed.state(opened)
-            known = Topology(tuple(zip(self.senses, holds, strict=True)), fed)
+            pairs = tuple(zip(self.senses, holds, strict=True))
+            rates: tuple[tuple[int, int], ...] = ()
+            if isinstance(self.sensed, Measures):
+                multiples, held = self.sensed.measured(opened)
+                pairs = tuple(pair for pair, stays in zip(pairs, held, strict=True) if not stays)
+                rates = tuple(
+                    (b, rate_of(self.inverse[b], m, stays))
+                    for b, m, stays in zip(self.senses, multiples, held, strict=True)
+                    if b in self.inverse
+                )
+            known = Topology(pairs, fed, rates)
             self._topologies[open_mask] = known
         return known
 
     def changes(self, before: int, after: int) -> tuple[tuple[int, bool], ...]:
         """Sense blocks whose condition differs between two topologies, with the new truth.
 
-        ``before`` is -1 for the time before the event, when nothing is sensed.
+        ``before`` is -1 for the time before the event, when nothing is sensed. One that stayed as
+        it was in the topology before is told of whatever it is now.
         """
         known = self._changes.get((before, after))
         if known is None:
-            old = dict(self.topology(before).holds) if before >= 0 else {}
-            known = tuple((b, t) for b, t in self.topology(after).holds if t != old.get(b, False))
+            old = dict.fromkeys(self.senses, False) if before < 0 else dict(self.topology(before).holds)
+            known = tuple((b, t) for b, t in self.topology(after).holds if t != old.get(b))
             self._changes[(before, after)] = known
         return known
 
@@ -273,7 +295,10 @@ def bind(
         else duty(program.plant, program.zones, section, dispatch, program.scheme.intertripped(section))
     )
     kind = tuple(program.kind[g] for g in chosen)
-    on_delays, off_delays = [on_delay(b) for b in blocks], [off_delay(b) for b in blocks]
+    curves = {n: b.curve for n, b in enumerate(blocks) if isinstance(b, Sense) and b.curve is not None}
+    inverse = curves if isinstance(sensed, Measures) else {}
+    on_delays = [NOTHING if n in inverse else on_delay(b) for n, b in enumerate(blocks)]
+    off_delays = [off_delay(b) for b in blocks]
     return Case(
         program=program,
         event=event,
@@ -312,4 +337,5 @@ def bind(
         observed=observed,
         reach_mask=reach_mask(inputs, breakers, observed),
         index={b.name: n for n, b in enumerate(blocks)},
+        inverse=inverse,
     )

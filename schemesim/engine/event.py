@@ -15,8 +15,9 @@ import simpy
 
 from schemesim.engine.answers import Answers
 from schemesim.engine.case import Case
+from schemesim.engine.discs import Discs
 from schemesim.engine.logic import Logic
-from schemesim.engine.outcome import Opening, Outcome, Run, Status
+from schemesim.engine.outcome import Opening, Outcome, Run, status_of
 from schemesim.engine.program import Kind
 from schemesim.engine.record import Recorder
 from schemesim.engine.rules import FALSE, MAX_PASSES, TRUE
@@ -105,6 +106,7 @@ class EventRun:
         self._pass_time = -1
         self._holds = [False] * n
         self._forced: dict[int, bool] = {}
+        self._discs = Discs(case)
         self._open_mask = 0
         self._sensed_mask = -1
         self._breaker_bit = {b: 1 << i for i, b in enumerate(case.breakers)}
@@ -154,8 +156,6 @@ class EventRun:
         self._forced[i] = state
         self._call_instant()
 
-    # --- the run ----------------------------------------------------------------------
-
     def finish(self) -> Run:
         """Step until nothing is pending or the horizon is reached (rule R20)."""
         env, at_horizon = self.env, False
@@ -184,16 +184,9 @@ class EventRun:
         return self._token[block] != 0 and (moving or self.logic.matters(block))
 
     def _outcome(self, at_horizon: bool) -> Outcome:
-        if isinstance(self.case.event, NoFault):
-            status = Status.NO_FAULT
-        elif not self.case.topology(0).fed:
-            status = Status.NOT_FED
-        elif self._t_clear is not None:
-            status = Status.CLEARED
-        else:
-            status = Status.UNDETERMINED if at_horizon else Status.NOT_CLEARED
+        fed = self.case.topology(0).fed
         return Outcome(
-            status=status,
+            status=status_of(isinstance(self.case.event, NoFault), fed, self._t_clear, at_horizon),
             t_clear_us=self._t_clear,
             openings=tuple(sorted(self._openings.values())),
             operated=tuple(sorted(self.logic.operated.items())),
@@ -266,6 +259,7 @@ class EventRun:
             self.logic.rest()
         for block in expired:
             changed |= self._expire(block)
+        self._discs.touch(expired, now)
         sensed = self._sense(now) if changed or self._forced else ()
         committed = self.logic.settle(now)
         for b, role, via, row in committed:
@@ -309,6 +303,7 @@ class EventRun:
             if truth != self._holds[block]:
                 self._holds[block] = truth
                 changed.append(block)
+        self._discs.turn(state.rates, now)
         self._sensed_mask = self._open_mask
         if now == 0 and self._pass == 0:
             self._fed = state.fed
@@ -346,7 +341,7 @@ class EventRun:
     def _follow(self, sensed: tuple[int, ...]) -> None:
         """Blocks whose input rose start; those whose input fell cancel or start their drop-out."""
         case, logic = self.case, self.logic
-        for block in sensed:
+        for block in self._discs.with_moved(sensed):
             self._follow_input(block, self._holds[block], self.record.topology_row, 0)
         for block in logic.touched_sinks():
             kind = case.kind[block]
@@ -361,10 +356,12 @@ class EventRun:
                 self._follow_close(block)
 
     def _follow_input(self, block: int, state: bool, row: int, rank: int) -> None:
+        if block in self.case.inverse and self.logic.value[block] == FALSE:
+            return self._follow_disc(block, row)
         target = TRUE if state else FALSE
         if self._token[block]:
             if self._target[block] == target:
-                return
+                return None
             left = self._due_time[block] - int(self.env.now)
             self.record.stopped(block, self._target[block] == TRUE, left, row)
             self._cancel(block)
@@ -374,6 +371,19 @@ class EventRun:
             delay = self._delay(block, rising=state)
             self._start_row[block] = self.record.started(block, state, delay, row)
             self._start(block, delay, target)
+        return None
+
+    def _follow_disc(self, block: int, row: int) -> None:
+        """An inverse-time block that has not operated goes on at its present speed (rule R10)."""
+        due, pending = self._discs.due(block), bool(self._token[block])
+        if pending and self._due_time[block] != due:
+            self.record.turned(block, self._due_time[block], due, row)
+            self._cancel(block)
+        if due is not None and not self._token[block]:
+            delay = due - int(self.env.now)
+            if not pending:
+                self._start_row[block] = self.record.started(block, True, delay, row)
+            self._start(block, delay, TRUE)
 
     def _follow_latch(self, block: int) -> None:
         logic = self.logic

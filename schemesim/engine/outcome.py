@@ -18,6 +18,17 @@ class Status(StrEnum):
     NO_FAULT = "no fault"
 
 
+def status_of(no_fault: bool, fed: bool, t_clear_us: int | None, at_horizon: bool) -> Status:
+    """How a run ended: ``fed`` tells whether the fault was fed before any opening."""
+    if no_fault:
+        return Status.NO_FAULT
+    if not fed:
+        return Status.NOT_FED
+    if t_clear_us is not None:
+        return Status.CLEARED
+    return Status.UNDETERMINED if at_horizon else Status.NOT_CLEARED
+
+
 @dataclass(frozen=True, slots=True, order=True)
 class Opening:
     """A breaker (or a generator's own trip) that was committed to open.

@@ -69,6 +69,14 @@ class Recorder:
             what = "stopped before operating" if rising else "held"
             self.row(self.case.names[block], kind.name.lower(), what, cause, left_us)
 
+    def turned(self, block: int, was_due_us: int, due_us: int | None, cause: int) -> None:
+        """An inverse-time element goes on at another speed, or stops: then what was left is the margin."""
+        if due_us is None:
+            self.stopped(block, True, was_due_us - self._now, cause)
+        elif self.keep:
+            what = "sped up" if due_us < was_due_us else "slowed down"
+            self.row(self.case.names[block], self.case.kind[block].name.lower(), what, cause)
+
     def answer(self, question: str, yes: bool, cause: int) -> None:
         """A question was answered."""
         if self.keep:

@@ -26,7 +26,10 @@ logic cannot go on without its answer*.
 - R8 A fault is cleared when no closed path joins it to a source; a device carries fault
   current while it lies on a simple path from a source to the fault.
 - R9 After every opening sensing is evaluated anew.
-- R10 Inverse time: reserved for sensing that knows currents.
+- R10 An inverse-time element travels at a whole speed that depends on the topology only, and
+  operates at the first microsecond at which its full travel is reached, so that ∫dt/t(I) = 1
+  (:mod:`schemesim.engine.inverse`). Below drop-out it resets at once or goes back by its reset
+  curve; between drop-out and pick-up it stands still; a disc first runs on for its overtravel.
 - R11 Breaker failure: sealed in until current (or 52a) resets; operates if the timer has
   expired AND current persists; the detector's reset time counts.
 - R12 Breaker failure trips every breaker around the failed one, retrip first.

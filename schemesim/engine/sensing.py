@@ -10,7 +10,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping, Sequence, Set
 from dataclasses import dataclass
 from functools import lru_cache
-from typing import Protocol
+from typing import Protocol, runtime_checkable
 
 from schemesim.engine.program import Program
 from schemesim.plant.current import Neighbourhood
@@ -53,6 +53,19 @@ class Sensed(Protocol):
 
     def lost(self, opened: Set[str]) -> tuple[float, tuple[str, ...]]:
         """Load (MW) and sections cut off from every source."""
+
+
+@runtime_checkable
+class Measures(Protocol):
+    """What a sensing that knows currents and voltages tells besides :class:`Sensed`."""
+
+    def measured(self, opened: Set[str]) -> tuple[tuple[float, ...], tuple[bool, ...]]:
+        """Quantity ÷ pick-up of each condition in the order bound, and whether it is held.
+
+        A condition between drop-out and pick-up is held: it stays as it was (false before
+        the event), and an inverse-time element stands still. The multiple is 0 where a
+        condition measures nothing.
+        """
 
 
 class Sensing(Protocol):

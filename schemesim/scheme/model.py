@@ -20,6 +20,7 @@ from functools import cached_property
 
 from schemesim.errors import ErrorList, nearest
 from schemesim.scheme.conditions import Condition
+from schemesim.scheme.curves import Curve
 from schemesim.scheme.delays import Delay
 
 Probability = float | Fraction
@@ -185,12 +186,17 @@ class Contact:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Sense:
-    """A measured condition with an operate and a reset time."""
+    """A measured condition with an operate and a reset time.
+
+    With a ``curve`` its operate time is inverse wherever the sensing knows currents (rule R10);
+    ``operate`` then stands for it where the sensing knows none.
+    """
 
     name: str
     condition: Condition
     operate: Delay
     reset: Delay
+    curve: Curve | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
