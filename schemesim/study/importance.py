@@ -13,7 +13,7 @@ here each has its own name. P(E) = p·P1 + (1 − p)·P0 is taken from the same 
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
@@ -38,12 +38,16 @@ class Importance:
     failure : str
     probability : Probability
     p_event, p_event_given_failure, p_event_given_none : Bracket
+    difference, whole : Bracket or None
+        P(E | failure) − P(E | no failure) and P(E), where they are known better than from the two probabilities.
     """
 
     failure: str
     probability: Probability
     p_event_given_failure: Bracket
     p_event_given_none: Bracket
+    difference: Bracket | None = None
+    whole: Bracket | None = None
 
     @property
     def p_event(self) -> Bracket:
@@ -51,18 +55,19 @@ class Importance:
         p = exactly(self.probability)
         rest = exactly(Fraction(1)) - p
         mixed = p * self.p_event_given_failure + rest * self.p_event_given_none
-        return Bracket(max(mixed.low, 0), min(mixed.high, 1))
+        return _both(Bracket(max(mixed.low, 0), min(mixed.high, 1)), self.whole)
 
     @property
     def birnbaum(self) -> Bracket:
         """P(E | failure) − P(E | no failure)."""
-        return self.p_event_given_failure - self.p_event_given_none
+        return _both(self.p_event_given_failure - self.p_event_given_none, self.difference)
 
     @property
     def criticality_ratio(self) -> Bracket:
         """Birnbaum importance × p / P(E) = 1 − P(E | no failure) / P(E)."""
         if self.p_event.low > 0:
-            return self._both_ways(lambda one, none, p: (one - none) * p / (p * one + (1 - p) * none))
+            found = self._both_ways(lambda one, none, p: (one - none) * p / (p * one + (1 - p) * none))
+            return _both(found, self._of_event(exactly(self.probability)))
         return exactly(Fraction(1)) - self.p_event_given_none / self.p_event
 
     @property
@@ -76,15 +81,27 @@ class Importance:
     def risk_achievement_worth(self) -> Bracket:
         """P(E | failure) / P(E)."""
         if self.p_event.low > 0:
-            return self._both_ways(lambda one, none, p: one / (p * one + (1 - p) * none))
+            found = self._both_ways(lambda one, none, p: one / (p * one + (1 - p) * none))
+            rest = self._of_event(exactly(Fraction(1)) - exactly(self.probability))
+            return _both(found, None if rest is None else exactly(Fraction(1)) + rest)
         return self.p_event_given_failure / self.p_event
 
     @property
     def risk_reduction_worth(self) -> Bracket:
         """P(E) / P(E | no failure)."""
         if self.p_event_given_none.low > 0:
-            return self._both_ways(lambda one, none, p: (p * one + (1 - p) * none) / none)
+            found = self._both_ways(lambda one, none, p: (p * one + (1 - p) * none) / none)
+            if self.difference is None:
+                return found
+            more = exactly(self.probability) * self.birnbaum
+            none = self.p_event_given_none
+            ends = [exactly(more.low) / none, exactly(more.high) / none]
+            return _both(found, exactly(Fraction(1)) + Bracket(ends[0].low, ends[1].high))
         return self.p_event / self.p_event_given_none
+
+    def _of_event(self, factor: Bracket) -> Bracket | None:
+        """The difference, times a factor, as a share of P(E); None where it is not known by itself."""
+        return None if self.difference is None else factor * self.birnbaum / self.p_event
 
     def _both_ways(self, ratio: Any) -> Bracket:
         """A figure that rises with P(E | failure) and falls with P(E | no failure), bounds rounded outward."""
@@ -95,6 +112,11 @@ class Importance:
         floats = any(isinstance(x, float) for x in (one.low, one.high, none.low, none.high))
         exact = Bracket(low, high)
         return exact + Bracket(0.0, 0.0) if floats else exact
+
+
+def _both(one: Bracket, other: Bracket | None) -> Bracket:
+    """What lies in both brackets of one value."""
+    return one if other is None else Bracket(max(one.low, other.low), min(one.high, other.high))
 
 
 def importance(
@@ -206,32 +228,82 @@ def p_of(program: Program, modes: Iterable[int]) -> Probability:
     return float(exact) if any(isinstance(p, float) for p in items) else exact
 
 
-def without(tree: Tree, modes: tuple[int, ...], happened: int | None, event: Happens) -> Bracket:
-    """P(event | this mode, asked in no leaf) or, with None, P(event | no mode), from a tree not conditioned on it.
+@dataclass(frozen=True)
+class Given:
+    """P(event | failed) and P(event | not failed) of one item."""
 
-    A leaf in which none of the modes happened has, under the condition, its own probability over
-    that of not having the modes it refused.
+    failed: Bracket
+    works: Bracket
+
+
+def given_by_leaves(tree: Tree, items: Mapping[str, tuple[int, ...]], event: Happens) -> dict[str, Given]:
+    """P(event | failed) and P(event | not failed) of items, all from the leaves of one tree.
+
+    In a leaf in which a mode of an item happened the item has failed. In one that asked about none of its modes, or was
+    told no, it has failed with the probability left to the modes not asked, given those refused:
+    nothing in the leaf depends on these. What no leaf holds of a failure's own probability is unexplored, and no
+    more than the tree's unexplored mass. A bracket narrows with the tree to the exact value.
+
+    Parameters
+    ----------
+    tree : Tree
+        Not conditioned.
+    items : mapping of name to questions
+        Modes that exclude each other.
+    event : callable
+        From an outcome to bool.
     """
-    odds = {q: Fraction(tree.questions[q].probability) for q in modes}
-    condition = 1 - sum(odds.values(), Fraction(0)) if happened is None else odds[happened]
-    if condition <= 0:
-        return Bracket(Fraction(0), Fraction(1))
     bad = [event(end.outcome) for end in tree.ends]
-    groups: dict[tuple[bool, Fraction], list[Probability]] = {}
-    for leaf in tree.leaves:
-        answers = dict(leaf.asked)
-        if not any(answers.get(q) for q in modes):
-            left = 1 - sum((odds[q] for q in modes if q in answers), Fraction(0))
-            groups.setdefault((bad[leaf.end], left), []).append(leaf.probability)
-    low = high = seen = Fraction(0)
+    every: dict[bool, list[Probability]] = {True: [], False: []}
+    asked: dict[int, list[int]] = {}
+    for n, leaf in enumerate(tree.leaves):
+        every[bad[leaf.end]].append(leaf.probability)
+        for q, _ in leaf.asked:
+            asked.setdefault(q, []).append(n)
+    found = {}
+    for name, modes in items.items():
+        odds = {q: Fraction(tree.questions[q].probability) for q in modes}
+        whole = min(sum(odds.values(), Fraction(0)), Fraction(1))
+        groups: dict[tuple[bool, Fraction], list[Probability]] = {}
+        touched = sorted({n for q in modes for n in asked.get(q, ())})
+        for n in touched:
+            leaf = tree.leaves[n]
+            answers = {q: answer for q, answer in leaf.asked if q in odds}
+            left = 1 - sum((odds[q] for q in answers), Fraction(0))
+            rest = sum((odds[q] for q in modes if q not in answers), Fraction(0))
+            share = Fraction(1) if any(answers.values()) or left <= 0 else min(rest / left, Fraction(1))
+            groups.setdefault((bad[leaf.end], share), []).append(leaf.probability)
+        of = set(touched)
+        if len(of) < len(tree.leaves):
+            for happens, masses in every.items():
+                mine = masses if not of else [
+                    leaf.probability for n, leaf in enumerate(tree.leaves) if n not in of and bad[leaf.end] is happens
+                ]
+                groups.setdefault((happens, whole), []).extend(mine)
+        found[name] = _given(tree, groups, whole)
+    return found
+
+
+def _given(tree: Tree, groups: Mapping[tuple[bool, Fraction], list[Probability]], whole: Fraction) -> Given:
+    """Both brackets, from masses by whether the event happens and by the share in which the item has failed."""
+    sums = [Fraction(0)] * 6  # event low, event high, seen; each where failed, then where not
     inexact = isinstance(tree.unexplored, float)
-    for (happens, left), masses in groups.items():
+    for (happens, share), masses in groups.items():
         mass = add(masses)
         inexact = inexact or isinstance(mass, float)
-        seen += Fraction(tree.floor(mass)) / left
-        if happens:
-            low += Fraction(tree.floor(mass)) / left
-            high += Fraction(tree.ceiling(mass)) / left
-    unseen = max(1 - seen, Fraction(0))
-    found = Bracket(min(low, Fraction(1)), min(high + unseen, Fraction(1)))
-    return found + Bracket(0.0, 0.0) if inexact else found
+        low, high = Fraction(tree.floor(mass)), Fraction(tree.ceiling(mass))
+        for at, part in ((0, share), (3, 1 - share)):
+            sums[at + 2] += part * low
+            if happens:
+                sums[at] += part * low
+                sums[at + 1] += part * high
+    most = Fraction(tree.ceiling(tree.unexplored))
+    ends = []
+    for at, mass in ((0, whole), (3, 1 - whole)):
+        if mass <= 0:
+            ends.append(Bracket(Fraction(0), Fraction(1)))
+            continue
+        unseen = max(min(mass - sums[at + 2], most), Fraction(0))
+        found = Bracket(min(sums[at] / mass, Fraction(1)), min((sums[at + 1] + unseen) / mass, Fraction(1)))
+        ends.append(found + Bracket(0.0, 0.0) if inexact else found)
+    return Given(*ends)

@@ -6,10 +6,10 @@ not cleared, or late) where it has failed and where it has not, both averaged ov
 frequency, the figures are those of :mod:`schemesim.study.importance`. They are linear in P1 and P0, or rise
 with P1 and fall with P0, so the mean over the locations keeps their brackets.
 
-One tree is explored for each location, and one more for each failure that is asked in it, on
-condition that it has happened. What a tree does not ask about does not matter to what it explored:
-such a component gets the bracket of the tree itself, weighted by what its modes refuse. So the figure of a
-component in no leaf at all is at most the mass left unexplored: ``others_at_most``.
+One tree is explored for each location, and both probabilities of every item come from its leaves and their exact
+weights: what a leaf did not ask about has failed there with its own probability. Only where P1 is left wider than is
+wanted are trees explored on condition that a mode of the item has happened. An item in no leaf can have no more
+Birnbaum importance than the mass left unexplored: ``others_at_most``.
 """
 
 from __future__ import annotations
@@ -32,9 +32,10 @@ from schemesim.engine.sensing import Sensing
 from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Location
 from schemesim.study.brackets import Bracket, exactly, total
-from schemesim.study.importance import Importance, importance_table, modes_of, p_of, without
+from schemesim.study.importance import Given, Importance, given_by_leaves, importance_table, modes_of, p_of
 from schemesim.study.locations import Progress
 from schemesim.study.measures import cleared_by_time
+from schemesim.study.odds import askable
 from schemesim.study.register import limits_of
 from schemesim.study.tree import MAX_RUNS, Tree, explore
 
@@ -54,24 +55,18 @@ FIGURES = ("birnbaum", "criticality_ratio", "risk_achievement_worth", "risk_redu
 
 
 @dataclass(frozen=True)
-class Given:
-    """P(event | failed) and P(event | not failed) of one item at one location."""
-
-    failed: Bracket
-    works: Bracket
-
-
-@dataclass(frozen=True)
 class ImportanceAt:
     """One location: the event's probability, and every item in a leaf of its tree.
 
-    ``rest`` has the brackets of what is in no leaf: the event's own, both ways.
+    What is in no leaf has the event's own bracket, failed or not. ``asks`` has the items that some
+    run of the case may ask about: others change nothing there.
     """
 
     location: Location
     fed: bool
     p_event: Bracket
     items: Mapping[str, Given]
+    asks: frozenset[str]
     runs: int
     unexplored: float
 
@@ -200,7 +195,7 @@ def study_importance(
     frequencies: Mapping[Location, float] | None = None,
     dispatch: str | None = None,
     epsilon: float = 1e-4,
-    epsilon_given: float = 1e-2,
+    epsilon_given: float = 0.05,
     max_runs: int = MAX_RUNS,
     horizon_us: int = DEFAULT_HORIZON_US,
     executor: Executor | None = None,
@@ -224,8 +219,9 @@ def study_importance(
     epsilon : float
         Mass of the tree of each location left unexplored.
     epsilon_given : float
-        The same for the trees conditioned on a failure: the width of Birnbaum's measure. In the shares of the
-        event it counts only times the failure's own probability.
+        Width of P(event | failed) under which the leaves of the location's tree will do; what is wider is explored
+        again on condition of the failure, to that mass. In the shares of the event it counts only times the
+        failure's own probability.
     max_runs, horizon_us : int
     executor : concurrent.futures.Executor or None
         Runs the work; the results are the same with any, or with none.
@@ -272,10 +268,10 @@ def _weights(chosen: list[Location], frequencies: Mapping[Location, float] | Non
 def importance_at(
     program: Program, location: Location, sensing: Sensing, limit_us: int, options: _Options
 ) -> ImportanceAt:
-    """The trees of one location: its own, and one for each failure asked in it."""
+    """The tree of one location, and more for items whose bracket it leaves too wide."""
     case = bind(program, location, sensing, dispatch=options.dispatch)
     if not case.topology(0).fed:
-        return ImportanceAt(location, False, exactly(Fraction(0)), {}, 0, 0.0)
+        return ImportanceAt(location, False, exactly(Fraction(0)), {}, frozenset(), 0, 0.0)
 
     def happens(outcome: Outcome) -> bool:
         if options.event is Spoils.NOT_CLEARED:
@@ -295,22 +291,23 @@ def importance_at(
     tree = grown({})
     asked = {q for leaf in tree.leaves for q, _ in leaf.asked}
     runs = tree.runs
-    items: dict[str, Given] = {}
-    for name, modes in sorted(modes_of(program).items()):
-        if asked.isdisjoint(modes):
+    every = modes_of(program)
+    modes_asked = {n: modes for n, modes in sorted(every.items()) if not asked.isdisjoint(modes)}
+    items = given_by_leaves(tree, modes_asked, happens)
+    for name, found in items.items():
+        if found.failed.width <= options.epsilon_given:
             continue
         parts: list[Bracket] = []
-        for q in modes:
-            p = program.questions[q].probability
-            if q in asked:
-                more = grown({q: True})
-                runs += more.runs
-                parts.append(exactly(p) * more.bracket(happens))
-            else:
-                parts.append(exactly(p) * without(tree, modes, q, happens))
-        failed = _clipped(total(parts) / exactly(p_of(program, modes)))
-        items[name] = Given(failed, without(tree, modes, None, happens))
-    return ImportanceAt(location, True, tree.bracket(happens), items, runs, float(tree.unexplored))
+        for q in modes_asked[name]:
+            more = grown({q: True})
+            runs += more.runs
+            parts.append(exactly(program.questions[q].probability) * more.bracket(happens))
+        anew = _clipped(total(parts) / exactly(p_of(program, modes_asked[name])))
+        both = Bracket(max(anew.low, found.failed.low), min(anew.high, found.failed.high))
+        items[name] = Given(both, found.works)
+    may = askable(case)
+    asks = frozenset(n for n, modes in every.items() if not may.isdisjoint(modes))
+    return ImportanceAt(location, True, tree.bracket(happens), items, asks, runs, float(tree.unexplored))
 
 
 def _clipped(b: Bracket) -> Bracket:
@@ -334,17 +331,21 @@ def _summed(
     def mean(values: Iterable[tuple[Bracket, Bracket]]) -> Bracket:
         return _clipped(total(w * b for w, b in values) / weight)
 
+    p_event = mean((w, a.p_event) for w, a in counted)
     items = []
     for name in sorted({name for _, a in counted for name in a.items}):
         here = [(w, a.items.get(name, Given(a.p_event, a.p_event))) for w, a in counted]
         failed, works = mean((w, g.failed) for w, g in here), mean((w, g.works) for w, g in here)
-        items.append(Importance(name, p_of(program, modes[name]), failed, works))
+        gained = total(
+            w * (g.failed - g.works) for (w, a), (_, g) in zip(counted, here, strict=True) if name in a.asks
+        )
+        items.append(Importance(name, p_of(program, modes[name]), failed, works, gained / weight, p_event))
     rest = mean((w, Bracket(0, min(a.unexplored, 1.0))) for w, a in counted).high
     return ImportanceStudy(
         event=event,
         items=tuple(sorted(items, key=lambda i: (-_middle(i.criticality_ratio), i.failure))),
         at=tuple(done),
-        p_event=mean((w, a.p_event) for w, a in counted),
+        p_event=p_event,
         faults_per_yr=float(weight.high) if per_yr else None,
         others=len(modes) - len(items),
         others_at_most=float(rest),

@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterable, Mapping
 from fractions import Fraction
 
+from schemesim.engine.case import Case
 from schemesim.engine.program import Program
 from schemesim.errors import nearest, reject
 from schemesim.scheme.model import Probability
@@ -35,6 +36,13 @@ def question_index(program: Program, question: int | str) -> int:
     if not 0 <= question < len(names):
         raise reject("failure", question, f"the index of a question, from 0 to {len(names) - 1}")
     return question
+
+
+def askable(case: Case) -> frozenset[int]:
+    """Every question that some run of a case may ask; any other changes nothing there."""
+    of_gates = (q for group in case.asks for q in group)
+    of_breakers = (q for asks in case.breaker_asks for _, questions, _ in asks for q in questions)
+    return frozenset((*of_gates, *of_breakers))
 
 
 def conditions(program: Program, given: Mapping[int | str, bool]) -> dict[int, bool]:

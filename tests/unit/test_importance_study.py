@@ -17,6 +17,7 @@ from schemesim.plant.model import Location
 from schemesim.study.brackets import exactly
 from schemesim.study.importance import modes_of
 from schemesim.study.importance_study import ImportanceStudy, Spoils, study_importance
+from schemesim.study.tree import explore
 from tests.unit.small_schemes import case_of, feeder_scheme, program_of, states
 
 LIMIT_US = 200_000
@@ -66,8 +67,9 @@ def test_every_figure_follows_from_all_states(component: str) -> None:
     assert found.risk_reduction_worth == exactly(event / none)
 
 
-def test_brackets_of_unfinished_trees_hold_the_exact_figures() -> None:
-    exact, rough = study(Spoils.LATE), study(Spoils.LATE, epsilon=0.03, epsilon_given=0.05)
+@pytest.mark.parametrize("given", [0, 0.05, 1], ids=["trees on condition", "some", "leaves alone"])
+def test_brackets_of_unfinished_trees_hold_the_exact_figures(given: float) -> None:
+    exact, rough = study(Spoils.LATE), study(Spoils.LATE, epsilon=0.03, epsilon_given=given)
     assert 0 < len(rough.items) <= len(exact.items)
     for item in rough.items:
         truth = exact.of(item.failure)
@@ -76,6 +78,28 @@ def test_brackets_of_unfinished_trees_hold_the_exact_figures() -> None:
             assert wide.low <= narrow.low, (item.failure, figure)
             assert narrow.high <= wide.high, (item.failure, figure)
     assert rough.p_event.width > 0
+
+
+def test_a_wide_bracket_takes_more_trees_and_becomes_narrower() -> None:
+    """P(event | failed) of every item from the leaves of a tree cut off early, and from trees on that condition."""
+    leaves, more = (study(Spoils.LATE, epsilon=0.03, epsilon_given=given) for given in (1, 0))
+    assert sum(a.runs for a in more.at) > sum(a.runs for a in leaves.at)
+    widths = [(of.of(i.failure).p_event_given_failure.width, i.p_event_given_failure.width)
+              for of, i in ((leaves, i) for i in more.items)]  # fmt: skip
+    assert all(after <= before for before, after in widths)
+    assert any(after < before for before, after in widths)
+
+
+def test_what_no_run_of_a_case_asks_about_has_no_importance_there() -> None:
+    """F1's relay is asked nothing of in a fault on F2: the difference is exactly nought there, in any tree."""
+    program = program_of(feeder_scheme())
+    asks = {a.location: a.asks for a in study(Spoils.LATE, max_runs=1).at}
+    for at in FAULTS:
+        case = case_of(feeder_scheme(), at.section)
+        met = {program.questions[q] for leaf in explore(case, epsilon=0).leaves for q, _ in leaf.asked}
+        assert {q.component or q.name for q in met} <= asks[at]
+    assert "CB1" in asks[F1]
+    assert "CB1" not in asks[F2]
 
 
 def test_what_is_in_no_leaf_is_bounded_by_the_unexplored_mass() -> None:
