@@ -18,6 +18,13 @@ from typing import TypeVar
 import networkx as nx
 
 from schemesim.errors import ErrorList, nearest, reject
+from schemesim.plant.net_data import (
+    Coupling,
+    LineImpedance,
+    SourceImpedance,
+    TransformerImpedance,
+    impedance_mistakes,
+)
 
 
 class SectionKind(StrEnum):
@@ -60,6 +67,8 @@ class Section:
         through it.
     load_mw : float
         Load supplied at this section in MW.
+    impedance : LineImpedance, TransformerImpedance or None
+        For currents and voltages only; a feeder may have that of a line.
     """
 
     name: str
@@ -68,6 +77,7 @@ class Section:
     kv: float = 0.0
     length: float = 0.0
     load_mw: float = 0.0
+    impedance: LineImpedance | TransformerImpedance | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -105,7 +115,10 @@ class Source:
         False declares it an equivalent that feeds nothing into a fault in its own
         isolation zone.
     impedance_pu : float or None
-        Source impedance, used by an electrical sensing only.
+        Reactance in per unit of 100 MVA, not earthed: for currents and voltages only, where
+        ``impedance`` says no more.
+    impedance : SourceImpedance or None
+        For currents and voltages only.
     """
 
     name: str
@@ -114,6 +127,7 @@ class Source:
     trips: bool = False
     feeds_own_zone: bool = True
     impedance_pu: float | None = None
+    impedance: SourceImpedance | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -164,6 +178,8 @@ class Plant:
         The items, in any order; names are unique over all of them (dispatches apart).
     length_unit : str
         Unit of section lengths and of distance reaches, for the face only.
+    couplings : tuple of Coupling
+        Mutual zero-sequence impedances of lines side by side.
 
     Raises
     ------
@@ -188,10 +204,12 @@ class Plant:
     vts: tuple[VoltageTransformer, ...] = ()
     dispatches: tuple[Dispatch, ...] = ()
     length_unit: str = "km"
+    couplings: tuple[Coupling, ...] = ()
 
     def __post_init__(self) -> None:
         for name in ("sections", "devices", "sources", "vts", "dispatches"):
             object.__setattr__(self, name, _by_name(getattr(self, name)))
+        object.__setattr__(self, "couplings", tuple(sorted(self.couplings, key=lambda c: (c.a, c.b))))
         check_plant(self).raise_if_any()
 
     @cached_property
@@ -272,6 +290,7 @@ def join(*parts: Plant, length_unit: str | None = None) -> Plant:
         vts=tuple(x for p in parts for x in p.vts),
         dispatches=tuple(x for p in parts for x in p.dispatches),
         length_unit=length_unit or (parts[0].length_unit if parts else "km"),
+        couplings=tuple(x for p in parts for x in p.couplings),
     )
 
 
@@ -293,8 +312,9 @@ class PlantBuilder:
         self.sources: list[Source] = []
         self.vts: list[VoltageTransformer] = []
         self.dispatches: list[Dispatch] = []
+        self.couplings: list[Coupling] = []
 
-    def add(self, *items: Section | Device | Source | VoltageTransformer | Dispatch) -> None:
+    def add(self, *items: Section | Device | Source | VoltageTransformer | Dispatch | Coupling) -> None:
         """Add items of any kind."""
         for item in items:
             match item:
@@ -308,6 +328,8 @@ class PlantBuilder:
                     self.vts.append(item)
                 case Dispatch():
                     self.dispatches.append(item)
+                case Coupling():
+                    self.couplings.append(item)
 
     def __repr__(self) -> str:
         return f"PlantBuilder({len(self.sections)} sections, {len(self.devices)} devices, {len(self.sources)} sources)"
@@ -321,6 +343,7 @@ class PlantBuilder:
             vts=tuple(self.vts),
             dispatches=tuple(self.dispatches),
             length_unit=self.length_unit,
+            couplings=tuple(self.couplings),
         )
 
 
@@ -374,6 +397,8 @@ def check_plant(plant: Plant) -> ErrorList:
         for name in sorted(state.out - source_names):
             tip = nearest(name, source_names)
             errors.add(f"dispatch {state.name!r}", name, "the name of a source", tip=tip)
+    for what, wrong, expectation in impedance_mistakes(plant.sections, plant.sources, plant.couplings):
+        errors.add(what, wrong, expectation)
     return errors
 
 
