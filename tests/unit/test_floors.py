@@ -14,7 +14,7 @@ TOP = "schemesim"
 MAX_LINES = 420
 
 FLOORS: tuple[tuple[str, ...], ...] = (
-    ("errors", "ticks"),
+    ("errors", "show", "ticks"),
     ("plant",),
     ("scheme",),
     ("engine",),
