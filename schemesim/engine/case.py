@@ -32,7 +32,7 @@ from schemesim.engine.cut import (
 )
 from schemesim.engine.inverse import rate_of
 from schemesim.engine.program import Kind, Program, Question, spread
-from schemesim.engine.sensing import Event, Measures, NoFault, Sensed, Sensing
+from schemesim.engine.sensing import Event, Measures, NoFault, Sensed, Sensing, bind_sensing
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
 from schemesim.plant.zones import Duty, duty
@@ -267,8 +267,9 @@ def bind(
     local = {g: n for n, g in enumerate(chosen)}
     blocks = [program.blocks[g] for g in chosen]
     senses = tuple(n for n, b in enumerate(blocks) if isinstance(b, Sense))
-    conditions = [b.condition for b in blocks if isinstance(b, Sense)]
-    sensed = sensing.bind(program, event, dispatch, conditions, [program.blocks[g].name for g in openable])
+    measuring = [b for b in blocks if isinstance(b, Sense)]
+    names = [program.blocks[g].name for g in openable]
+    sensed = bind_sensing(sensing, program, event, dispatch, measuring, names)
     inputs, ks = kept_inputs(program, chosen, local, shut)
     consumers: list[set[int]] = [set() for _ in chosen]
     for n, items in enumerate(inputs):

@@ -88,6 +88,35 @@ class Sensing(Protocol):
         """Prepare to answer these conditions for this event while these devices may open."""
 
 
+@runtime_checkable
+class BindsSenses(Protocol):
+    """A sensing with settings of its own for each sense block; it is asked to bind blocks, not conditions."""
+
+    def bind_senses(
+        self,
+        program: Program,
+        event: Event,
+        dispatch: str | None,
+        senses: Sequence[Sense],
+        openable: Iterable[str],
+    ) -> Sensed:
+        """As :meth:`Sensing.bind`, for the conditions of these blocks."""
+
+
+def bind_sensing(
+    sensing: Sensing,
+    program: Program,
+    event: Event,
+    dispatch: str | None,
+    senses: Sequence[Sense],
+    openable: Iterable[str],
+) -> Sensed:
+    """Bind a sensing of either sort to sense blocks."""
+    if isinstance(sensing, BindsSenses):
+        return sensing.bind_senses(program, event, dispatch, senses, openable)
+    return sensing.bind(program, event, dispatch, [b.condition for b in senses], openable)
+
+
 class LogicalSensing:
     """Sensing by connectivity, reach and direction on the graph of the plant."""
 
