@@ -86,7 +86,7 @@ class Curve:
             errors.add(f"reset_s of curve {self.name!r}", self.reset_s, "a finite number over zero, or None")
         if not _number(self.reset_p) or not 0 < self.reset_p < math.inf:
             errors.add(f"reset_p of curve {self.name!r}", self.reset_p, "a finite number over zero")
-        if not isinstance(self.overtravel_us, int) or not 0 <= self.overtravel_us <= MAX_US:
+        if not _number(self.overtravel_us) or not 0 <= self.overtravel_us <= MAX_US:
             errors.add(f"overtravel_us of curve {self.name!r}", self.overtravel_us, f"from 0 to {MAX_US} microseconds")
         if not _number(self.flat_above) or not self.flat_above > 1:
             errors.add(f"flat_above of curve {self.name!r}", self.flat_above, "a multiple over 1")
@@ -219,9 +219,9 @@ def plot_curves(
     import numpy as np
 
     if ax is None:
-        import matplotlib.pyplot as plt
+        from matplotlib.figure import Figure
 
-        _, ax = plt.subplots()
+        ax = Figure().add_subplot()
     multiples = np.geomspace(1.05, upto, 200)
     in_amperes = False
     for curve, pick_up_a in curves:
