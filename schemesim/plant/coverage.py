@@ -16,6 +16,7 @@ from schemesim.errors import ErrorList, nearest
 from schemesim.plant.model import Plant, SectionKind
 from schemesim.plant.terminals import ProtectedObject, protected_object
 from schemesim.plant.zones import Duty, duty, isolation_zones, merged_elements
+from schemesim.show.tables import to_html
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -148,7 +149,7 @@ class CoverageAudit:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def coverage_audit(

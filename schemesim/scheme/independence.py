@@ -20,6 +20,7 @@ from schemesim.errors import ErrorList, nearest
 from schemesim.scheme.model import Role, Scheme
 from schemesim.scheme.standing import Item, Walk
 from schemesim.scheme.trip_matrix import TRANSFER_TRIP
+from schemesim.show.tables import to_html
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -128,7 +129,7 @@ class Audit:
         )
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 COLUMNS = ("element", "sets", "kind", "item", "primary", "breakers", "stops")

@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING
 
 from schemesim.errors import ErrorList, nearest, reject
 from schemesim.scheme.trip_matrix import KEYS, LOCKOUT, MARKS, TRANSFER, TRIP, TripMatrix
+from schemesim.show.tables import to_html
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -102,7 +103,7 @@ class TripComparison:
         )
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def compare_trip_matrix(

@@ -25,6 +25,7 @@ from schemesim.scheme.model import (
     inputs_of,
     signal_of,
 )
+from schemesim.show.tables import to_html
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -147,7 +148,7 @@ class TripMatrix:
         return f"TripMatrix({len(self.rows)} trip outputs, {len(self.breakers)} breakers, {cells} cells)"
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def trip_matrix(scheme: Scheme) -> TripMatrix:

@@ -9,14 +9,12 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable
 from dataclasses import dataclass
-from decimal import ROUND_CEILING, ROUND_FLOOR, Decimal
 from fractions import Fraction
 
 from schemesim.errors import reject
+from schemesim.show.numbers import between
 
 Number = float | Fraction
-
-_SHOWN_ALIKE = 1e-11  # relative width below which one number is shown
 
 
 @dataclass(frozen=True, slots=True)
@@ -177,24 +175,4 @@ def show(low: Number, high: Number) -> str:
     >>> show(0.25, 0.25), show(1.2e-9, 3.1e-9), show(0.0, float("inf"))
     ('0.25', '1.2e-9…3.1e-9', '0…inf')
     """
-    a, b = float(low), float(high)
-    if math.isinf(a) or math.isinf(b):
-        return f"{a:.6g}…{b:.6g}"
-    size = max(abs(a), abs(b))
-    if b - a <= _SHOWN_ALIKE * size:
-        return f"{(a if a == b else (a + b) / 2):.10g}"
-    place = Decimal(1).scaleb(math.floor(math.log10(b - a)))
-    if b - a < 5 * float(place):
-        place = place.scaleb(-1)
-    x = Decimal(repr(a)).quantize(place, ROUND_FLOOR)
-    y = Decimal(repr(b)).quantize(place, ROUND_CEILING)
-    return f"{_plain(x)}…{_plain(y)}"
-
-
-def _plain(x: Decimal) -> str:
-    x = x.normalize()
-    if x == 0:
-        return "0"
-    if -5 <= x.adjusted() < 12:
-        return f"{x:f}"
-    return f"{x:e}"
+    return between(float(low), float(high))

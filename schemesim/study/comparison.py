@@ -11,6 +11,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from schemesim.errors import reject
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, exactly
 from schemesim.study.locations import LocationStudy
 
@@ -101,7 +102,7 @@ class Comparison:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def compare(studies: Mapping[str, LocationStudy]) -> Comparison:

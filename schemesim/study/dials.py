@@ -31,6 +31,7 @@ from schemesim.scheme.dress import dress
 from schemesim.scheme.failure_data import FailureData
 from schemesim.scheme.model import Role
 from schemesim.scheme.policy import LineScheme, Policy, ProtectionSet
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, exactly, total
 from schemesim.study.tree import Happens, explore
 
@@ -132,7 +133,7 @@ class DialStudy:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def dial_policies(policy: Policy, dial: str, values: Iterable[object]) -> tuple[tuple[str, Policy], ...]:

@@ -12,6 +12,7 @@ from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 from schemesim.errors import InputError, reject
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, exactly, show
 from schemesim.study.edits import Edit, Recipe
 from schemesim.study.money import Costs, Money
@@ -99,7 +100,7 @@ class Frontier:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def frontier(ledgers: Mapping[str, Ledger], money: Money) -> Frontier:
@@ -256,7 +257,7 @@ class NextBest:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 @dataclass(frozen=True)

@@ -31,6 +31,7 @@ from schemesim.engine.program import Program
 from schemesim.engine.sensing import Sensing
 from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Location
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, exactly, total
 from schemesim.study.importance import Given, Importance, given_by_leaves, importance_table, modes_of, p_of
 from schemesim.study.locations import Progress
@@ -154,7 +155,7 @@ class ImportanceStudy:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def check_figure(by: str) -> None:

@@ -18,6 +18,7 @@ from schemesim.engine.event import DEFAULT_HORIZON_US, run_event
 from schemesim.engine.outcome import Outcome, Run
 from schemesim.errors import reject
 from schemesim.scheme.model import Probability
+from schemesim.show.tables import to_html
 from schemesim.study.measures import cleared_by, excess
 from schemesim.study.tree import Engine
 
@@ -121,7 +122,7 @@ class Injection:
         return f"Injection({self.event}: {tried} combinations, {changed} change the outcome, {self.runs} runs)"
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def inject(

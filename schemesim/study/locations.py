@@ -20,6 +20,7 @@ from schemesim.engine.sensing import Sensing
 from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Location
 from schemesim.scheme.model import Role
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, exactly, total
 from schemesim.study.location import LocationOptions, LocationResult, study_location
 from schemesim.study.no_fault import NoFaultStudy
@@ -131,13 +132,19 @@ class LocationStudy:
                 found.setdefault(point.failure, []).append(str(r.location))
         return {name: tuple(at) for name, at in sorted(found.items())}
 
-    def table(self) -> pd.DataFrame:
-        """One row for each location."""
+    @property
+    def ranked(self) -> tuple[LocationResult, ...]:
+        """Locations by how often a year (or per fault) one is cleared late or not at all, the most first."""
+        return tuple(sorted(self.results, key=lambda r: -self.weight(r) * float(r.p_late_or_uncleared.low)))
+
+    def table(self, *, ranked: bool = False) -> pd.DataFrame:
+        """One row for each location, in the order studied or, with ``ranked``, by what matters."""
         import pandas as pd  # heavy: only when a table is asked for
 
-        frame = pd.DataFrame([r.row for r in self.results])
-        if self.frequencies is not None and self.results:
-            rates = [self.frequencies.get(r.location, 0.0) for r in self.results]
+        results = self.ranked if ranked else self.results
+        frame = pd.DataFrame([r.row for r in results])
+        if self.frequencies is not None and results:
+            rates = [self.frequencies.get(r.location, 0.0) for r in results]
             frame.insert(1, "freq_per_yr", rates)
         return frame
 
@@ -159,7 +166,7 @@ class LocationStudy:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.summary().to_html(index=False)) + str(self.table().to_html(index=False))
+        return to_html(self.summary()) + to_html(self.table(ranked=True))
 
 
 def iter_locations(

@@ -35,6 +35,7 @@ from schemesim.engine.sensing import NoFault, Sensing
 from schemesim.errors import ErrorList, nearest
 from schemesim.plant.model import Location
 from schemesim.scheme.model import Breaker, FailureMode, Probability, Role
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, exactly, total
 from schemesim.study.tree import MAX_RUNS, explore
 
@@ -189,7 +190,7 @@ class MisoperationStudy:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.summary().to_html(index=False)) + str(self.table().to_html(index=False))
+        return to_html(self.summary()) + to_html(self.table())
 
 
 def study_misoperations(

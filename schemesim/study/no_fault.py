@@ -16,6 +16,7 @@ from schemesim.engine.program import Program
 from schemesim.engine.sensing import NoFault, Sensing
 from schemesim.errors import reject
 from schemesim.scheme.model import Probability
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, Expectation, exactly, total
 from schemesim.study.losses import load_lost_mw
 from schemesim.study.measures import breakers_mean
@@ -106,7 +107,7 @@ class NoFaultStudy:
         return f"NoFaultStudy({len(self.trips)} components, {self.trips_per_yr} trips a year)"
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def study_no_fault(

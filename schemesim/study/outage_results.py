@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING
 
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, total
 from schemesim.study.locations import LocationStudy
 from schemesim.study.spoiled import Effect
@@ -219,7 +220,7 @@ class OutageStudy:
         )
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def _sum(items: Iterable[Bracket | None]) -> Bracket | None:

@@ -29,6 +29,7 @@ from schemesim.scheme.failure_data import FailureData
 from schemesim.scheme.model import ComponentKind
 from schemesim.scheme.redundancy import quadrature
 from schemesim.scheme.unavailability import MAX_YR, need, optimal_interval_yr
+from schemesim.show.tables import to_html
 from schemesim.study.ages import Tested, at_time, class_of, questions_at, weighed
 from schemesim.study.brackets import Bracket, exactly, total
 from schemesim.study.locations import Progress
@@ -148,7 +149,7 @@ class IntervalStudy:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

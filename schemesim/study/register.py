@@ -22,6 +22,7 @@ from schemesim.engine.sensing import Sensing
 from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Location
 from schemesim.scheme.model import Probability
+from schemesim.show.tables import to_html
 from schemesim.study.footnote import Group, Grouped, Monitored, check_monitored, group_of
 from schemesim.study.spoiled import AtLocation, Effect, RegisterOptions, Spoiled, place_row, register_at
 
@@ -169,7 +170,7 @@ class Register:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def register(

@@ -19,6 +19,7 @@ from schemesim.engine.draws import uniforms
 from schemesim.engine.sensing import NoFault
 from schemesim.errors import ErrorList
 from schemesim.scheme.model import Scheme
+from schemesim.show.tables import to_html
 from schemesim.study.frontier import Weigher
 from schemesim.study.money import Costs, Money, Values
 from schemesim.study.risk import Floats, Ledger, Place, event_cost
@@ -192,7 +193,7 @@ class Tornado:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def tornado(weigher: Weigher, money: Money, *, whole: bool = False, most_steps: int | None = None) -> Tornado:
@@ -329,7 +330,7 @@ class Uncertainty:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def draw_factors(error_factors: Mapping[str, float], samples: int, seed: int) -> Factors:

@@ -31,6 +31,7 @@ from schemesim.engine.program import Program
 from schemesim.engine.sensing import Sensing
 from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Location
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, exactly
 from schemesim.study.register import limits_of
 from schemesim.study.time_sums import Grid
@@ -220,7 +221,7 @@ class TimerStudy:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def study_timers(

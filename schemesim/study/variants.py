@@ -24,6 +24,7 @@ from schemesim.engine.event import DEFAULT_HORIZON_US, run_event
 from schemesim.engine.program import Program
 from schemesim.engine.times import DelayTimes
 from schemesim.errors import ErrorList, nearest, reject
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, show
 from schemesim.study.money import Values
 from schemesim.study.risk import MEASURES, Explorer, Floats, Ledger, Measure, columns_of
@@ -135,7 +136,7 @@ class VariantStudy:
         return "\n".join(lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def _row(r: Difference) -> dict[str, object]:
