@@ -8,6 +8,7 @@ import sys
 from collections.abc import Sequence
 
 from schemesim.cli.audit import add_audit
+from schemesim.cli.campaign import add_campaign, campaign
 from schemesim.cli.decide import add_decide
 from schemesim.cli.output import BAD_INPUT, CANNOT_GO_ON, DONE, INTERRUPTED, NOTE, check_place
 from schemesim.cli.register import add_register
@@ -70,6 +71,7 @@ def parser() -> argparse.ArgumentParser:
     add_audit(commands, common)
     add_testing(commands, common)
     add_timer(commands, common)
+    add_campaign(commands)
     return top
 
 
@@ -106,6 +108,10 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 
 def _run(options: argparse.Namespace) -> int:
+    if options.command == "campaign":  # its file may be a store
+        if options.csv is not None:
+            check_place(options.csv, options.file)
+        return campaign(options)
     from schemesim.cli.audit import audit
     from schemesim.cli.commands import check, inject, show  # heavy: not needed to tell of bad arguments
     from schemesim.cli.decide import decide
