@@ -45,6 +45,8 @@ intervals
     by mode the interval best for one item by itself.
 misoperations
     ``policy``; ``per_yr`` by category (``low``, ``high``; null without frequencies); ``rows`` as in the CSV.
+report
+    ``policy``, ``complete``, ``locations`` (count); ``output`` (the file written), ``bytes``; ``measures`` (rows).
 audit
     ``policy``; ``elements``, for each its ``sets``, ``fully_duplicated`` and ``shared_kinds``; ``shared`` (rows as in
     the CSV); ``trip_matrix``: one row for each way; ``differences`` and the marks ``compared`` (null without a table).

@@ -179,8 +179,10 @@ def write_csv(path: str, rows: Iterable[Mapping[str, object]]) -> None:
 class Progress:
     """How far a long piece of work has come, on the error output; on one line where it is a terminal."""
 
-    def __init__(self, what: str, quiet: bool, clock: Callable[[], float] = time.monotonic) -> None:
-        self.what, self.quiet, self.clock = what, quiet, clock
+    def __init__(
+        self, what: str, quiet: bool, clock: Callable[[], float] = time.monotonic, unit: str = "locations"
+    ) -> None:
+        self.what, self.quiet, self.clock, self.unit = what, quiet, clock, unit
         self.started = clock()
         self._shown = -math.inf
         self._line = sys.stderr.isatty()
@@ -192,7 +194,7 @@ class Progress:
         if self.quiet or (now - self._shown < every and done < of):
             return
         self._shown = now
-        text = f"{self.what}: {done} of {of} locations, {now - self.started:.0f} s"
+        text = f"{self.what}: {done} of {of} {self.unit}, {now - self.started:.0f} s"
         end = "\n" if done == of or not self._line else ""
         print(f"\r{text}" if self._line else text, end=end, file=sys.stderr, flush=True)
 

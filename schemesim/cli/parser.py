@@ -12,6 +12,7 @@ from schemesim.cli.campaign import add_campaign, campaign
 from schemesim.cli.decide import add_decide
 from schemesim.cli.output import BAD_INPUT, CANNOT_GO_ON, DONE, INTERRUPTED, NOTE, check_place
 from schemesim.cli.register import add_register
+from schemesim.cli.report import add_report
 from schemesim.cli.testing import add_testing
 from schemesim.cli.timer import add_timer
 from schemesim.errors import InputError, SchemesimError
@@ -71,6 +72,7 @@ def parser() -> argparse.ArgumentParser:
     add_audit(commands, common)
     add_testing(commands, common)
     add_timer(commands, common)
+    add_report(commands, common)
     add_campaign(commands)
     return top
 
@@ -116,6 +118,7 @@ def _run(options: argparse.Namespace) -> int:
     from schemesim.cli.commands import check, inject, show  # heavy: not needed to tell of bad arguments
     from schemesim.cli.decide import decide
     from schemesim.cli.register import outages, register
+    from schemesim.cli.report import report
     from schemesim.cli.study import study
     from schemesim.cli.testing import intervals, misoperations
     from schemesim.cli.timer import dial, importance, timer
@@ -126,5 +129,5 @@ def _run(options: argparse.Namespace) -> int:
     command = {"check": check, "show": show, "inject": inject, "study": study, "decide": decide,
                "register": register, "outages": outages, "audit": audit,
                "intervals": intervals, "misoperations": misoperations,
-               "timer": timer, "dial": dial, "importance": importance}[options.command]  # fmt: skip
+               "timer": timer, "dial": dial, "importance": importance, "report": report}[options.command]  # fmt: skip
     return command(load_scenario(options.file), options)
