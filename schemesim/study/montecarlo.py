@@ -4,9 +4,9 @@ Trial number t of a seed is the same trial whoever runs it: its answers and its 
 delays are looked up by (seed, name, trial). Chunks run anywhere therefore merge into
 just what one run over all the trials gives.
 
-Where no delay is random, trials with the same answers to the questions they meet are one
-run: a chunk is split question by question, and each distinct history is run once (the
-outcome is a function of asked answers only, rule R4).
+A chunk is one batch. Where no delay is random, trials with the same answers are one run and only
+counted; where some are, the endings are kept in columns (some 60 bytes a trial), and an
+:class:`End` is made of them only when it is asked for.
 """
 
 from __future__ import annotations
@@ -15,26 +15,29 @@ import math
 from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import Executor
 from dataclasses import dataclass
+from functools import cached_property
+from itertools import chain
 from statistics import NormalDist
 from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 
-from schemesim.engine.answers import DrawnAnswers, ForcedAnswers, drawn_answers
+from schemesim.engine.batch import run_batch
 from schemesim.engine.case import Case
-from schemesim.engine.event import DEFAULT_HORIZON_US, run_event
-from schemesim.engine.times import DelayTimes
+from schemesim.engine.event import DEFAULT_HORIZON_US
+from schemesim.engine.many import NEVER_US, ManyDrawn, ManyDrawnTimes
 from schemesim.errors import ErrorList, reject
 from schemesim.study.intervals import clopper_pearson, wilson
 from schemesim.study.tree import End, Happens
+from schemesim.study.trial_columns import Alike, Distinct, columns
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-CHUNK = 500
+CHUNK = 10_000
 """Trials in one piece of work where delays are random."""
 
-CHUNK_OF_HISTORIES = 50_000
+CHUNK_AT_FIXED_TIMES = 50_000
 """Trials in one piece of work where they are not."""
 
 Method = Literal["wilson", "clopper_pearson"]
@@ -69,7 +72,7 @@ class Mean:
     confidence: float
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Counts:
     """How many trials ended how; counts of other trials of the same seed can be added.
 
@@ -80,18 +83,36 @@ class Counts:
     ranges : tuple of (int, int)
         First trial and the one after the last, of each unbroken range run.
     ends : tuple of (End, int)
-        Distinct endings and how often each came, in an order of their own.
+        Distinct endings and how often each came, in an order of their own. Of many trials with
+        random delays nearly every one is distinct, and these are large: what is below does without.
     """
 
     event: str
     seed: int
     ranges: tuple[tuple[int, int], ...]
-    ends: tuple[tuple[End, int], ...]
+    _known: tuple[tuple[End, int], ...]
+    _columns: tuple[Alike, ...] = ()
+
+    @cached_property
+    def ends(self) -> tuple[tuple[End, int], ...]:
+        return _merged(self._each())
+
+    def _each(self) -> Iterator[tuple[End, int]]:
+        return chain(self._known, ((end, 1) for alike in self._columns for end in alike.ends()))
 
     @property
     def trials(self) -> int:
         """Trials counted."""
-        return sum(n for _, n in self.ends)
+        return sum(end - first for first, end in self.ranges)
+
+    def __eq__(self, other: object) -> bool:
+        if not isinstance(other, Counts):
+            return NotImplemented
+        mine, theirs = (self.event, self.seed, self.ranges), (other.event, other.seed, other.ranges)
+        return mine == theirs and self.ends == other.ends
+
+    def __hash__(self) -> int:
+        return hash((self.event, self.seed, self.ranges))
 
     def __add__(self, other: Counts) -> Counts:
         """Counts of both.
@@ -101,21 +122,43 @@ class Counts:
         InputError
             If they are of another event or seed, or share trials.
         """
-        if (self.event, self.seed) != (other.event, other.seed):
-            raise reject("counts", (other.event, other.seed), f"counts of {self.event!r} with seed {self.seed}")
-        ranges: list[tuple[int, int]] = []
-        for first, end in sorted((*self.ranges, *other.ranges)):
-            if ranges and first < ranges[-1][1]:
-                raise reject("counts", f"trials {first} to {ranges[-1][1] - 1} twice", "trials not counted before")
-            if ranges and first == ranges[-1][1]:
-                ranges[-1] = (ranges[-1][0], end)
-            else:
-                ranges.append((first, end))
-        return Counts(self.event, self.seed, tuple(ranges), _merged((*self.ends, *other.ends)))
+        return _sum(self.event, self.seed, (self, other))
 
     def count(self, event: Happens) -> int:
         """In how many trials an event happened."""
-        return sum(n for end, n in self.ends if event(end.outcome))
+        return sum(n for end, n in self._each() if event(end.outcome))
+
+    def t_clear_us(self) -> NDArray[np.int64]:
+        """Clearing time of every trial that was cleared, in microseconds, ascending."""
+        known = [(end.outcome.t_clear_us, n) for end, n in self._known if end.outcome.t_clear_us is not None]
+        times = [np.repeat([t for t, _ in known], [n for _, n in known]).astype(np.int64)]
+        for alike in self._columns:
+            clear = alike.times_us[:, 0]
+            times.append(clear[clear != NEVER_US])
+        return np.sort(np.concatenate(times))
+
+    def cleared(
+        self, within_us: int | None = None, confidence: float = 0.95, method: Method = "wilson"
+    ) -> Share:
+        """The probability that the fault is cleared (within a time) with an interval.
+
+        The same as :meth:`share` of that event, without making an outcome of every trial.
+
+        Parameters
+        ----------
+        within_us : int or None
+            Longest time in microseconds, counted as in time; None: whenever.
+        confidence : float
+        method : {"wilson", "clopper_pearson"}
+
+        Raises
+        ------
+        InputError
+            For a confidence outside 0..1 or another method.
+        """
+        times = self.t_clear_us()
+        happened = times.size if within_us is None else int(np.searchsorted(times, within_us, side="right"))
+        return self._share(happened, confidence, method)
 
     def share(self, event: Happens, confidence: float = 0.95, method: Method = "wilson") -> Share:
         """The probability of an event with an interval.
@@ -132,9 +175,11 @@ class Counts:
         InputError
             For a confidence outside 0..1 or another method.
         """
-        if method not in ("wilson", "clopper_pearson"):
+        return self._share(self.count(event) if _is_known(method) else 0, confidence, method)
+
+    def _share(self, happened: int, confidence: float, method: Method) -> Share:
+        if not _is_known(method):
             raise reject("interval", method, "'wilson' or 'clopper_pearson'")
-        happened = self.count(event)
         interval = wilson if method == "wilson" else clopper_pearson
         low, high = interval(happened, self.trials, confidence)
         return Share(happened, self.trials, low, high, confidence)
@@ -152,14 +197,16 @@ class Counts:
         n = self.trials
         if n < 2:
             raise reject("trials", n, "two or more for a mean with an interval")
-        pairs = [(value(end), times) for end, times in self.ends]
+        pairs = [(value(end), times) for end, times in self._each()]
         mean = math.fsum(v * times for v, times in pairs) / n
         spread = math.fsum(times * (v - mean) ** 2 for v, times in pairs) / (n - 1)
         half = NormalDist().inv_cdf(0.5 + confidence / 2) * math.sqrt(spread / n)
         return Mean(mean, mean - half, mean + half, confidence)
 
     def __repr__(self) -> str:
-        return f"Counts({self.event}, seed {self.seed}: {self.trials} trials, {len(self.ends)} distinct outcomes)"
+        kinds = len(self._known) + len({alike.ending for alike in self._columns})
+        what = "kinds of outcome" if self._columns else "distinct outcomes"
+        return f"Counts({self.event}, seed {self.seed}: {self.trials} trials, {kinds} {what})"
 
 
 def simulate(
@@ -195,7 +242,7 @@ def simulate(
         For numbers that are not whole, or negative.
     """
     if chunk is None:
-        chunk = CHUNK if case.random else CHUNK_OF_HISTORIES
+        chunk = CHUNK if case.random else CHUNK_AT_FIXED_TIMES
     errors = ErrorList()
     wanted = (("trials", trials, 0), ("seed", seed, 0), ("first_trial", first_trial, 0), ("chunk", chunk, 1))
     for name, number, least in wanted:
@@ -206,10 +253,7 @@ def simulate(
     starts = range(first_trial, first_trial + trials, chunk)
     work = [_Chunk(case, seed, start, min(start + chunk, first_trial + trials), horizon_us) for start in starts]
     parts: Iterable[Counts] = map(_run_chunk, work) if executor is None else executor.map(_run_chunk, work)
-    out = Counts(str(case.event), seed, (), ())
-    for part in parts:
-        out = out + part
-    return out
+    return _sum(str(case.event), seed, parts)
 
 
 @dataclass(frozen=True)
@@ -222,44 +266,47 @@ class _Chunk:
 
 
 def _run_chunk(work: _Chunk) -> Counts:
-    found = _by_history(work) if not work.case.random else _one_by_one(work)
-    return Counts(str(work.case.event), work.seed, ((work.first, work.end),), _merged(found))
+    case, count = work.case, work.end - work.first
+    run, ranges = (str(case.event), work.seed), ((work.first, work.end),)
+    if case.random:
+        answers = ManyDrawn(case.program, work.seed, work.first, count)
+        times = ManyDrawnTimes(work.seed, work.first, count)
+        batch = run_batch(case, count, answers, times=times, horizon_us=work.horizon_us)
+        return Counts(*run, ranges, (), columns(batch))
+    distinct = Distinct(case, work.seed, work.first, count)
+    batch = run_batch(case, distinct.times.size, distinct, horizon_us=work.horizon_us)
+    each = (
+        (end, int(distinct.times[row]))
+        for alike in columns(batch)
+        for row, end in zip(alike.rows.tolist(), alike.ends(), strict=True)
+    )
+    return Counts(*run, ranges, _merged(each))
 
 
-def _one_by_one(work: _Chunk) -> Iterator[tuple[End, int]]:
-    for trial in range(work.first, work.end):
-        ran = run_event(
-            work.case,
-            DrawnAnswers(work.case.program, work.seed, trial),
-            times=DelayTimes(work.seed, trial),
-            horizon_us=work.horizon_us,
-        )
-        yield End(ran.outcome, ran.final_mask), 1
+def _sum(event: str, seed: int, parts: Iterable[Counts]) -> Counts:
+    """Counts of one event and seed taken together."""
+    ranges: list[tuple[int, int]] = []
+    known: list[tuple[tuple[End, int], ...]] = []
+    found: list[Alike] = []
+    for part in parts:
+        if (event, seed) != (part.event, part.seed):
+            raise reject("counts", (part.event, part.seed), f"counts of {event!r} with seed {seed}")
+        ranges += part.ranges
+        known.append(part._known)
+        found += part._columns
+    joined: list[tuple[int, int]] = []
+    for first, end in sorted(ranges):
+        if joined and first < joined[-1][1]:
+            raise reject("counts", f"trials {first} to {joined[-1][1] - 1} twice", "trials not counted before")
+        if joined and first == joined[-1][1]:
+            joined[-1] = (joined[-1][0], end)
+        else:
+            joined.append((first, end))
+    return Counts(event, seed, tuple(joined), _merged(chain.from_iterable(known)), tuple(found))
 
 
-def _by_history(work: _Chunk) -> Iterator[tuple[End, int]]:
-    """Run each distinct history of the chunk once; the trials that share it are counted."""
-    count = work.end - work.first
-    drawn: dict[int, NDArray[np.bool_]] = {}
-    waiting: list[tuple[dict[int, bool], NDArray[np.intp]]] = [({}, np.arange(count))]
-    while waiting:
-        answers, trials = waiting.pop()
-        if not trials.size:
-            continue
-        ran = run_event(work.case, ForcedAnswers(answers), horizon_us=work.horizon_us)
-        met = dict(answers)
-        for q, _ in ran.asked:
-            if q in answers:
-                continue
-            if q not in drawn:
-                drawn[q] = drawn_answers(work.case.program, work.seed, q, work.first, count)
-            yes = drawn[q][trials]
-            if yes.any():
-                waiting.append(({**met, q: True}, trials[yes]))
-                trials = trials[~yes]
-            met[q] = False
-        if trials.size:
-            yield End(ran.outcome, ran.final_mask), int(trials.size)
+def _is_known(method: str) -> bool:
+    return method in ("wilson", "clopper_pearson")
 
 
 def _merged(items: Iterable[tuple[End, int]]) -> tuple[tuple[End, int], ...]:

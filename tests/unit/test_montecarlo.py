@@ -14,6 +14,7 @@ from schemesim.engine.answers import DrawnAnswers, drawn_answers
 from schemesim.engine.case import Case
 from schemesim.engine.event import run_event
 from schemesim.engine.outcome import Outcome
+from schemesim.engine.times import DelayTimes
 from schemesim.errors import InputError
 from schemesim.scheme.distributions import Uniform
 from schemesim.scheme.model import Role
@@ -94,7 +95,7 @@ def test_chunks_add_up_to_one_run(delay: Uniform | None) -> None:
 
 
 @pytest.mark.parametrize("scheme", [feeder_scheme, voting_scheme], ids=["feeder", "voting"])
-def test_trials_run_by_history_end_as_each_run_on_its_own(scheme: Any) -> None:
+def test_trials_run_together_end_as_each_run_on_its_own(scheme: Any) -> None:
     case = case_of(scheme(as_float))
     assert not case.random
     each = Counter(
@@ -103,6 +104,31 @@ def test_trials_run_by_history_end_as_each_run_on_its_own(scheme: Any) -> None:
     )
     assert dict(simulate(case, 700, SEED, first_trial=5, chunk=300).ends) == each
     assert len(each) > 2
+
+
+def test_trials_with_random_times_end_as_each_run_on_its_own() -> None:
+    case = case_of(feeder_scheme(as_float, Uniform(40_000, 60_000)), observe=("M1.trip",))
+    each = [
+        run_event(case, DrawnAnswers(case.program, SEED, t), times=DelayTimes(SEED, t)) for t in range(5, 405)
+    ]
+    counts = simulate(case, 400, SEED, first_trial=5, chunk=170)
+    assert dict(counts.ends) == Counter(End(r.outcome, r.final_mask) for r in each)
+    assert counts.t_clear_us().tolist() == sorted(
+        r.outcome.t_clear_us for r in each if r.outcome.t_clear_us is not None
+    )
+    assert any(r.outcome.operated for r in each)
+
+
+@pytest.mark.parametrize("delay", [None, Uniform(40_000, 60_000)], ids=["fixed", "random"])
+def test_cleared_is_the_share_of_its_event(delay: Uniform | None) -> None:
+    counts = simulate(case_of(feeder_scheme(as_float, delay)), 400, SEED)
+    assert counts.cleared() == counts.share(lambda o: o.t_clear_us is not None)
+    edge = int(counts.t_clear_us()[200])
+    within = counts.cleared(edge, 0.9, "clopper_pearson")
+    assert within == counts.share(lambda o: o.t_clear_us is not None and o.t_clear_us <= edge, 0.9, "clopper_pearson")
+    assert counts.cleared(edge - 1).successes < within.successes <= counts.cleared().successes
+    with pytest.raises(InputError, match="interval"):
+        counts.cleared(method="normal")  # type: ignore[arg-type]  # that is the test
 
 
 def test_answers_drawn_in_a_row_are_those_drawn_one_by_one(case: Case) -> None:
