@@ -64,10 +64,12 @@ if TYPE_CHECKING:
     )
     from schemesim.plant.terminals import Terminal, protected_object
     from schemesim.plant.zones import duty, isolation_zones, merged_elements, zone_graph
+    from schemesim.report.page import HtmlPage
     from schemesim.report.pictures import plot_timeline
     from schemesim.report.timeline import replay, timeline
     from schemesim.scenario import Scenario, load_scenario, save_scenario
     from schemesim.scenario.deciding import decide
+    from schemesim.scenario.reporting import report_scenario
     from schemesim.scenario.testing import intervals_scenario, misoperations_scenario
     from schemesim.scenario.timers import dial_scenario, importance_scenario, timer_scenario
     from schemesim.scenario.weak import outages_scenario, register_scenario
@@ -205,6 +207,7 @@ _HOMES = {
     "schemesim.study.frontier": "frontier next_best",
     "schemesim.study.sensitivity": "uncertainty",
     "schemesim.report.timeline": "replay timeline",
+    "schemesim.report.page": "HtmlPage",
     "schemesim.report.pictures": "plot_timeline",
     "schemesim.scenario": "Scenario load_scenario save_scenario",
     "schemesim.scenario.deciding": "decide",
@@ -220,6 +223,7 @@ _HOMES = {
     "schemesim.scheme.starting_values": "load_starting_values",
     "schemesim.study.proof_intervals": "TestCosts study_test_intervals",
     "schemesim.study.misoperations": "misoperation study_misoperations",
+    "schemesim.scenario.reporting": "report_scenario",
     "schemesim.scenario.testing": "intervals_scenario misoperations_scenario",
     "schemesim.study.timer_study": "Weights study_timers",
     "schemesim.study.dials": "dial_policies study_dial",
@@ -256,6 +260,7 @@ __all__ = [
     "FixedAnswers",
     "ForcedAnswers",
     "Gate",
+    "HtmlPage",
     "InZone",
     "InputError",
     "Latch",
@@ -357,6 +362,7 @@ __all__ = [
     "register",
     "register_scenario",
     "replay",
+    "report_scenario",
     "ring",
     "run_event",
     "save_scenario",

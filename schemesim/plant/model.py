@@ -13,7 +13,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from enum import StrEnum
 from functools import cached_property
-from typing import TypeVar
+from typing import TYPE_CHECKING, TypeVar
 
 import networkx as nx
 
@@ -25,6 +25,11 @@ from schemesim.plant.net_data import (
     TransformerImpedance,
     impedance_mistakes,
 )
+
+if TYPE_CHECKING:
+    Graph = nx.MultiGraph[str]
+else:
+    Graph = nx.MultiGraph  # takes no parameter when run, and annotations are read by the API reference
 
 
 class SectionKind(StrEnum):
@@ -247,7 +252,7 @@ class Plant:
         return tuple(s.name for s in self.sources if s.trips)
 
     @property
-    def graph(self) -> nx.MultiGraph[str]:
+    def graph(self) -> Graph:
         """A fresh networkx multigraph: sections as nodes, devices as keyed edges."""
         graph: nx.MultiGraph[str] = nx.MultiGraph()
         for s in self.sections:

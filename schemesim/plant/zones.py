@@ -14,7 +14,7 @@ from dataclasses import dataclass
 import networkx as nx
 
 from schemesim.errors import nearest, reject
-from schemesim.plant.model import DeviceKind, Plant, SectionKind
+from schemesim.plant.model import DeviceKind, Graph, Plant, SectionKind
 
 _NAMING_ORDER = (
     SectionKind.BUS,
@@ -84,7 +84,7 @@ def isolation_zones(plant: Plant) -> Zones:
     )
 
 
-def zone_graph(plant: Plant) -> nx.MultiGraph[str]:
+def zone_graph(plant: Plant) -> Graph:
     """The graph of zones as a networkx multigraph a user can take and draw.
 
     Nodes are isolation zones (attributes ``sections``, ``sources``, ``load_mw``),
