@@ -1,0 +1,93 @@
+"""What CTs and VTs give to elements that measure: phasors of one fault in one topology.
+
+Currents are primary amperes and voltages primary volts, root mean square, as sequence
+components (zero, positive, negative) of phase a. A CT core that is open gives no current
+and a lost VT no voltage (rule R5).
+"""
+
+from __future__ import annotations
+
+import cmath
+import math
+from collections.abc import Iterable
+from dataclasses import dataclass, field
+
+from schemesim.plant.model import Plant
+from schemesim.plant.net_case import Phasors, Solution
+from schemesim.plant.terminals import Terminal
+
+A = cmath.rect(1.0, math.radians(120.0))
+"""The operator that turns by a third of a turn."""
+
+NONE: Phasors = (0j, 0j, 0j)
+
+
+def phases_of(sequence: Phasors) -> Phasors:
+    """Phases a, b and c of sequence components (zero, positive, negative).
+
+    Examples
+    --------
+    >>> [round(abs(x), 6) for x in phases_of((0j, 1 + 0j, 0j))]
+    [1.0, 1.0, 1.0]
+    """
+    zero, positive, negative = sequence
+    return (
+        zero + positive + negative,
+        zero + A.conjugate() * positive + A * negative,
+        zero + A * positive + A.conjugate() * negative,
+    )
+
+
+@dataclass(frozen=True)
+class Quantities:
+    """Phasors at CTs and VTs.
+
+    Parameters
+    ----------
+    plant : Plant
+    solution : Solution
+        Of the fault in the present topology.
+    memory : Solution
+        Before the fault, for what polarises by memory.
+    open_cts, lost_vts : frozenset of str
+        CTs whose core is open, VTs whose winding is lost.
+    """
+
+    plant: Plant
+    solution: Solution
+    memory: Solution
+    open_cts: frozenset[str] = frozenset()
+    lost_vts: frozenset[str] = frozenset()
+    _currents: dict[Terminal, Phasors] = field(default_factory=dict)
+    _voltages: dict[str, Phasors] = field(default_factory=dict)
+
+    def current(self, terminals: Iterable[Terminal]) -> Phasors:
+        """Sum of the currents of CTs (or of sources by their name) into their inner side."""
+        zero = positive = negative = 0j
+        for t in terminals:
+            i = self.at(t)
+            zero, positive, negative = zero + i[0], positive + i[1], negative + i[2]
+        return zero, positive, negative
+
+    def at(self, terminal: Terminal) -> Phasors:
+        """Current of one CT into its inner side."""
+        found = self._currents.get(terminal)
+        if found is None:
+            blind = terminal.ct in self.open_cts
+            found = self._currents[terminal] = NONE if blind else self.solution.current(terminal.ct, terminal.inner)
+        return found
+
+    def voltage(self, vt: str) -> Phasors:
+        """Phase-to-earth voltage at a VT."""
+        found = self._voltages.get(vt)
+        if found is None:
+            section = next(v.section for v in self.plant.vts if v.name == vt)
+            found = self._voltages[vt] = NONE if vt in self.lost_vts else self.solution.voltage(section, vt)
+        return found
+
+    def remembered(self, vt: str) -> complex:
+        """Positive-sequence voltage at a VT before the fault; 0 where the VT is lost."""
+        if vt in self.lost_vts:
+            return 0j
+        section = next(v.section for v in self.plant.vts if v.name == vt)
+        return self.memory.voltage(section, vt)[1]
