@@ -23,6 +23,7 @@ from schemesim.plant.model import (
     Source,
     VoltageTransformer,
 )
+from schemesim.plant.net_data import LineImpedance, SourceImpedance, TransformerImpedance
 
 CORES = ("1", "2", "3", "4")
 WINDINGS = ("1", "2")
@@ -225,7 +226,15 @@ def _good_name(name: str) -> bool:
     return bool(name) and name == name.strip() and not any(c in name for c in "\n\t\0@")
 
 
-def line(builder: PlantBuilder, name: str, length: float, *, kv: float = 0.0, load_mw: float = 0.0) -> None:
+def line(
+    builder: PlantBuilder,
+    name: str,
+    length: float,
+    *,
+    kv: float = 0.0,
+    load_mw: float = 0.0,
+    impedance: LineImpedance | None = None,
+) -> None:
     """Add a line of a length in the plant's length unit, between stations.
 
     Examples
@@ -235,14 +244,22 @@ def line(builder: PlantBuilder, name: str, length: float, *, kv: float = 0.0, lo
     >>> b.sections[0].kind.value, b.sections[0].length
     ('line', 40.0)
     """
-    builder.add(Section(name=name, kind=SectionKind.LINE, kv=kv, length=length, load_mw=load_mw))
+    kind = SectionKind.LINE
+    builder.add(Section(name=name, kind=kind, kv=kv, length=length, load_mw=load_mw, impedance=impedance))
 
 
 def transformer(
-    builder: PlantBuilder, name: str, *, station: str = "", kv: float = 0.0, length: float = 0.0
+    builder: PlantBuilder,
+    name: str,
+    *,
+    station: str = "",
+    kv: float = 0.0,
+    length: float = 0.0,
+    impedance: TransformerImpedance | None = None,
 ) -> None:
     """Add a transformer; ``length`` is that of the line its impedance corresponds to, so reaches pass through."""
-    builder.add(Section(name=name, kind=SectionKind.TRANSFORMER, station=station, kv=kv, length=length))
+    kind = SectionKind.TRANSFORMER
+    builder.add(Section(name=name, kind=kind, station=station, kv=kv, length=length, impedance=impedance))
 
 
 def generator(
@@ -253,6 +270,7 @@ def generator(
     kv: float = 0.0,
     trips: bool = True,
     impedance_pu: float | None = None,
+    impedance: SourceImpedance | None = None,
 ) -> None:
     """Add a generator and its source ``<name>.unit``, with a trip of its own (field, prime mover) by default.
 
@@ -265,7 +283,14 @@ def generator(
     """
     builder.add(
         Section(name=name, kind=SectionKind.GENERATOR, station=station, kv=kv),
-        Source(name=f"{name}.unit", section=name, station=station, trips=trips, impedance_pu=impedance_pu),
+        Source(
+            name=f"{name}.unit",
+            section=name,
+            station=station,
+            trips=trips,
+            impedance_pu=impedance_pu,
+            impedance=impedance,
+        ),
     )
 
 
@@ -277,6 +302,7 @@ def infeed(
     station: str = "",
     feeds_own_zone: bool = False,
     impedance_pu: float | None = None,
+    impedance: SourceImpedance | None = None,
 ) -> None:
     """Add the infeed of a grid that is not modelled, at a section of the plant.
 
@@ -291,6 +317,7 @@ def infeed(
             station=station,
             feeds_own_zone=feeds_own_zone,
             impedance_pu=impedance_pu,
+            impedance=impedance,
         )
     )
 
