@@ -1,0 +1,105 @@
+"""Which tests run which lines, and how long each takes: one run of the tests under ``coverage``."""
+
+from __future__ import annotations
+
+import json
+import sys
+from collections import Counter
+from collections.abc import Mapping
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import pytest
+
+if TYPE_CHECKING:
+    import coverage
+
+KEPT = 200
+"""Tests kept for a line."""
+
+
+class Contexts:
+    """A plugin that tells coverage which test is running and notes how long it takes."""
+
+    def __init__(self, cov: coverage.Coverage) -> None:
+        self.cov = cov
+        self.seconds: dict[str, float] = {}
+        self.failed: list[str] = []
+
+    def pytest_collection_modifyitems(self, items: list[pytest.Item]) -> None:
+        """Leave out what drives a browser."""
+        items[:] = [item for item in items if not item.get_closest_marker("browser")]
+
+    @pytest.hookimpl(hookwrapper=True)
+    def pytest_runtest_protocol(self, item: pytest.Item) -> Any:
+        """Around one test."""
+        self.cov.switch_context(item.nodeid)
+        yield
+        self.cov.switch_context("")
+
+    def pytest_runtest_logreport(self, report: pytest.TestReport) -> None:
+        """After set-up, call and tear-down."""
+        self.seconds[report.nodeid] = self.seconds.get(report.nodeid, 0.0) + report.duration
+        if report.failed:
+            self.failed.append(report.nodeid)
+
+
+def cover(paths: list[str], into: Path) -> None:
+    """Run the tests in the present directory and write the map."""
+    import coverage
+
+    cov = coverage.Coverage(data_file=None, source=["schemesim"], config_file=False)
+    contexts = Contexts(cov)
+    cov.start()
+    pytest.main(["-q", "-p", "no:cacheprovider", "-n0", *paths], plugins=[contexts])
+    cov.stop()
+    failed = set(contexts.failed)
+    if not contexts.seconds:
+        raise SystemExit("no test ran")
+    if failed:
+        print(f"left out, for they fail unmutated: {sorted(failed)}", file=sys.stderr)
+    data = cov.get_data()
+    names = sorted(contexts.seconds)
+    number = {name: n for n, name in enumerate(names)}
+    lines: dict[str, dict[int, list[int]]] = {}
+    for file in sorted(data.measured_files()):
+        found = lines.setdefault(str(Path(file).relative_to(Path.cwd())), {})
+        for line, tests in data.contexts_by_lineno(file).items():
+            here = spread([t for t in tests if t in number and t not in failed], contexts.seconds)
+            found[line] = [number[t] for t in here[:KEPT]]
+    text = json.dumps({"tests": names, "seconds": [round(contexts.seconds[n], 4) for n in names], "lines": lines})
+    into.write_text(text, encoding="utf-8")
+
+
+def spread(tests: list[str], seconds: Mapping[str, float]) -> list[str]:
+    """The shortest test of every file, then the second of every file, and so on."""
+    taken: Counter[str] = Counter()
+    turns = []
+    for t in sorted(tests, key=lambda t: (seconds[t], t)):
+        file = t.partition("::")[0]
+        turns.append((taken[file], seconds[t], t))
+        taken[file] += 1
+    return [t for _, _, t in sorted(turns)]
+
+
+def choose(found: dict[str, Any], file: str, first: int, last: int, budget_s: float) -> list[str]:
+    """Tests for a change in some lines, of every file in turn, as many as a budget of seconds allows.
+
+    Lines that run on import only are tried by what runs any of the module.
+    """
+    of = found["lines"].get(file, {})
+    tests = {t for line in range(first, last + 1) for t in of.get(str(line), ())}
+    if not tests:
+        tests = {t for here in of.values() for t in here}
+    seconds = dict(zip(found["tests"], found["seconds"], strict=True))
+    out: list[str] = []
+    spent = 0.0
+    for t in spread([found["tests"][n] for n in tests], seconds):
+        if not out or spent + seconds[t] <= budget_s:  # one at least
+            spent += seconds[t]
+            out.append(t)
+    return out
+
+
+if __name__ == "__main__":
+    cover(sys.argv[2:], Path(sys.argv[1]))
