@@ -40,7 +40,7 @@ def add_register(commands: Any, common: argparse.ArgumentParser) -> None:
         action="append",
         default=[],
         help='a kind or a pattern of names that is monitored and reported, e.g. channel or "*/DC *=low_voltage"; '
-        "of a DC supply low_voltage,open_circuit by default; several times",
+        "of a DC supply low_voltage,open_circuit by default; several times; else as the scenario says",
     )
     out = commands.add_parser("outages", parents=[common, shared], help="what becomes critical with one item out")
     out.add_argument("--kind", metavar="KIND", action="append", help="set, dc, channel or breaker; several times")
@@ -50,7 +50,7 @@ def add_register(commands: Any, common: argparse.ArgumentParser) -> None:
         metavar="WHAT=HOURS",
         action="append",
         default=[],
-        help="hours out per year of a kind or of a name, e.g. breaker=40; several times",
+        help="hours out per year of a kind or of a name, e.g. breaker=40; several times; else as the scenario says",
     )
     out.add_argument("--epsilon", metavar="MASS", default="1e-3", help="left unexplored at each location (1e-3)")
 
@@ -67,7 +67,7 @@ def register(scenario: Scenario, options: argparse.Namespace) -> int:
             scenario,
             options.policy,
             locations=_locations(scenario, options),
-            monitored=monitored,
+            monitored=monitored or None,
             pairs=options.pairs,
             executor=executor,
             progress=Progress("register", options.quiet),

@@ -25,8 +25,8 @@ def add_timer(commands: Any, common: argparse.ArgumentParser) -> None:
     shared.add_argument("--policy", metavar="NAME", help="a policy other than the one in use")
     shared.add_argument("--location", metavar="SECTION[@POS]", action="append", help="only here; several times")
     one = commands.add_parser("timer", parents=[common, shared], help="how long breaker failure and zone 2 may wait")
-    one.add_argument("--limit", metavar="MS", default="250", help="total clearing with a breaker stuck (250)")
-    one.add_argument("--zone-2-limit", metavar="MS", default="500", help="clearing by a remote zone 2 (500)")
+    one.add_argument("--limit", metavar="MS", help="total clearing with a breaker stuck (as the scenario says)")
+    one.add_argument("--zone-2-limit", metavar="MS", help="clearing by a remote zone 2 (as the scenario says)")
     one.add_argument("--needless", metavar="COST", default="1", help="cost of a needless trip, in any unit (1)")
     one.add_argument("--late", metavar="COST", default="1", help="cost of a late clearing, in the same unit (1)")
     one.add_argument("--needless-target", metavar="P", default="1e-3", help="target of the band (1e-3)")
@@ -242,8 +242,8 @@ def _bracket(row: Mapping[str, Any], name: str) -> str | None:
     return None if low is None else show(low, high)
 
 
-def _us(text: str, what: str) -> int:
-    return round(1000 * number_of(text, what, 0, 1e6))
+def _us(text: str | None, what: str) -> int | None:
+    return None if text is None else round(1000 * number_of(text, what, 0, 1e6))
 
 
 def _table(rows: list[dict[str, Any]]) -> list[str]:

@@ -34,11 +34,14 @@ def settings_of(notes: Notes, s: StudyIn) -> StudySettings:
 
 def limits_of(notes: Notes, given: LimitsIn) -> Limits:
     """Limits of the clearing time."""
-    default = Limits().default_us if given.limit_ms is None else from_ms(given.limit_ms)
+    usual = Limits()
+    default = usual.default_us if given.limit_ms is None else from_ms(given.limit_ms)
+    backup = usual.backup_us if given.backup_ms is None else from_ms(given.backup_ms)
+    zone_2 = usual.zone_2_us if given.zone_2_ms is None else from_ms(given.zone_2_ms)
     by_kv = {x.kv: from_ms(x.limit_ms or 0.0) for x in given.by_kv}
     if len(by_kv) < len(given.by_kv):
         notes.note(("limits", "by_kv"), "by_kv", [x.kv for x in given.by_kv], "each voltage once")
-    return Limits(default, tuple(sorted(by_kv.items())))
+    return Limits(default, tuple(sorted(by_kv.items())), backup, zone_2)
 
 
 def frequencies_of(

@@ -9,6 +9,7 @@ from schemesim.scenario.build_data import failure_data_of
 from schemesim.scenario.build_plant import plant_of
 from schemesim.scenario.build_study import frequencies_of, limits_of, run_of, settings_of
 from schemesim.scenario.locate import Path
+from schemesim.scenario.maintenance import maintenance_of
 from schemesim.scenario.model import Scenario
 from schemesim.scenario.money import money_of
 from schemesim.scenario.names import BUILT_IN
@@ -25,6 +26,7 @@ def scenario_of(notes: Notes, said: ScenarioIn) -> Scenario | None:
     data = failure_data_of(notes, said.failure_data)
     settings = settings_of(notes, said.study)
     limits = limits_of(notes, said.limits)
+    maintenance = maintenance_of(notes, said.maintenance)
     if plant is None:
         return None
     frequencies = frequencies_of(notes, plant, said.fault_frequencies, settings.positions)
@@ -47,6 +49,7 @@ def scenario_of(notes: Notes, said: ScenarioIn) -> Scenario | None:
         name=said.name,
         description=said.description,
         money=money,
+        maintenance=maintenance,
     )
 
 
@@ -62,6 +65,8 @@ def parts_of(notes: Notes, said: ScenarioIn, bad: frozenset[str]) -> None:
         settings_of(notes, said.study)
     if "limits" not in bad:
         limits_of(notes, said.limits)
+    if "maintenance" not in bad:
+        maintenance_of(notes, said.maintenance)
 
 
 def policies_of(notes: Notes, said: ScenarioIn) -> dict[str, Policy]:

@@ -141,7 +141,7 @@ def decide(
     ----------
     scenario : Scenario
     policies : iterable of str or None
-        Variants; the first is the base. By default all of the scenario, by name.
+        Variants; the first is the base. By default those that the scenario's money names, else all, by name.
     edits : iterable of Edit
         Further variants: the start with each edit.
     start : str or None
@@ -205,7 +205,7 @@ def _decided(
     most_steps: int | None,
     whole: bool,
 ) -> Decision:
-    names = list(dict.fromkeys(scenario.policies if policies is None else policies))
+    names = list(dict.fromkeys((money.policies or scenario.policies) if policies is None else policies))
     errors = ErrorList()
     for name in names:
         if name not in scenario.policies:

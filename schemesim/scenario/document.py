@@ -9,6 +9,7 @@ from schemesim.engine.sensing import NoFault
 from schemesim.errors import reject
 from schemesim.plant.model import Location, Plant, SectionKind
 from schemesim.scenario.locate import Data
+from schemesim.scenario.maintenance import maintenance_data
 from schemesim.scenario.model import ListedRun, Scenario
 from schemesim.scenario.money import money_data
 from schemesim.scenario.parts import policy_data
@@ -37,6 +38,8 @@ def document_of(scenario: Scenario) -> Data:
         "limits": {
             "limit_ms": ms(scenario.limits.default_us),
             "by_kv": [{"kv": kv, "limit_ms": ms(us)} for kv, us in scenario.limits.by_kv],
+            "backup_ms": ms(scenario.limits.backup_us),
+            "zone_2_ms": ms(scenario.limits.zone_2_us),
         },
         "study": {
             "epsilon": s.epsilon,
@@ -49,6 +52,7 @@ def document_of(scenario: Scenario) -> Data:
         },
         "runs": [_run(r) for r in scenario.runs],
         "money": _money(scenario),
+        "maintenance": maintenance_data(scenario.maintenance),
     }
     return _pruned(data)
 

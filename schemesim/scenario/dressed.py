@@ -8,6 +8,7 @@ from fnmatch import fnmatchcase
 from schemesim.engine.sensing import NoFault
 from schemesim.errors import InputError, Problem, nearest
 from schemesim.scenario.locate import Path
+from schemesim.scenario.maintenance import check_maintenance
 from schemesim.scenario.model import ListedRun, Scenario
 from schemesim.scenario.money import check_costs
 from schemesim.scenario.notes import Notes
@@ -41,6 +42,7 @@ def check_dressed(notes: Notes, scenario: Scenario) -> None:
                 expected = f"a failure mode of what the pattern fits: {', '.join(known)}"
                 notes.note((*path, "modes", str(mode)), "failure mode", str(mode), expected)
     check_patterns(notes, scenario.data.rates, components.values())
+    check_maintenance(notes, scenario.maintenance, schemes.values(), scenario.plant)
     by_name = {c.name: c for c in scenario.data.common_causes}
     for i, name in enumerate(_names(order)):
         if name in by_name:

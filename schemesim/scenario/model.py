@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
+from fnmatch import fnmatchcase
 from typing import TYPE_CHECKING
 
 from schemesim.engine.event import DEFAULT_HORIZON_US
@@ -15,6 +16,7 @@ from schemesim.scheme.dress import dress
 from schemesim.scheme.failure_data import FailureData
 from schemesim.scheme.model import Ask, Scheme
 from schemesim.scheme.policy import Policy
+from schemesim.study.footnote import Monitored
 from schemesim.study.money import Money
 
 if TYPE_CHECKING:
@@ -24,6 +26,13 @@ if TYPE_CHECKING:
 
 DEFAULT_LIMIT_US = 150_000
 """Limit of the clearing time where a file states none: an assumed value, common practice at transmission voltages."""
+
+
+BACKUP_LIMIT_US = 250_000
+"""Longest clearing with a breaker stuck where a file states none: 15 cycles of 60 Hz (IEEE C37.119, from memory)."""
+
+ZONE_2_LIMIT_US = 500_000
+"""Longest clearing by a remote zone 2 where a file states none: 30 cycles of 60 Hz (common practice)."""
 
 
 @dataclass(frozen=True)
@@ -36,6 +45,8 @@ class Limits:
         Limit in microseconds.
     by_kv : tuple of (kV, microseconds)
         Limits of sections of a nominal voltage.
+    backup_us, zone_2_us : int
+        Limits of clearing with a breaker stuck, and by a remote zone 2.
 
     Examples
     --------
@@ -45,6 +56,8 @@ class Limits:
 
     default_us: int = DEFAULT_LIMIT_US
     by_kv: tuple[tuple[float, int], ...] = ()
+    backup_us: int = BACKUP_LIMIT_US
+    zone_2_us: int = ZONE_2_LIMIT_US
 
     def at(self, kv: float) -> int:
         """The limit in microseconds at a nominal voltage in kV."""
@@ -78,6 +91,43 @@ class StudySettings:
     seed: int = 0
     trials: int = 10_000
     restore_h: float = 0.0
+
+
+@dataclass(frozen=True, slots=True)
+class OutageHours:
+    """How long items are out for planned work in a year.
+
+    Parameters
+    ----------
+    hours_per_yr : float
+        Of each item.
+    kind : str
+        ``"set"``, ``"dc"``, ``"channel"`` or ``"breaker"``; empty: of any kind.
+    pattern : str
+        Names of outages; ``*`` and ``?`` stand for any text.
+    """
+
+    hours_per_yr: float
+    kind: str = ""
+    pattern: str = "*"
+
+    def of(self, kind: str, name: str) -> bool:
+        """Whether an outage is meant."""
+        return self.kind in ("", kind) and (name == self.pattern or fnmatchcase(name, self.pattern))
+
+
+@dataclass(frozen=True, slots=True)
+class Maintenance:
+    """What is monitored, and how long items are out for planned work; of several entries the last that fits counts.
+
+    Parameters
+    ----------
+    monitored : tuple of Monitored
+    outage_hours : tuple of OutageHours
+    """
+
+    monitored: tuple[Monitored, ...] = ()
+    outage_hours: tuple[OutageHours, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -145,6 +195,7 @@ class Scenario:
     name, description : str
     money : Money or None
         Costs and values, for decisions.
+    maintenance : Maintenance
 
     Raises
     ------
@@ -166,6 +217,7 @@ class Scenario:
     name: str = ""
     description: str = ""
     money: Money | None = None
+    maintenance: Maintenance = field(default_factory=Maintenance)
     document: Data = field(default=None, compare=False, repr=False)
     """The plain data it was read from, used again when saved as long as it says the same."""
     _made: dict[object, object] = field(default_factory=dict, init=False, compare=False, repr=False)

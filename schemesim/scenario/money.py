@@ -61,6 +61,7 @@ class MoneyIn(Part):
     ranges: dict[str, Annotated[list[NotNegative], Field(min_length=2, max_length=2)]] = {}
     error_factors: dict[str, Annotated[float, PlainValidator(number(1, 1000))]] = {}
     locations: Annotated[list[Text], Field(max_length=1000)] = []
+    policies: Annotated[list[Name], Field(max_length=100)] = []
 
 
 def money_of(
@@ -80,6 +81,10 @@ def money_of(
     if said.start and said.start not in policies:
         tip = nearest(said.start, policies)
         notes.note((TOP, "start"), "policy", said.start, f"one of {', '.join(policies)}", tip)
+    for i, name in enumerate(said.policies):
+        if name not in policies:
+            tip = nearest(name, policies)
+            notes.note((TOP, "policies", i), "policy", name, f"one of {', '.join(policies)}", tip)
     for i, name in enumerate(said.additions):
         _known(notes, (TOP, "additions", i), "addition", name, ADDITIONS)
     for name in said.ranges:
@@ -119,6 +124,7 @@ def money_of(
             ranges=tuple((n, low, high) for n, (low, high) in sorted(said.ranges.items())),
             error_factors=tuple(sorted(said.error_factors.items())),
             locations=tuple(where),
+            policies=tuple(dict.fromkeys(said.policies)),
         ),
     )
     return found
@@ -174,6 +180,7 @@ def money_data(money: Money) -> dict[str, Any]:
         "values": {k: v for k, v in values.items() if v is not None},
         "start": money.start,
         "additions": list(money.additions),
+        "policies": list(money.policies),
         "ranges": {name: [low, high] for name, low, high in money.ranges},
         "error_factors": dict(money.error_factors),
     }

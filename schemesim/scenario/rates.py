@@ -13,9 +13,9 @@ from schemesim.errors import InputError, nearest
 from schemesim.scenario.locate import Path
 from schemesim.scenario.notes import Notes
 from schemesim.scenario.parts import Part
-from schemesim.scenario.scalars import Flag, Name, Rate, Share, choice, number
+from schemesim.scenario.scalars import Flag, Name, Rate, Share, Text, choice, number
 from schemesim.scheme.model import MODES, Component, ComponentKind, FailureMode
-from schemesim.scheme.unavailability import MAX_H, MAX_YR, Over, RateData, RateRule
+from schemesim.scheme.unavailability import MAX_H, MAX_YR, Over, Quality, RateData, RateRule
 
 TOP: Path = ("failure_data", "rates")
 
@@ -38,6 +38,8 @@ class RateIn(Part):
     repair_h: _Hours = 0.0
     revealed: Flag = False
     staggered: Flag = False
+    source: Text = ""
+    quality: Annotated[Quality | None, PlainValidator(choice(Quality))] = None
 
 
 def rates_of(notes: Notes, said: Iterable[RateIn]) -> tuple[RateRule, ...]:
@@ -58,10 +60,8 @@ def rates_of(notes: Notes, said: Iterable[RateIn]) -> tuple[RateRule, ...]:
                 notes.take(InputError([p]), (*path, p.subject) if p.subject in item.model_fields_set else path)
             continue
         if item.mode in words:
-            mode = FailureMode(item.mode)
-            found.append(
-                RateRule(kind=item.kind, mode=mode, data=data, pattern=item.pattern, staggered=item.staggered)
-            )
+            rest = {name: getattr(item, name) for name in ("pattern", "staggered", "source", "quality")}
+            found.append(RateRule(kind=item.kind, mode=FailureMode(item.mode), data=data, **rest))
     return tuple(found)
 
 
@@ -71,7 +71,9 @@ def rates_data(rules: Iterable[RateRule]) -> list[dict[str, Any]]:
     for r in rules:
         item: dict[str, Any] = {"kind": str(r.kind), "mode": str(r.mode), "pattern": r.pattern}
         item |= {f.name: getattr(r.data, f.name) for f in fields(RateData)}
-        out.append({k: v for k, v in (item | {"staggered": r.staggered}).items() if v is not None})
+        item |= {"staggered": r.staggered, "quality": None if r.quality is None else str(r.quality)}
+        item["source"] = r.source or None
+        out.append({k: v for k, v in item.items() if v is not None})
     return out
 
 

@@ -14,6 +14,7 @@ from pydantic import BeforeValidator, Field, PlainValidator
 
 from schemesim.plant.bays import CORES, WINDINGS, CtPlacement
 from schemesim.plant.model import DeviceKind, SectionKind
+from schemesim.scenario.maintenance import MaintenanceIn
 from schemesim.scenario.money import MoneyIn
 from schemesim.scenario.parts import Part, PolicyIn
 from schemesim.scenario.rates import OverIn, RateIn
@@ -261,6 +262,8 @@ class KvLimitIn(Part):
 class LimitsIn(Part):
     limit_ms: Limit = None
     by_kv: Annotated[list[KvLimitIn], Field(max_length=100)] = []
+    backup_ms: Limit = None
+    zone_2_ms: Limit = None
 
 
 class StudyIn(Part):
@@ -303,3 +306,4 @@ class ScenarioIn(Part):
     study: StudyIn = StudyIn()
     runs: Annotated[list[RunIn], Field(max_length=MAX_RUNS)] = []
     money: MoneyIn = MoneyIn()
+    maintenance: MaintenanceIn = MaintenanceIn()

@@ -23,12 +23,6 @@ from schemesim.study.dials import VOTES, DialStudy, dial_policies, study_dial
 from schemesim.study.importance_study import ImportanceStudy, Spoils, study_importance
 from schemesim.study.timer_study import TimerStudy, Weights, study_timers
 
-BACKUP_LIMIT_US = 250_000
-"""Longest total back-up clearing by default: 15 cycles of 60 Hz (IEEE C37.119, from memory)."""
-
-ZONE_2_LIMIT_US = 500_000
-"""Longest clearing by a remote zone 2 by default: 30 cycles of 60 Hz (common practice)."""
-
 POSITIONS: dict[str, tuple[object, ...]] = {
     "votes": VOTES,
     "line": ("distance", "permissive_underreach", "permissive_overreach", "blocking", "differential"),
@@ -41,8 +35,8 @@ def timer_scenario(
     policy: str | None = None,
     *,
     locations: Iterable[Location] | None = None,
-    limit_us: int = BACKUP_LIMIT_US,
-    zone_2_limit_us: int | None = ZONE_2_LIMIT_US,
+    limit_us: int | None = None,
+    zone_2_limit_us: int | None = None,
     weights: Weights | None = None,
     settings_us: Sequence[int] | None = None,
     step_us: int = 1000,
@@ -56,16 +50,18 @@ def timer_scenario(
         The policy in use by default.
     locations : iterable of Location or None
         By default every location of the scenario.
-    limit_us, zone_2_limit_us, weights, settings_us, step_us
-        See :func:`~schemesim.study.timer_study.study_timers`. The limits are those of back-up and not the scenario's.
+    limit_us, zone_2_limit_us : int or None
+        Longest clearing with a breaker stuck, and by a remote zone 2; by default those of the scenario.
+    weights, settings_us, step_us
+        See :func:`~schemesim.study.timer_study.study_timers`.
     """
     chosen = _chosen(scenario, locations)
     return study_timers(
         scenario.program(policy),
         LogicalSensing(),
         chosen,
-        limit_us=limit_us,
-        zone_2_limit_us=zone_2_limit_us,
+        limit_us=scenario.limits.backup_us if limit_us is None else limit_us,
+        zone_2_limit_us=scenario.limits.zone_2_us if zone_2_limit_us is None else zone_2_limit_us,
         frequencies=_rates(scenario, chosen),
         weights=weights,
         settings_us=settings_us,

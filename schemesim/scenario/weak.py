@@ -7,6 +7,9 @@ channel, so the register stays nearly as long. A second chain throughout ("full"
 left stands apart: breakers (one beside every fault, however many relays), relays that trip beyond their zone, and the
 common causes that the audit finds shared. Taking the second battery away again ("one battery") brings back one
 group, the DC supplies, and with it the worst entries of all: with no DC at Birch or Alder nothing there clears a fault.
+That is with nothing monitored. The demo's channels and trip coils are monitored and reported, and Alder's batteries for
+low voltage and open circuit: these are exempt, whatever they spoil. A lockout relay is not, nor are the batteries
+elsewhere, which are watched for low voltage alone.
 
 One item out turns a duplicate into a single set for as long as the work takes. With the first DC supply of Alder
 out, a fault on L1 is still cleared in time, but hangs on the second supply, relay, core, winding and coil; as the
@@ -22,6 +25,7 @@ from concurrent.futures import Executor
 from schemesim.engine.sensing import LogicalSensing
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
+from schemesim.scenario.maintenance import hours_by_name
 from schemesim.scenario.model import Scenario
 from schemesim.study.footnote import Monitored
 from schemesim.study.outage_results import KINDS, Outage, OutageStudy
@@ -36,7 +40,7 @@ def register_scenario(
     policy: str | None = None,
     *,
     locations: Iterable[Location] | None = None,
-    monitored: Iterable[Monitored] = (),
+    monitored: Iterable[Monitored] | None = None,
     pairs: bool = False,
     executor: Executor | None = None,
     progress: Progress | None = None,
@@ -50,12 +54,18 @@ def register_scenario(
         The policy in use by default.
     locations : iterable of Location or None
         By default every location of the scenario.
-    monitored, pairs, executor, progress
+    monitored : iterable of Monitored or None
+        By default as ``maintenance`` says.
+    pairs, executor, progress
         See :func:`~schemesim.study.register.register`.
     """
     chosen = _chosen(scenario, locations)
+    program = scenario.program(policy)
+    if monitored is None:  # an entry may fit the components of other policies only
+        parts = program.scheme.components
+        monitored = [m for m in scenario.maintenance.monitored if any(m.of(c.name, c.kind) for c in parts)]
     return register(
-        scenario.program(policy),
+        program,
         LogicalSensing(),
         chosen,
         limit_us={at: scenario.limit_us(at) for at in chosen},
@@ -93,7 +103,9 @@ def outages_scenario(
         Of ``"set"``, ``"dc"``, ``"channel"``, ``"breaker"``.
     names : iterable of str or None
         Only these outages, as named by :func:`~schemesim.study.outages.planned_outages`.
-    hours_per_yr, epsilon, executor, progress
+    hours_per_yr : mapping of str to float, or None
+        By default as ``maintenance`` says.
+    epsilon, executor, progress
         See :func:`~schemesim.study.outages.study_outages`.
 
     Raises
@@ -111,6 +123,8 @@ def outages_scenario(
             if name not in by_name:
                 raise reject("outage", name, "an item that can be taken out", tip=nearest(name, by_name))
         outages = tuple(by_name[name] for name in wanted)
+    if hours_per_yr is None:
+        hours_per_yr = hours_by_name(scenario.maintenance.outage_hours, outages)
     rates = {at: scenario.frequencies.get(at, 0.0) for at in chosen}
     return study_outages(
         program,

@@ -13,7 +13,6 @@ import csv
 import io
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
-from enum import StrEnum
 from importlib import resources
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -21,7 +20,7 @@ from typing import TYPE_CHECKING
 from schemesim.errors import InputError, Problem, nearest
 from schemesim.scheme.failure_data import NO_FAULT_PER_YR, FailureData
 from schemesim.scheme.model import MODES, ComponentKind, FailureMode
-from schemesim.scheme.unavailability import Over, RateData, RateRule, unavailability
+from schemesim.scheme.unavailability import Over, Quality, RateData, RateRule, unavailability
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -30,15 +29,6 @@ FILE = "starting_values.csv"
 MAX_BYTES = 1_000_000
 NUMBERS = ("rate_per_yr", "on_demand", "coverage", "test_interval_yr", "test_duration_h", "repair_h")
 COLUMNS = ("kind", "mode", *NUMBERS, "detection", "quality", "source")
-
-
-class Quality(StrEnum):
-    """How good a value is."""
-
-    PUBLISHED = "published"
-    FROM_MEMORY = "from memory"
-    ASSUMED = "assumed"
-    MEASURED = "measured"
 
 
 @dataclass(frozen=True, slots=True)
@@ -239,8 +229,9 @@ class _Row:
             for p in error.problems:
                 self.note(p.subject, p.value, p.expectation, p.tip)
             return None
-        rule = RateRule(kind=ComponentKind(kind), mode=FailureMode(mode), data=data)
-        return StartingValue(rule, Quality(quality), self.cells["source"])
+        good, source = Quality(quality), self.cells["source"]
+        rule = RateRule(kind=ComponentKind(kind), mode=FailureMode(mode), data=data, source=source, quality=good)
+        return StartingValue(rule, good, source)
 
     def _word(self, column: str, words: list[str]) -> str:
         text = self.cells[column]

@@ -260,6 +260,15 @@ def optimal_interval_yr(rate_per_yr: float, test_duration_h: float, coverage: fl
     return math.sqrt(2 * test_duration_h / HOURS_PER_YR / (rate_per_yr * (1 - coverage)))
 
 
+class Quality(StrEnum):
+    """How good a value is."""
+
+    PUBLISHED = "published"
+    FROM_MEMORY = "from memory"
+    ASSUMED = "assumed"
+    MEASURED = "measured"
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class RateRule:
     """Failure data of one mode of all components of a kind whose names match a pattern.
@@ -273,6 +282,10 @@ class RateRule:
         With ``*`` and ``?``; of the rules that fit a component the last counts.
     staggered : bool
         Items that stand in for each other are tested by turns, evenly spread over the interval; else together.
+    source : str
+        Where the values come from.
+    quality : Quality or None
+        How good they are, where that is said.
 
     Raises
     ------
@@ -285,6 +298,8 @@ class RateRule:
     data: RateData
     pattern: str = "*"
     staggered: bool = False
+    source: str = ""
+    quality: Quality | None = None
 
     def __post_init__(self) -> None:
         allowed = MODES[self.kind]

@@ -280,6 +280,8 @@ class Money:
         (log-normal); ``no_fault`` stands for the rates of tripping with no fault.
     locations : tuple of Location
         Fault locations studied, each standing for others of its kind; empty: all of them.
+    policies : tuple of str
+        Policies compared, the first the base; empty: all.
     """
 
     unit: str
@@ -290,6 +292,7 @@ class Money:
     ranges: tuple[tuple[str, float, float], ...] = ()
     error_factors: tuple[tuple[str, float], ...] = ()
     locations: tuple[Location, ...] = ()
+    policies: tuple[str, ...] = ()
 
     def __post_init__(self) -> None:
         errors = ErrorList()

@@ -14,8 +14,8 @@ from schemesim.engine.event import DEFAULT_HORIZON_US
 from schemesim.engine.program import Program, compile_scheme
 from schemesim.engine.sensing import Sensing
 from schemesim.errors import ErrorList, nearest
-from schemesim.plant.model import Location
-from schemesim.scheme.model import Breaker, ComponentKind, Gate
+from schemesim.plant.model import Location, Plant
+from schemesim.scheme.model import Breaker, ComponentKind, Gate, Scheme
 from schemesim.study.brackets import Bracket, exactly
 from schemesim.study.location import LocationOptions, LocationResult
 from schemesim.study.locations import LocationStudy, iter_locations
@@ -48,7 +48,12 @@ def planned_outages(program: Program, kinds: Iterable[str] = KINDS) -> tuple[Out
         if kind not in KINDS:
             errors.add("kind of outage", kind, f"any of {[*KINDS]}", tip=nearest(kind, KINDS))
     errors.raise_if_any()
-    scheme = program.scheme
+    return outages_of(program.scheme, program.plant, chosen)
+
+
+def outages_of(scheme: Scheme, plant: Plant, kinds: Iterable[str] = KINDS) -> tuple[Outage, ...]:
+    """The same of a scheme that is not compiled; see :func:`planned_outages`."""
+    chosen = list(kinds)
     out: list[Outage] = []
     if SET in chosen:
         sets: dict[str, set[str]] = {}
@@ -62,9 +67,9 @@ def planned_outages(program: Program, kinds: Iterable[str] = KINDS) -> tuple[Out
             names = (c.name for c in scheme.components if c.kind is component_kind)
             out += [Outage(kind, name, frozenset({name})) for name in names]
     if BREAKER in chosen:
-        devices = program.plant.device
+        devices = plant.device
         tripped = {b.name for b in scheme.blocks if isinstance(b, Breaker)}
-        out += [Outage(BREAKER, n) for n in program.plant.breakers if devices[n].closed and n in tripped]
+        out += [Outage(BREAKER, n) for n in plant.breakers if devices[n].closed and n in tripped]
     return tuple(o for o in out if o.kind == BREAKER or not o.components <= scheme.out_of_service)
 
 

@@ -231,7 +231,7 @@ def test_what_is_said_of_the_demo(policy: str, filled: str) -> None:
     """Each duplicate empties groups of the footnote; what is left stands apart."""
     demo = load_scenario(SMALL.parents[2] / "scenarios" / "demo.yaml")
     at = [Location("L1"), Location("L3", 0.05), Location("Alder.B1"), Location("Birch.B1")]
-    found = register_scenario(demo, policy, locations=at)
+    found = register_scenario(demo, policy, locations=at, monitored=())
     groups = [g for g in Group if g is not Group.APART]
     assert "".join(g.value[0] for g in groups if found.group(g)) == filled
     assert {"breaker", "unwanted operation"} <= {e.grouped[0].why for e in found.group(Group.APART)}
@@ -240,3 +240,22 @@ def test_what_is_said_of_the_demo(policy: str, filled: str) -> None:
             Effect.NOT_CLEARED
         }
         assert found.singles[0].name == "Birch/DC 1: lost"
+
+
+def test_what_the_demo_watches_is_exempt() -> None:
+    """Channels and coils; of the DC supplies Alder's alone, which is watched for both."""
+    demo = load_scenario(SMALL.parents[2] / "scenarios" / "demo.yaml")
+    at = [Location("L1"), Location("L3", 0.05), Location("Alder.B1")]
+    found = register_scenario(demo, "relay twice", locations=at)
+
+    def names(group: Group, exempt: bool) -> set[str]:
+        return {e.failures[0].partition(":")[0] for e in found.group(group, exempt=exempt)}
+
+    assert names(Group.COMMUNICATIONS, exempt=True) == {"L3/channel 1"}
+    assert names(Group.COMMUNICATIONS, exempt=False) == set()
+    assert names(Group.DC, exempt=True) == {"Alder/DC 1"}
+    assert "Birch/DC 1" in names(Group.DC, exempt=False)
+    control = names(Group.CONTROL, exempt=True)
+    assert "Alder.L1.CB/coil 1" in control
+    assert all("/coil " in name for name in control)
+    assert names(Group.CONTROL, exempt=False) == {"Alder/Alder.B1/86 1"}

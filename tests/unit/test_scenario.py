@@ -306,5 +306,5 @@ def test_the_description_of_the_format_holds() -> None:
         ScenarioIn.model_validate({"schemesim": 1, **data, "plant": plant})
     assert keys == {
         "plant", "policies", "failure_data", "out_of_service", "fault_frequencies", "limits", "study", "runs",
-        "money",
+        "money", "maintenance",
     }  # fmt: skip

@@ -65,19 +65,19 @@ def sites(pattern: str) -> list[Keys]:
 
 TIMES = sites(r"policies\..*_(ms|cycles)")
 FIXED_TIMES = [p for p in TIMES if isinstance(at(BASE, p), (int, float))]
-LIMITS = sites(r".*(limit_ms|horizon_ms)")
+LIMITS = sites(r".*(limit_ms|horizon_ms|backup_ms|zone_2_ms)")
 SHARES = sites(
     r".*(\.at|probability|relay_beta|coverage|on_demand|positions\[\d\]|modes\.\w+\.\w+|overrides\[\d\]\.modes\.\w+)"
 )
 RATES = sites(
     r".*(per_length_per_yr|by_kind\.\w+|elements\.\w+|no_fault_per_yr(\.\w+)?|\.kv|load_mw|restore_h|repair_h"
-    r"|rate_per_yr)"
+    r"|rate_per_yr|hours_per_yr)"
 )
 RATES = [p for p in RATES if isinstance(at(BASE, p), (int, float))]
 LENGTHS = sites(r".*\.length")
 WHOLES = sites(r"schemesim|study\.(seed|trials)|.*selection\.\w+")
-FLAGS = sites(r".*(remote_backup|trips|coupler_closed|revealed|staggered)")
-CHOICES = sites(r".*(\.layout|\.ct|\.start|rates_over|rates\[\d\]\.kind)")
+FLAGS = sites(r".*(remote_backup|trips|coupler_closed|revealed|staggered|reported)")
+CHOICES = sites(r".*(\.layout|\.ct|\.start|rates_over|rates\[\d\]\.(kind|quality)|monitored\[\d\]\.kind)")
 NAMES = sites(r".*\.(name|station|section|core|retrip_coil|base)|name|policy|study\.dispatch|.*cores\[\d\]")
 NUMBERS = FIXED_TIMES + LIMITS + SHARES + RATES + LENGTHS
 MAPPINGS = [
@@ -95,18 +95,19 @@ NAMED_LISTS = [p for p in LISTS if all(isinstance(x, dict) and "name" in x for x
 REQUIRED = sites(
     r"schemesim|plant|policy|.*(stations\[\d\]\.(name|layout|bays)|lines\[0\]\.\w+ame|\.length|load_mw|overrides\[\d\]\.pattern"
     r"|generators\[0\]\.name|feeders\[\d\]\.name|infeeds\[0\]\.(name|section)|dispatches\[0\]\.(name|out)"
-    r"|by_kv\[0\]\.(kv|limit_ms)|rates\[\d\]\.(kind|mode)"
+    r"|by_kv\[0\]\.(kv|limit_ms)|rates\[\d\]\.(kind|mode)|outage_hours\[\d\]\.hours_per_yr"
     r"|common_causes\[0\]\.(name|probability|members)|runs\[\d\]\.name)"
 )
 SPARE = sites(
     r"name|description|exceptions|out_of_service|fault_frequencies|limits|study|runs|failure_data\.relay_beta"
     r"|.*(stations\[\d\]\.(kv|windings)|lines\[0\]\.kv|\.trips|coupler_closed|remote_backup|selection|expect"
     r"|no_fault_per_yr|by_kind|elements|by_kv|epsilon|seed|trials|positions|restore_h|local_backup|reaches|rates"
-    r"|rates_over)"
+    r"|rates_over|quality|source|backup_ms|zone_2_ms|monitored|watches|outage_hours)|maintenance"
 )
 REFERENCES = sites(
     r"policy|study\.dispatch|.*(bays\[\d\]\.to|infeeds\[0\]\.section|\.base|out\[0\]|exceptions\.\w+|runs\[\d\]\.(fault"
-    r"|no_fault|policy|dispatch)|common_causes\[0\]|out_of_service\[0\])"
+    r"|no_fault|policy|dispatch)|common_causes\[0\]|out_of_service\[0\]|monitored\[1\]\.(pattern|watches\[0\])"
+    r"|outage_hours\[1\]\.(kind|pattern))"
 )
 REFERENCES = [p for p in REFERENCES if isinstance(at(BASE, p), str)]
 KEY_REFERENCES = sites(
