@@ -94,6 +94,7 @@ def power(value: float, digits: int = 3) -> str:
     mantissa, _, exponent = f"{value:.{digits - 1}e}".partition("e")
     if "." in mantissa:
         mantissa = mantissa.rstrip("0").rstrip(".")
+    mantissa = mantissa.replace("-", "−")
     return f"{mantissa}×10{str(int(exponent)).translate(_SUPERSCRIPT)}"
 
 
@@ -143,7 +144,7 @@ def time_ms(low: float, high: float | None = None) -> str:
 def _powers(x: Decimal, y: Decimal) -> str:
     """Two bounds times one power of ten."""
     exponent = max(v.adjusted() for v in (x, y) if v)
-    shown = [f"{v.scaleb(-exponent):f}" if v else "0" for v in (x, y)]
+    shown = [f"{v.scaleb(-exponent):f}".replace("-", "−") if v else "0" for v in (x, y)]
     return f"({'…'.join(shown)})×10{str(exponent).translate(_SUPERSCRIPT)}"
 
 
@@ -159,7 +160,7 @@ def _apart(x: Decimal) -> str:
     """Digits as they are, thousands apart."""
     if x == 0:
         return "0"
-    return f"{x:,f}".replace(",", " ") if -6 <= x.adjusted() < 12 else f"{x.normalize():e}"
+    return f"{x:,f}".replace(",", " ").replace("-", "−") if -6 <= x.adjusted() < 12 else f"{x.normalize():e}"
 
 
 def _cut(x: Decimal) -> Decimal:

@@ -59,7 +59,7 @@ def tidy(ax: Axes, *, title: str = "", x: str = "", y: str = "", grid: str = "")
         ax.set_title(title, fontsize=FONT_PT + 1, loc="left")
     ax.set_xlabel(x, fontsize=FONT_PT)
     ax.set_ylabel(y, fontsize=FONT_PT)
-    ax.tick_params(labelsize=FONT_PT)
+    ax.tick_params(which="both", labelsize=FONT_PT)
     for side in ("top", "right"):
         ax.spines[side].set_visible(False)
     if grid:

@@ -37,6 +37,7 @@ from schemesim.study.tree import Happens, explore
 
 if TYPE_CHECKING:
     import pandas as pd
+    from matplotlib.axes import Axes
 
 REACHES = ("zone_1", "zone_2", "zone_3", "over_reach", "reverse")
 DIALS = ("votes", "line", *REACHES)
@@ -121,6 +122,12 @@ class DialStudy:
                         row[f"{what}_high"] = None if b is None else float(b.high)
                     rows.append(row)
         return rows
+
+    def plot(self, kind: str = "station", ax: Axes | None = None) -> Axes:
+        """Dependability against security of every group of a kind, from position to position."""
+        from schemesim.show.trade import plot_trade  # heavy: only when a picture is asked for
+
+        return plot_trade(self.dial, [f for f in self.figures if f.kind == kind], ax)
 
     def __repr__(self) -> str:
         lines = [f"DialStudy({self.dial}: {', '.join(self.positions)})"]

@@ -20,6 +20,7 @@ from schemesim.study.risk import Explorer, Ledger, event_cost
 
 if TYPE_CHECKING:
     import pandas as pd
+    from matplotlib.axes import Axes
 
 
 @dataclass(frozen=True, slots=True)
@@ -90,6 +91,18 @@ class Frontier:
                 for c in self.choices
             ]
         )
+
+    def plot(self, ax: Axes | None = None) -> Axes:
+        """Risk against cost, brackets as bars, the frontier as a line."""
+        from schemesim.show.scatter import Spot, plot_frontier  # heavy: only when a picture is asked for
+
+        least = self.least_total
+        spots = [
+            Spot(c.name, c.cost_per_yr, float(c.risk_per_yr.low), float(c.risk_per_yr.high), c.estimate,
+                 not c.dominated_by, c.name == least)
+            for c in self.choices
+        ]  # fmt: skip
+        return plot_frontier(spots, unit=self.unit, title="cost and risk", ax=ax)
 
     def __repr__(self) -> str:
         lines = [f"Frontier in {self.unit} a year; least in total: {self.least_total}"]

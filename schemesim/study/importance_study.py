@@ -42,6 +42,7 @@ from schemesim.study.tree import MAX_RUNS, Tree, explore
 
 if TYPE_CHECKING:
     import pandas as pd
+    from matplotlib.axes import Axes
 
 
 class Spoils(StrEnum):
@@ -144,6 +145,15 @@ class ImportanceStudy:
             frame["avoided_per_yr_low"] = [float(g.low) for g in gains]
             frame["avoided_per_yr_high"] = [float(g.high) for g in gains]
         return frame
+
+    def plot(self, by: str = "criticality_ratio", most: int = 20, ax: Axes | None = None) -> Axes:
+        """The greatest figures as bars, with their brackets; ``by`` is one of ``FIGURES``."""
+        from schemesim.show.bars import plot_bars  # heavy: only when a picture is asked for
+
+        frame = self.table(by).head(most)
+        rows = list(zip(frame["component"], frame[f"{by}_low"], frame[f"{by}_high"], strict=True))
+        words = by.replace("_", " ")
+        return plot_bars(rows, title=f"importance: fault {self.event}", x=words, shares="worth" not in by, ax=ax)
 
     def __repr__(self) -> str:
         lines = [

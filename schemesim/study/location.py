@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
 
 from schemesim.engine.case import Case, bind
 from schemesim.engine.event import DEFAULT_HORIZON_US
@@ -26,12 +27,16 @@ from schemesim.study.measures import (
     nominal,
     p_by_role,
     p_cleared,
+    p_open,
     p_selective,
     p_undetermined,
     p_within_limit,
 )
 from schemesim.study.tree import MAX_RUNS, Tree, explore
 from schemesim.study.weak_points import SinglePoint, single_points
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
 
 
 @dataclass(frozen=True)
@@ -84,6 +89,8 @@ class LocationResult:
         All of them, however improbable, unless the tree stopped at its budget.
     runs, unexplored, stopped
         As in the tree.
+    opens : mapping of breaker to Bracket
+        Probability that it opens, for each that does in some run (sources with a trip too).
     """
 
     location: Location
@@ -109,6 +116,7 @@ class LocationResult:
     runs: int
     unexplored: float
     stopped: str
+    opens: Mapping[str, Bracket] = field(default_factory=dict)
 
     @property
     def p_by_main(self) -> Bracket:
@@ -148,6 +156,22 @@ class LocationResult:
             return ""
         point = self.single_points[0]
         return f"{point.failure} ({point.kind})"
+
+    def plot_breakers(self, ax: Axes | None = None) -> Axes:
+        """The distribution of the number of breakers tripped, on a logarithmic axis, with its brackets."""
+        from schemesim.show.bars import plot_counts  # heavy: only when a picture is asked for
+
+        counts = {n: (float(b.low), float(b.high)) for n, b in self.breakers.items()}
+        title, few = f"fault on {self.location}: breakers tripped", len(self.intended)
+        return plot_counts(counts, title=title, x="breakers tripped", marked=few, marked_text=f"intended: {few}", ax=ax)
+
+    def plot_clearing(self, limit_ms: float | None = None, ax: Axes | None = None) -> Axes:
+        """The probability that the fault is not yet cleared after a time, with its bracket; the limit marked."""
+        from schemesim.show.curves import Line, plot_left  # heavy: only when a picture is asked for
+
+        steps = [(t / 1000, (float(b.low), float(b.high))) for t, b in self.clearing.cdf]
+        lines = [] if limit_ms is None else [Line(limit_ms, f"limit {limit_ms:g} ms", dashed=True)]
+        return plot_left(steps, title=f"fault on {self.location}: time to clear it", lines=lines, ax=ax)
 
 
 def study_location(program: Program, location: Location, sensing: Sensing, options: LocationOptions) -> LocationResult:
@@ -192,6 +216,7 @@ def measure(case: Case, location: Location, tree: Tree, limit_us: int) -> Locati
         runs=tree.runs,
         unexplored=float(tree.unexplored),
         stopped=tree.stopped,
+        opens=p_open(tree),
     )
 
 

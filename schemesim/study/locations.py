@@ -28,6 +28,7 @@ from schemesim.study.tree import MAX_RUNS
 
 if TYPE_CHECKING:
     import pandas as pd
+    from matplotlib.axes import Axes
 
 Progress = Callable[[int, int], None]
 
@@ -155,6 +156,30 @@ class LocationStudy:
         return pd.DataFrame(
             [{"measure": name, "low": float(b.low), "high": float(b.high)} for name, b in self.measures().items()]
         )
+
+    def plot(self, most: int | None = None, ax: Axes | None = None) -> Axes:
+        """A map of what opens for a fault at each location, at least how often, and what is intended to.
+
+        Parameters
+        ----------
+        most : int or None
+            How many locations: those cleared late or not at all the most often. None: all.
+        ax : matplotlib Axes or None
+        """
+        from schemesim.show.matrix import PlaceRow, plot_map  # heavy: only when a picture is asked for
+
+        chosen = self.results if most is None else self.ranked[:most]
+        rows = [
+            PlaceRow(str(r.location), r.intended, {b: float(p.low) for b, p in r.opens.items()})
+            for r in chosen
+            if r.fed
+        ]
+        groups: dict[str, list[str]] = {}
+        for name in sorted({b for r in rows for b in (*r.intended, *r.opens)}):
+            groups.setdefault(name.partition(".")[0], []).append(name)
+        alone = [b for some in groups.values() if len(some) == 1 for b in some]  # such as the trips of sources
+        groups = {station: some for station, some in groups.items() if len(some) > 1} | {"": alone}
+        return plot_map(rows, groups, title="breakers opened, by the place of the fault", ax=ax)
 
     def __repr__(self) -> str:
         lines = [

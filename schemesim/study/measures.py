@@ -108,6 +108,15 @@ def breakers_distribution(tree: Tree) -> Mapping[int, Bracket]:
     return distribution(tree, lambda o: len(o.tripped))
 
 
+def p_open(tree: Tree) -> Mapping[str, Bracket]:
+    """For each breaker (and source with a trip) that opens in some run, the probability that it does."""
+    groups: dict[str, list[Probability]] = {}
+    for end, mass in zip(tree.ends, tree.masses, strict=True):
+        for name in end.outcome.tripped:
+            groups.setdefault(name, []).append(mass)
+    return {name: tree.bracket_of(groups[name]) for name in sorted(groups)}
+
+
 def excess_distribution(tree: Tree, case: Case) -> Mapping[int, Bracket]:
     """Probability of each number of breakers tripped beyond the intended ones."""
     return distribution(tree, lambda o: excess(case, o))

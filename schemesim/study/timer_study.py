@@ -39,6 +39,7 @@ from schemesim.study.timer_races import SettingRace, timer_races
 
 if TYPE_CHECKING:
     import pandas as pd
+    from matplotlib.axes import Axes
 
 MOST_SETTINGS = 2000
 """Settings looked at for one timer, at most."""
@@ -159,6 +160,24 @@ class TimerResult:
         row["band_ms_from"], row["band_ms_to"] = (None, None) if band is None else (band[0] / 1000, band[1] / 1000)
         row["exposed_per_yr"], row["needed_per_yr"] = r.exposed_per_yr, r.needed_per_yr
         return row
+
+    def plot(self, ax: Axes | None = None) -> Axes:
+        """Both probabilities against the setting; marked: as it is set, the best, the band that keeps to targets."""
+        from schemesim.show.curves import Line, plot_bands  # heavy: only when a picture is asked for
+
+        now, best, band = self.race.delay.nominal_us / 1000, self.best_us / 1000, self.band_us
+        lines = [Line(now, f"set {now:g} ms")] + ([] if best == now else [Line(best, f"least risk {best:g} ms", True)])
+        curves = {
+            "needless trip, when it could trip so": [p.p_needless for p in self.points],
+            "cleared late, when it is needed": [p.p_late for p in self.points],
+        }
+        return plot_bands(
+            [p.setting_us / 1000 for p in self.points],
+            {name: [(float(b.low), float(b.high)) for b in curve] for name, curve in curves.items()},
+            title=self.race.timer, x="setting, ms", y="probability",
+            lines=lines, good=None if band is None else (band[0] / 1000, band[1] / 1000),
+            good_text="both keep to their targets", ax=ax,
+        )  # fmt: skip
 
     def curve(self) -> pd.DataFrame:
         """Probabilities and risk against the setting."""
