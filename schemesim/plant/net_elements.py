@@ -144,7 +144,7 @@ def elements_of(plant: Plant, dispatch: str | None = None) -> Elements:
         grounded=(np.array(found.grounded[0], dtype=np.bool_), np.array(found.grounded[1], dtype=np.bool_)),
         segments=segments,
         terminal_of=terminal_of,
-        angle=_angles(bus_of, len(kv), at_array, pairs[1], shifts),
+        angle=_angles(bus_of, len(kv), at_array, pairs[1], shifts, [at_array[t] for t in terminal_of.values()]),
         unknown_zero=unknown,
         same_negative=same,
     )
@@ -213,9 +213,9 @@ def _voltages(
 
 
 def _angles(
-    bus_of: Ints, buses: int, at: Ints, links: Ints, shifts: Mapping[tuple[int, int], float]
+    bus_of: Ints, buses: int, at: Ints, links: Ints, shifts: Mapping[tuple[int, int], float], sources: list[int]
 ) -> NDArray[np.float64]:
-    """Angle of each bus before the fault, from the phase shifts on the way."""
+    """Angle of each bus before the fault, from the phase shifts on the way; zero at the first source of an island."""
     angle = np.zeros(buses)
     if not shifts:
         return angle
@@ -226,7 +226,7 @@ def _angles(
         around[b].append((a, -shift))
     seen = np.zeros(buses, dtype=np.bool_)
     errors = ErrorList()
-    for start in range(buses):
+    for start in (*(int(bus_of[n]) for n in sources), *range(buses)):
         stack = [start] if not seen[start] else []
         seen[start] = True
         while stack:
