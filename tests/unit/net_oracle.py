@@ -206,6 +206,7 @@ class Oracle:
     def change(self, section: str, at: float = 0.0) -> NDArray[Any]:
         """Change of the sequence voltages of a section by the fault, in V."""
         return np.array(
-            [self.driven[s] * found[names[self._node(section, at)]] if self.driven[s] else 0j
+            [self.driven[s] * found[names[self._node(section, at)]]
+             if self.driven[s] and self._node(section, at) in names else 0j
              for s, (found, _, names) in enumerate(self.sequences)]
         )  # fmt: skip
