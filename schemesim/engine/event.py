@@ -348,8 +348,8 @@ class EventRun:
             if kind is Kind.TIMER:
                 state = logic.input_state(block, 0)
                 if state is not None and case.inputs[block]:
-                    source = case.inputs[block][0][0]
-                    self._follow_input(block, state, logic.row[source], logic.rank[source])
+                    source, inverted = case.inputs[block][0]
+                    self._follow_input(block, state, logic.row[source], 0 if inverted else logic.rank[source])
             elif kind is Kind.LATCH:
                 self._follow_latch(block)
             elif kind is Kind.BREAKER:
@@ -389,9 +389,9 @@ class EventRun:
         logic = self.logic
         reset = logic.input_state(block, 1) if len(self.case.inputs[block]) > 1 else False
         if reset:
-            target, source = FALSE, self.case.inputs[block][1][0]
+            target, (source, inverted) = FALSE, self.case.inputs[block][1]
         elif logic.input_state(block, 0):
-            target, source = TRUE, self.case.inputs[block][0][0]
+            target, (source, inverted) = TRUE, self.case.inputs[block][0]
         else:
             return
         if self._token[block]:
@@ -400,7 +400,7 @@ class EventRun:
             self._cancel(block)
         if logic.value[block] != target:
             if target == TRUE:
-                logic.rank[block] = logic.rank[source]
+                logic.rank[block] = 0 if inverted else logic.rank[source]
             self._start_row[block] = logic.row[source]
             self._start(block, 0, target)
 

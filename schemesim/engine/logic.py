@@ -181,7 +181,8 @@ class Logic:
             reset = len(self.case.inputs[i]) > 1 and self.input_state(i, 1)
             state = not reset and (state or old == TRUE)
         if self.case.inputs[i]:
-            rank = self.rank[self.case.inputs[i][0][0]]
+            source, inverted = self.case.inputs[i][0]
+            rank = 0 if inverted else self.rank[source]
         self.value[i], self.rank[i] = (TRUE, rank) if state else (FALSE, 0)
         return self.value[i] != old
 
