@@ -92,6 +92,10 @@ class ElectricalSensing:
         kind = f"{self.fault}" + (f", {self.resistance_ohm:g} ohm" if self.resistance_ohm else "")
         return f"ElectricalSensing({len(self.settings.items)} elements, {kind})"
 
+    def __getstate__(self) -> dict[str, object]:
+        """Without the equations: they are made anew where it is unpickled."""
+        return {**self.__dict__, "_networks": {}}
+
     def network(self, program: Program, dispatch: str | None) -> Network:
         """The network equations of a program's plant, made once for each dispatch state."""
         key = (id(program.plant), dispatch)

@@ -29,6 +29,9 @@ def settings_of(notes: Notes, s: StudyIn) -> StudySettings:
         seed=s.seed,
         trials=s.trials if "trials" in given else default.trials,
         restore_h=s.restore_h,
+        sensing=s.sensing,
+        fault=s.fault,
+        fault_ohm=s.fault_ohm,
     )
 
 

@@ -11,7 +11,9 @@ from schemesim.engine.event import DEFAULT_HORIZON_US
 from schemesim.engine.sensing import Event, NoFault
 from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Location, Plant, SectionKind
+from schemesim.plant.net_case import FaultType
 from schemesim.scenario.locate import Data
+from schemesim.scenario.sensed import SensingKind, sensing_of
 from schemesim.scheme.dress import dress
 from schemesim.scheme.failure_data import FailureData
 from schemesim.scheme.model import Ask, Scheme
@@ -23,6 +25,7 @@ if TYPE_CHECKING:
     from schemesim.engine.case import Case
     from schemesim.engine.outcome import Run
     from schemesim.engine.program import Program
+    from schemesim.engine.sensing import Sensing
 
 DEFAULT_LIMIT_US = 150_000
 """Limit of the clearing time where a file states none: an assumed value, common practice at transmission voltages."""
@@ -82,6 +85,11 @@ class StudySettings:
         Of Monte Carlo.
     restore_h : float
         Hours until lost load is restored.
+    sensing : SensingKind
+    fault : FaultType
+        Of every location, with ``sensing`` electrical.
+    fault_ohm : float
+        Fault resistance in ohm, likewise.
     """
 
     epsilon: float = 1e-5
@@ -91,6 +99,9 @@ class StudySettings:
     seed: int = 0
     trials: int = 10_000
     restore_h: float = 0.0
+    sensing: SensingKind = SensingKind.LOGICAL
+    fault: FaultType = FaultType.LLL
+    fault_ohm: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -288,10 +299,22 @@ class Scenario:
     ) -> Case:
         """An event bound to the program of a policy."""
         from schemesim.engine.case import bind
-        from schemesim.engine.sensing import LogicalSensing
 
         state = dispatch if dispatch is not None else self.study.dispatch
-        return bind(self.program(policy, out_of_service), event, LogicalSensing(), dispatch=state)
+        return bind(self.program(policy, out_of_service), event, self.sensing(policy), dispatch=state)
+
+    def sensing(self, policy: str | None = None) -> Sensing:
+        """What decides which elements see a fault, for the scheme of a policy; made once.
+
+        Raises
+        ------
+        InputError
+            If electrical sensing is asked for and the plant lacks an impedance or a VT.
+        """
+        key = ("sensing", policy or self.policy)
+        if key not in self._made:
+            self._made[key] = sensing_of(self, policy)
+        return self._made[key]  # type: ignore[return-value]  # what was put there above
 
     def listed(self, name: str) -> ListedRun:
         """A listed run by its name.

@@ -14,6 +14,7 @@ from pydantic import BeforeValidator, Field, PlainValidator
 
 from schemesim.plant.bays import CORES, WINDINGS, CtPlacement
 from schemesim.plant.model import DeviceKind, SectionKind
+from schemesim.plant.net_case import FaultType
 from schemesim.scenario.maintenance import MaintenanceIn
 from schemesim.scenario.money import MoneyIn
 from schemesim.scenario.parts import Part, PolicyIn
@@ -34,6 +35,7 @@ from schemesim.scenario.scalars import (
     take_text,
     whole,
 )
+from schemesim.scenario.sensed import SensingKind
 from schemesim.scheme.unavailability import Over
 
 VERSION = 1
@@ -274,6 +276,9 @@ class StudyIn(Part):
     seed: Annotated[int, PlainValidator(whole(0, 2**53))] = 0
     trials: Annotated[int, PlainValidator(whole(1, 100_000_000))] = 0
     restore_h: NotNegative = 0.0
+    sensing: Annotated[SensingKind, PlainValidator(choice(SensingKind))] = SensingKind.LOGICAL
+    fault: Annotated[FaultType, PlainValidator(choice(FaultType))] = FaultType.LLL
+    fault_ohm: NotNegative = 0.0
 
 
 class RunIn(Part):

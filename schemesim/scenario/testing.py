@@ -12,7 +12,6 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable
 from dataclasses import replace
 
-from schemesim.engine.sensing import LogicalSensing
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
 from schemesim.scenario.model import Scenario
@@ -76,7 +75,7 @@ def intervals_scenario(
     return study_test_intervals(
         scenario.program(policy),
         scenario.data,
-        LogicalSensing(),
+        scenario.sensing(policy),
         chosen,
         kind=ComponentKind(kind),
         pattern=pattern,
@@ -115,7 +114,7 @@ def misoperations_scenario(
     chosen = _chosen(scenario, locations)
     return study_misoperations(
         scenario.program(policy),
-        LogicalSensing(),
+        scenario.sensing(policy),
         chosen,
         frequencies=_rates(scenario, chosen),
         no_fault=no_fault,

@@ -15,7 +15,6 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Sequence
 from concurrent.futures import Executor
 
-from schemesim.engine.sensing import LogicalSensing
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
 from schemesim.scenario.model import Scenario
@@ -58,7 +57,7 @@ def timer_scenario(
     chosen = _chosen(scenario, locations)
     return study_timers(
         scenario.program(policy),
-        LogicalSensing(),
+        scenario.sensing(policy),
         chosen,
         limit_us=scenario.limits.backup_us if limit_us is None else limit_us,
         zone_2_limit_us=scenario.limits.zone_2_us if zone_2_limit_us is None else zone_2_limit_us,
@@ -152,7 +151,7 @@ def importance_scenario(
     chosen = _chosen(scenario, locations)
     return study_importance(
         scenario.program(policy),
-        LogicalSensing(),
+        scenario.sensing(policy),
         chosen,
         limit_us={at: scenario.limit_us(at) for at in chosen},
         event=event,

@@ -22,7 +22,6 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Mapping
 from concurrent.futures import Executor
 
-from schemesim.engine.sensing import LogicalSensing
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
 from schemesim.scenario.maintenance import hours_by_name
@@ -66,7 +65,7 @@ def register_scenario(
         monitored = [m for m in scenario.maintenance.monitored if any(m.of(c.name, c.kind) for c in parts)]
     return register(
         program,
-        LogicalSensing(),
+        scenario.sensing(policy),
         chosen,
         limit_us={at: scenario.limit_us(at) for at in chosen},
         monitored=monitored,
@@ -128,7 +127,7 @@ def outages_scenario(
     rates = {at: scenario.frequencies.get(at, 0.0) for at in chosen}
     return study_outages(
         program,
-        LogicalSensing(),
+        scenario.sensing(policy),
         chosen,
         limit_us={at: scenario.limit_us(at) for at in chosen},
         outages=outages,
