@@ -29,6 +29,7 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from schemesim.engine.answers import DrawnAnswers, FixedAnswers, ForcedAnswers
     from schemesim.engine.case import Case, bind
+    from schemesim.engine.electrical import ElectricalSensing
     from schemesim.engine.event import run_event
     from schemesim.engine.outcome import Outcome, Run, Status
     from schemesim.engine.program import Program, compile_scheme
@@ -75,6 +76,7 @@ if TYPE_CHECKING:
     from schemesim.scenario.weak import outages_scenario, register_scenario
     from schemesim.scheme.build import SchemeBuilder
     from schemesim.scheme.conditions import Current, External, InZone, Reach
+    from schemesim.scheme.curves import Curve, standard_curve
     from schemesim.scheme.delays import Fixed, fixed_ms
     from schemesim.scheme.dress import dress
     from schemesim.scheme.failure_data import FailureData, Override
@@ -95,6 +97,8 @@ if TYPE_CHECKING:
         Sense,
         Timer,
     )
+    from schemesim.scheme.phasor_distance import Distance
+    from schemesim.scheme.phasor_elements import Biased, Looking, Overcurrent, Voltage
     from schemesim.scheme.policy import (
         BreakerFailurePolicy,
         LineScheme,
@@ -108,15 +112,20 @@ if TYPE_CHECKING:
         single_set,
     )
     from schemesim.scheme.redundancy import iec_61508_pfd, redundant
+    from schemesim.scheme.settings import Setting, Settings
+    from schemesim.scheme.settings_grading import graded
+    from schemesim.scheme.settings_rules import SettingRules, settings_for
     from schemesim.scheme.starting_values import load_starting_values
     from schemesim.scheme.trip_comparison import compare_trip_matrix
     from schemesim.scheme.trip_matrix import trip_matrix
     from schemesim.scheme.unavailability import RateData, RateRule, optimal_interval_yr, unavailability
     from schemesim.study.brackets import Bracket
     from schemesim.study.comparison import compare
+    from schemesim.study.coordination import coordination
     from schemesim.study.dependability import outputs_of, study_dependability
     from schemesim.study.dials import dial_policies, study_dial
     from schemesim.study.edits import Edit, Recipe
+    from schemesim.study.element_audit import audit_elements
     from schemesim.study.footnote import Monitored
     from schemesim.study.frontier import frontier, next_best
     from schemesim.study.importance import importance
@@ -153,6 +162,15 @@ if TYPE_CHECKING:
 __version__ = "0.1.0"
 
 _HOMES = {
+    "schemesim.scheme.curves": "Curve standard_curve",
+    "schemesim.scheme.phasor_elements": "Biased Looking Overcurrent Voltage",
+    "schemesim.scheme.phasor_distance": "Distance",
+    "schemesim.scheme.settings": "Setting Settings",
+    "schemesim.scheme.settings_rules": "SettingRules settings_for",
+    "schemesim.scheme.settings_grading": "graded",
+    "schemesim.engine.electrical": "ElectricalSensing",
+    "schemesim.study.element_audit": "audit_elements",
+    "schemesim.study.coordination": "coordination",
     "schemesim.errors": "InputError RunError SchemesimError",
     "schemesim.plant.model": (
         "Device DeviceKind Dispatch Location Plant PlantBuilder Section SectionKind Source VoltageTransformer"
@@ -234,6 +252,7 @@ _HOMES = {
 __all__ = [
     "Ask",
     "Bay",
+    "Biased",
     "Bracket",
     "Breaker",
     "BreakerFailurePolicy",
@@ -246,12 +265,15 @@ __all__ = [
     "Costs",
     "CtPlacement",
     "Current",
+    "Curve",
     "DelayTimes",
     "Device",
     "DeviceKind",
     "Dispatch",
+    "Distance",
     "DrawnAnswers",
     "Edit",
+    "ElectricalSensing",
     "Explorer",
     "External",
     "FailureData",
@@ -268,12 +290,14 @@ __all__ = [
     "LocalBackup",
     "Location",
     "LogicalSensing",
+    "Looking",
     "Money",
     "Monitored",
     "Narrow",
     "NoFault",
     "Not",
     "Outcome",
+    "Overcurrent",
     "Override",
     "Plant",
     "PlantBuilder",
@@ -295,6 +319,9 @@ __all__ = [
     "Section",
     "SectionKind",
     "Sense",
+    "Setting",
+    "SettingRules",
+    "Settings",
     "Source",
     "Start",
     "Status",
@@ -303,8 +330,10 @@ __all__ = [
     "Timer",
     "Tree",
     "Values",
+    "Voltage",
     "VoltageTransformer",
     "Weights",
+    "audit_elements",
     "bind",
     "breaker_and_a_half",
     "breakers_distribution",
@@ -315,6 +344,7 @@ __all__ = [
     "compare",
     "compare_trip_matrix",
     "compile_scheme",
+    "coordination",
     "coverage_audit",
     "decide",
     "dial_policies",
@@ -329,6 +359,7 @@ __all__ = [
     "fixed_ms",
     "frontier",
     "generator",
+    "graded",
     "iec_61508_pfd",
     "importance",
     "importance_scenario",
@@ -367,10 +398,12 @@ __all__ = [
     "run_event",
     "save_scenario",
     "sectionalised_bus",
+    "settings_for",
     "simulate",
     "single_bus",
     "single_points",
     "single_set",
+    "standard_curve",
     "study_dependability",
     "study_dial",
     "study_importance",
