@@ -6,8 +6,9 @@
 
 Work goes on in a copy of the committed tree in ``--into`` (by default a folder for temporary files), never in the
 working tree. ``map`` takes that copy; ``sample`` mutates it, one file at a time, and runs the tests that cover the
-changed lines, short ones of every file first, until one fails. Results are kept a line each, so a sample that was broken off
-goes on where it stopped. A mutant whose tests do not end counts as told, and so does one that cannot be imported.
+changed lines, short ones of every file first, until one fails. Results are kept a line each, so a sample that was
+broken off goes on where it stopped. A mutant whose tests do not end counts as told, and so does one that cannot be
+imported.
 """
 
 from __future__ import annotations

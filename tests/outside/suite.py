@@ -8,8 +8,8 @@ from importlib import import_module
 from tests.outside.records import Compared, Quality, Record
 
 MODULES = (
-    "curves", "redundancy", "common_cause", "static_logic", "timing", "sequences", "teleprotection", "networks",
-    "statistics",
+    "curves", "redundancy", "common_cause", "static_logic", "timing", "sequences", "teleprotection", "short_circuit",
+    "networks", "statistics",
 )  # fmt: skip
 COUNTED = 10
 """No subject counts for more values than this."""

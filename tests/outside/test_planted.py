@@ -9,6 +9,7 @@ from typing import Any
 
 import pytest
 
+from schemesim.plant.net_data import SourceImpedance
 from schemesim.scheme import backup, curves, functions, redundancy, starting_values, unavailability
 from schemesim.scheme.delays import Fixed
 from schemesim.scheme.model import ComponentKind
@@ -108,6 +109,11 @@ def rate_of_breakers(patch: Patch) -> None:
     patch.setattr(starting_values, "_text", lambda path, name: right(path, name).replace("0.00036", "0.0036"))
 
 
+def negative_sequence(patch: Patch) -> None:
+    """A source has its positive-sequence impedance in negative sequence, whatever it was given."""
+    patch.setattr(SourceImpedance, "z2", property(lambda self: self.z1))
+
+
 def exempt_relay(patch: Patch) -> None:
     """A relay stands in the group of channels."""
     patch.setitem(footnote.GROUPS, ComponentKind.RELAY, footnote.Group.COMMUNICATIONS)
@@ -131,6 +137,7 @@ PLANTED: list[tuple[str, Callable[[Patch], None]]] = [
     ("whole sequences", one_side),
     ("whole sequences", channel_time),
     ("teleprotection", coordinating),
+    ("short circuit", negative_sequence),
     ("networks and rates", rate_of_breakers),
     ("networks and rates", exempt_relay),
     ("statistics", quantile),
