@@ -9,7 +9,7 @@ way to the openings.
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Iterator
+from collections.abc import Iterator, Set
 from dataclasses import dataclass, field
 from enum import StrEnum
 
@@ -100,21 +100,33 @@ class Drawing:
         """Every lane, the fault's first."""
         return (self.fault, *(lane for _, lanes in self.stations for lane in lanes))
 
+    @property
+    def way(self) -> frozenset[str]:
+        """Components that failed, or are on the way to an opening or a failure."""
+        failed = {lane.subject for lane in self.lanes if lane.marks}
+        return frozenset(failed.union(*({link.cause, link.effect} for link in self.links)))
 
-def drawing(t: ClearingSequence) -> Drawing:
-    """What the picture of a timeline holds."""
+    def short(self) -> Drawing:
+        """Only what failed, and what is on the way to an opening or a failure."""
+        way = self.way
+        kept = ((s, tuple(x for x in lanes if x.subject in way)) for s, lanes in self.stations)
+        return Drawing(self.fault, tuple((s, lanes) for s, lanes in kept if lanes), self.links, self.end_us)
+
+
+def drawing(t: ClearingSequence, also: Set[str] = frozenset()) -> Drawing:
+    """What the picture of a timeline holds; ``also``: components with a lane whatever they did."""
     log = t.run.log
     subjects = {_subject(t, log[i]) for i in t.story if log[i].kind not in ("gate", "run", "fault")}
     subjects |= {_subject(t, log[i]) for i in t.kept if log[i].kind == "timer"}
     end = max((log[i].t_us for i in t.kept if log[i].kind != "run"), default=0)
     end = max(end, t.limit_us or 0, 1000)
-    subjects = {name for name in subjects if not only_holds(t.case, name)}
+    subjects = {name for name in subjects if not only_holds(t.case, name)} | also
     rows: dict[str, list[Row]] = {name: [] for name in subjects}
     for row in log:
         name = _subject(t, row)
         if name in rows and not (row.kind == "question" and row.what == "no"):
             rows[name].append(row)
-    lanes = [_lane(t, name, found) for name, found in rows.items()]
+    lanes = [_lane(t, name, found) for name, found in rows.items() if found]
     links = tuple(_links(t, subjects))
     on_way = {name for link in links for name in (link.cause, link.effect)}
     by_station: dict[str, list[Lane]] = {}

@@ -1,30 +1,37 @@
 """One clearing sequence as a picture: time runs to the right, one lane for each component.
 
 Bars differ by hatch, height and edge as well as colour, so that a picture in greyscale
-reads the same. The colours are those of M. Okabe and K. Ito, "Color universal design",
-2008, chosen to be told apart with any colour vision.
+reads the same.
 """
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from schemesim.engine.outcome import Status
 from schemesim.report.lanes import Drawing, Lane, Look, Mark, drawing
 from schemesim.report.sequence import ClearingSequence, plain, shorten
+from schemesim.show.style import (
+    BLACK,
+    BLUE,
+    FONT_PT,
+    GREEN,
+    GREY,
+    ORANGE,
+    PALE,
+    PURPLE,
+    SKY,
+    VERMILLION,
+    YELLOW,
+)
 from schemesim.ticks import to_ms
 
 if TYPE_CHECKING:
     from matplotlib.artist import Artist
     from matplotlib.axes import Axes
 
-BLACK, ORANGE, SKY, GREEN = "#000000", "#E69F00", "#56B4E9", "#009E73"
-YELLOW, BLUE, VERMILLION, PURPLE = "#F0E442", "#0072B2", "#D55E00", "#CC79A7"
-GREY = "#7F7F7F"
-
-FONT_PT = 8.0
 LANE_IN = 0.235
 """Height of one lane in inches at the default size."""
 WIDTH_IN = 11.0
@@ -59,7 +66,7 @@ STYLES = {
 """Look of each bar; a positive shift is down."""
 
 
-def plot_timeline(timeline: ClearingSequence, ax: Axes | None = None) -> Axes:
+def plot_timeline(timeline: ClearingSequence, ax: Axes | None = None, *, short: bool = False) -> Axes:
     """Draw a clearing sequence.
 
     Time runs to the right in ms, with cycles above. Each component that took part has a
@@ -73,6 +80,8 @@ def plot_timeline(timeline: ClearingSequence, ax: Axes | None = None) -> Axes:
     ax : matplotlib Axes or None
         Where to draw. None makes a figure of a fitting size, apart from pyplot; it is the
         ``figure`` of the axes returned.
+    short : bool
+        Only what is on the way to an opening or has failed; timers stopped in time are left out.
 
     Returns
     -------
@@ -83,8 +92,10 @@ def plot_timeline(timeline: ClearingSequence, ax: Axes | None = None) -> Axes:
     ``plot_timeline(found).figure.savefig("sequence.pdf")``
     """
     what = drawing(timeline)
-    moments = _moments(timeline)
-    places, headings, total = _places(what, len(moments))
+    what = what.short() if short else what
+    moments = moments_of(timeline)
+    margin = margin_of(timeline)
+    places, headings, total = _places(what, len(moments) + (margin is not None))
     if ax is None:
         from matplotlib.figure import Figure  # heavy: only when a picture is asked for
 
@@ -95,10 +106,12 @@ def plot_timeline(timeline: ClearingSequence, ax: Axes | None = None) -> Axes:
         ax = figure.add_axes((*box, *size))
     _frame(ax, timeline, what, places, headings, total)
     for lane in what.lanes:
-        _draw_lane(ax, lane, places[lane.subject])
+        draw_lane(ax, lane, places[lane.subject])
     _draw_links(ax, what, places)
-    _draw_moments(ax, moments, total)
-    _legend(ax, what)
+    draw_moments(ax, moments, total)
+    if margin is not None:
+        draw_margin(ax, *margin, len(moments))
+    legend(ax, what.lanes, bool(what.links))
     return ax
 
 
@@ -131,7 +144,7 @@ def _frame(
 ) -> None:
     """Axes, names of lanes and bands of stations."""
     ax.set_ylim(total - 0.5, -0.5)
-    ax.set_xlim(0, _extent_ms(ax, what))
+    ax.set_xlim(0, extent_ms(ax, what.lanes, what.end_us))
     names: dict[float, str] = {}
     for _, lanes in what.stations:
         short = short_names([lane.label for lane in lanes], LABEL_CHARS)
@@ -148,7 +161,7 @@ def _frame(
     ax.tick_params(axis="x", labelsize=FONT_PT)
     for n, (start, last, _) in enumerate(headings):
         if n % 2 == 0:
-            ax.axhspan(start - 0.5, last + 0.5, facecolor="#F1F1F1", edgecolor="none", zorder=0)
+            ax.axhspan(start - 0.5, last + 0.5, facecolor=PALE, edgecolor="none", zorder=0)
     ax.set_xlabel(f"time from the beginning of the {'event' if no_fault else 'fault'}, ms", fontsize=FONT_PT)
     hz = timeline.frequency_hz
 
@@ -189,11 +202,11 @@ def short_names(labels: Sequence[str], width: int) -> list[str]:
     return found
 
 
-def _extent_ms(ax: Axes, what: Drawing) -> float:
+def extent_ms(ax: Axes, lanes: Iterable[Lane], end_us: int) -> float:
     """Width of the axis such that every text behind a bar or a mark has room."""
     width_in = ax.get_position().width * ax.figure.get_figure(root=True).get_size_inches()[0]
-    extent = to_ms(what.end_us) * 1.03
-    for lane in what.lanes:
+    extent = to_ms(end_us) * 1.03
+    for lane in lanes:
         texts = [(b.end_us, b.note) for b in lane.bars if b.note and not b.open_ended]
         for t_us, text in (*texts, *((_behind(lane, m), m.text) for m in lane.marks)):
             share = min((0.3 + len(text) * FONT_PT * 0.56 / 72) / width_in, 0.6)
@@ -201,7 +214,7 @@ def _extent_ms(ax: Axes, what: Drawing) -> float:
     return extent
 
 
-def _draw_lane(ax: Axes, lane: Lane, y: float) -> None:
+def draw_lane(ax: Axes, lane: Lane, y: float) -> None:
     from matplotlib.patches import Rectangle  # heavy: only when a picture is asked for
 
     right = ax.get_xlim()[1]
@@ -215,7 +228,7 @@ def _draw_lane(ax: Axes, lane: Lane, y: float) -> None:
         patch.set_gid(f"bar: {bar.look}: {lane.subject}")
         ax.add_patch(patch)
         if bar.note and not bar.open_ended:
-            _text(ax, end, y, bar.note)
+            text_beside(ax, end, y, bar.note)
     for mark in lane.marks:
         x = to_ms(mark.t_us)
         (cross,) = ax.plot(
@@ -223,7 +236,7 @@ def _draw_lane(ax: Axes, lane: Lane, y: float) -> None:
             markeredgewidth=0.8, linestyle="none", zorder=6, clip_on=False,
         )  # fmt: skip
         cross.set_gid(f"failure: {lane.subject}")
-        _text(ax, to_ms(_behind(lane, mark)), y - 0.1, mark.text, bold=True, away_pt=7)
+        text_beside(ax, to_ms(_behind(lane, mark)), y - 0.1, mark.text, bold=True, away_pt=7)
 
 
 def _behind(lane: Lane, mark: Mark) -> int:
@@ -234,7 +247,7 @@ def _behind(lane: Lane, mark: Mark) -> int:
     )
 
 
-def _text(ax: Axes, x: float, y: float, text: str, *, bold: bool = False, away_pt: float = 4) -> None:
+def text_beside(ax: Axes, x: float, y: float, text: str, *, bold: bool = False, away_pt: float = 4) -> None:
     """A text to the right of a point, on a ground of its own."""
     ax.annotate(
         text, (x, y), (away_pt, 0), textcoords="offset points", va="center", ha="left",
@@ -257,7 +270,7 @@ def _draw_links(ax: Axes, what: Drawing, places: dict[str, float]) -> None:
         ax.plot(*start, marker="o", markersize=3, color=BLACK, linestyle="none", zorder=5)
 
 
-def _moments(timeline: ClearingSequence) -> list[tuple[float, str, str]]:
+def moments_of(timeline: ClearingSequence) -> list[tuple[float, str, str]]:
     """The instant of clearing and the limit: ms, style of the line, label."""
     found: list[tuple[float, str, str]] = []
     clear, limit = timeline.run.outcome.t_clear_us, timeline.limit_us
@@ -268,7 +281,7 @@ def _moments(timeline: ClearingSequence) -> list[tuple[float, str, str]]:
     return found
 
 
-def _draw_moments(ax: Axes, moments: list[tuple[float, str, str]], total: float) -> None:
+def draw_moments(ax: Axes, moments: list[tuple[float, str, str]], total: float) -> None:
     """Lines over all lanes, each with its label on a line of its own above them."""
     right = ax.get_xlim()[1]
     for y, (x, line, text) in enumerate(moments):
@@ -283,23 +296,49 @@ def _draw_moments(ax: Axes, moments: list[tuple[float, str, str]], total: float)
         )  # fmt: skip
 
 
-def _legend(ax: Axes, what: Drawing) -> None:
+def margin_of(timeline: ClearingSequence) -> tuple[float, float, str] | None:
+    """From the clearing to the limit: both in ms, and in words; None where one of them is not, or they are one."""
+    clear, limit = timeline.run.outcome.t_clear_us, timeline.limit_us
+    if clear is None or limit is None or clear == limit:
+        return None
+    words = f"{plain(to_ms(abs(limit - clear)))} ms {'to spare' if clear < limit else 'too late'}"
+    return to_ms(clear), to_ms(limit), words
+
+
+def draw_margin(ax: Axes, clear_ms: float, limit_ms: float, words: str, y: float) -> None:
+    """A line with two heads between the clearing and the limit, and how much that is."""
+    heads = {"arrowstyle": "<|-|>,head_width=0.16,head_length=0.32", "linewidth": 1.2, "shrinkA": 0, "shrinkB": 0}
+    late = clear_ms > limit_ms
+    color = VERMILLION if late else BLACK
+    arrow = ax.annotate("", (limit_ms, y), (clear_ms, y), zorder=6, arrowprops={**heads, "color": color})
+    arrow.set_gid(f"margin: {words}")
+    right = ax.get_xlim()[1]
+    end = max(clear_ms, limit_ms)
+    behind = end < 0.8 * right
+    ax.annotate(
+        words, (end if behind else min(clear_ms, limit_ms), y), (4 if behind else -4, 0), textcoords="offset points",
+        ha="left" if behind else "right", va="center", fontsize=FONT_PT, color=color, fontweight="bold", zorder=7,
+        bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.6},
+    )  # fmt: skip
+
+
+def legend(ax: Axes, lanes: Sequence[Lane], links: bool) -> None:
     """What is there to be explained, and no more."""
     from matplotlib.lines import Line2D  # heavy: only when a picture is asked for
     from matplotlib.patches import Patch
 
-    used = {bar.look for lane in what.lanes for bar in lane.bars}
+    used = {bar.look for lane in lanes for bar in lane.bars}
     handles: list[Artist] = [
         Patch(facecolor=s.face, edgecolor=s.edge, hatch=s.hatch, label=str(look))
         for look, s in STYLES.items()
         if look in used
     ]
-    if any(lane.marks for lane in what.lanes):
+    if any(lane.marks for lane in lanes):
         cross = Line2D([], [], linestyle="none", marker="X", markersize=8, label="failure")
         cross.set_markerfacecolor(VERMILLION)
         cross.set_markeredgecolor(BLACK)
         handles.append(cross)
-    if what.links:
+    if links:
         handles.append(Line2D([], [], color=BLACK, linewidth=0.8, marker="o", markersize=3, label="cause to effect"))
     ax.legend(
         handles=handles, loc="upper center", bbox_to_anchor=(0.5, 0), borderaxespad=5.5, ncol=4,

@@ -107,11 +107,17 @@ class Timeline(ClearingSequence):
         )
         return "\n".join((*lines, *body))
 
-    def plot(self, ax: Axes | None = None) -> Axes:
+    def plot(self, ax: Axes | None = None, *, short: bool = False) -> Axes:
         """The sequence as a picture; see :func:`schemesim.report.pictures.plot_timeline`."""
         from schemesim.report.pictures import plot_timeline  # heavy: only when a picture is asked for
 
-        return plot_timeline(self, ax)
+        return plot_timeline(self, ax, short=short)
+
+    def plot_one_line(self, stations: Iterable[str] | None = None, ax: Axes | None = None) -> Axes:
+        """What happened, on the one-line diagram; see :func:`schemesim.report.one_line.plot_one_line`."""
+        from schemesim.report.one_line import plot_one_line  # heavy: only when a picture is asked for
+
+        return plot_one_line(self, stations=stations, ax=ax)
 
     def __repr__(self) -> str:
         return self.to_text()

@@ -31,6 +31,7 @@ from schemesim.engine.times import DelayTimes
 from schemesim.errors import InputError
 from schemesim.plant.layouts import Bay, CtPlacement, feeder, generator, line, single_bus
 from schemesim.plant.model import Location, PlantBuilder
+from schemesim.report.compared import plot_timelines
 from schemesim.report.lanes import Look, drawing
 from schemesim.report.pictures import STYLES, plot_timeline, short_names
 from schemesim.report.sequence import shorten
@@ -518,3 +519,53 @@ def test_names_that_would_look_alike_stay_apart() -> None:
     assert len(set(found)) == 4
     assert max(map(len, found)) <= 36
     assert short_names(["same", "same"], 36) == ["same", "same"]
+
+
+def gids_of(ax: Axes, kind: str) -> list[str]:
+    drawn = (a.get_gid() for a in ax.get_children())
+    return [g.removeprefix(f"{kind}: ") for g in drawn if g and g.startswith(f"{kind}: ")]
+
+
+@pytest.mark.parametrize(("limit_ms", "words"), [(150, "80 ms to spare"), (50, "20 ms too late")])
+def test_the_margin_to_the_limit_is_drawn(limit_ms: float, words: str) -> None:
+    # Main protection clears at 70 ms: 20 measuring, 50 interrupting.
+    case = case_of("L1")
+    ax = plot_timeline(timeline(case, replay(case, NO_FAILURE), limit_ms=limit_ms))
+    assert gids_of(ax, "margin") == [words]
+    assert words in text_of(ax)
+    assert gids_of(plot_timeline(timeline(case, replay(case, NO_FAILURE))), "margin") == []
+
+
+def test_the_short_picture_keeps_what_led_to_openings_and_failures() -> None:
+    found = timeline_of("stuck")
+    whole, short = gids_of(found.plot(), "bar"), gids_of(found.plot(short=True), "bar")
+    assert set(short) < set(whole)
+    assert "timer running: Elm.L1.CB/50BF timer" in short
+    assert not any("21-3 timer" in bar for bar in short)  # stopped in time
+    assert gids_of(found.plot(short=True), "cause") == gids_of(found.plot(), "cause")
+    assert gids_of(found.plot(short=True), "failure") == ["Elm.L1.CB"]
+
+
+def test_two_sequences_show_what_differs() -> None:
+    case = case_of("L1")
+    main, stuck = (timeline(case, replay(case, failures), limit_ms=150) for failures in (NO_FAILURE, STUCK))
+    ax = plot_timelines(main, stuck, ("sound", "stuck"))
+    labels = [t.get_text() for t in ax.get_yticklabels()]
+    assert "L1.CB · sound" in labels
+    assert labels[labels.index("L1.CB · sound") + 1] == "stuck"
+    # The far end does the same in both: left out unless all is asked for.
+    assert not any(name.startswith("coil energised") and "Fir.L1.CB" in name for name in gids_of(ax, "bar"))
+    every = plot_timelines(main, stuck, ("sound", "stuck"), all=True)
+    assert gids_of(every, "bar").count("coil energised, until interrupted: Fir.L1.CB") == 2
+    assert gids_of(ax, "failure") == ["Elm.L1.CB"]
+    texts = text_of(ax)
+    assert any(t.startswith("sound: cleared 70 ms") for t in texts)
+    assert any(t.startswith("stuck: cleared ") for t in texts)
+    assert gids_of(ax, "margin") == [f"{(stuck.run.outcome.t_clear_us or 0) / 1000 - 70:g} ms apart"]
+    with pytest.raises(InputError, match="labels"):
+        plot_timelines(main, stuck, ("same", "same"))
+
+
+def test_two_sequences_alike_have_no_lane_that_differs() -> None:
+    found = timeline_of("main")
+    assert gids_of(plot_timelines(found, found), "bar") == []
