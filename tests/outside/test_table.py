@@ -11,7 +11,7 @@ import pytest
 
 from tests.outside.records import Quality, Record, difference
 from tests.outside.suite import counted, last_line, records
-from tests.outside.table import line, wide
+from tests.outside.table import ROOT, line, wide
 
 RECORDS = records()
 SUBJECTS = sorted({r.subject for r in RECORDS})
@@ -31,6 +31,17 @@ def test_there_are_enough_values_of_enough_sources() -> None:
     per_subject = Counter(r.subject for r in RECORDS)
     assert min(per_subject.values()) >= 5, per_subject
     assert len({(r.subject, r.source, r.what) for r in RECORDS}) == len(RECORDS)
+
+
+def test_the_readme_gives_the_numbers_of_the_table() -> None:
+    text = " ".join((ROOT / "README.md").read_text(encoding="utf-8").split())
+    apart = {r.source for r in RECORDS if r.quality not in (Quality.DERIVED, Quality.PRACTICE)}
+    said = (
+        f"{len(RECORDS)} values ({counted(RECORDS)} counting at most ten of a subject) from "
+        f"{len({r.source for r in RECORDS})} sources, {len(apart)} of them"
+    )
+    assert said in text
+    assert f"{sum(r.whole for r in RECORDS)} are whole clearing sequences" in text
 
 
 def test_every_record_says_where_it_is_from() -> None:
