@@ -65,6 +65,9 @@ if TYPE_CHECKING:
     )
     from schemesim.plant.terminals import Terminal, protected_object
     from schemesim.plant.zones import duty, isolation_zones, merged_elements, zone_graph
+    from schemesim.report.compared import plot_timelines
+    from schemesim.report.grid_layout import neighbourhood
+    from schemesim.report.one_line import plot_one_line
     from schemesim.report.page import HtmlPage
     from schemesim.report.pictures import plot_timeline
     from schemesim.report.timeline import replay, timeline
@@ -119,6 +122,7 @@ if TYPE_CHECKING:
     from schemesim.scheme.trip_comparison import compare_trip_matrix
     from schemesim.scheme.trip_matrix import trip_matrix
     from schemesim.scheme.unavailability import RateData, RateRule, optimal_interval_yr, unavailability
+    from schemesim.show.curves import plot_time_current
     from schemesim.study.brackets import Bracket
     from schemesim.study.comparison import compare
     from schemesim.study.coordination import coordination
@@ -227,6 +231,10 @@ _HOMES = {
     "schemesim.report.timeline": "replay timeline",
     "schemesim.report.page": "HtmlPage",
     "schemesim.report.pictures": "plot_timeline",
+    "schemesim.report.compared": "plot_timelines",
+    "schemesim.report.one_line": "plot_one_line",
+    "schemesim.report.grid_layout": "neighbourhood",
+    "schemesim.show.curves": "plot_time_current",
     "schemesim.scenario": "Scenario load_scenario save_scenario",
     "schemesim.scenario.deciding": "decide",
     "schemesim.scheme.trip_matrix": "trip_matrix",
@@ -376,6 +384,7 @@ __all__ = [
     "minimal_sets",
     "misoperation",
     "misoperations_scenario",
+    "neighbourhood",
     "next_best",
     "optimal_interval_yr",
     "outages_scenario",
@@ -386,7 +395,10 @@ __all__ = [
     "p_selective",
     "p_within_limit",
     "planned_outages",
+    "plot_one_line",
+    "plot_time_current",
     "plot_timeline",
+    "plot_timelines",
     "protected_object",
     "races",
     "redundant",
