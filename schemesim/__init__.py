@@ -73,6 +73,9 @@ if TYPE_CHECKING:
     from schemesim.report.timeline import replay, timeline
     from schemesim.scenario import Scenario, load_scenario, save_scenario
     from schemesim.scenario.deciding import decide
+    from schemesim.scenario.equipment import load_equipment
+    from schemesim.scenario.equipment_list import equipment_list
+    from schemesim.scenario.relay_schedule import RelaySchedule, load_relay_schedule, relay_schedule
     from schemesim.scenario.reporting import report_scenario
     from schemesim.scenario.testing import intervals_scenario, misoperations_scenario
     from schemesim.scenario.timers import dial_scenario, importance_scenario, timer_scenario
@@ -249,6 +252,9 @@ _HOMES = {
     "schemesim.scheme.starting_values": "load_starting_values",
     "schemesim.study.proof_intervals": "TestCosts study_test_intervals",
     "schemesim.study.misoperations": "misoperation study_misoperations",
+    "schemesim.scenario.equipment": "load_equipment",
+    "schemesim.scenario.equipment_list": "equipment_list",
+    "schemesim.scenario.relay_schedule": "RelaySchedule load_relay_schedule relay_schedule",
     "schemesim.scenario.reporting": "report_scenario",
     "schemesim.scenario.testing": "intervals_scenario misoperations_scenario",
     "schemesim.study.timer_study": "Weights study_timers",
@@ -317,6 +323,7 @@ __all__ = [
     "Reach",
     "Reaches",
     "Recipe",
+    "RelaySchedule",
     "Role",
     "Run",
     "RunError",
@@ -362,6 +369,7 @@ __all__ = [
     "duplicate_chain",
     "duplicate_relay",
     "duty",
+    "equipment_list",
     "explore",
     "feeder",
     "fixed_ms",
@@ -378,6 +386,8 @@ __all__ = [
     "isolation_zones",
     "iter_locations",
     "line",
+    "load_equipment",
+    "load_relay_schedule",
     "load_scenario",
     "load_starting_values",
     "merged_elements",
@@ -404,6 +414,7 @@ __all__ = [
     "redundant",
     "register",
     "register_scenario",
+    "relay_schedule",
     "replay",
     "report_scenario",
     "ring",

@@ -46,6 +46,24 @@ def from_ms(value_ms: float, what: str = "time") -> int:
     return round(value_ms * US_PER_MS)
 
 
+def looks_like_seconds(value_ms: float, least_ms: float = 1.0) -> str:
+    """A hint where a time in ms is so short that it can only be meant in seconds, or an empty text.
+
+    Parameters
+    ----------
+    value_ms : float
+    least_ms : float
+        Shortest time that is plausible besides zero: 1 ms for anything that a relay or breaker does, more for a
+        delay that waits for another, or a limit.
+
+    Examples
+    --------
+    >>> looks_like_seconds(0.02), looks_like_seconds(20.0), looks_like_seconds(1, least_ms=10)
+    ('is it in seconds? 0.02 s is 20 ms', '', 'is it in seconds? 1 s is 1000 ms')
+    """
+    return f"is it in seconds? {value_ms:g} s is {1000 * value_ms:g} ms" if 0 < value_ms < least_ms else ""
+
+
 def from_cycles(cycles: float, frequency_hz: float, what: str = "time") -> int:
     """Microseconds of a time given in cycles of the power frequency.
 
