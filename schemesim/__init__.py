@@ -126,6 +126,7 @@ if TYPE_CHECKING:
     from schemesim.scheme.trip_matrix import trip_matrix
     from schemesim.scheme.unavailability import RateData, RateRule, optimal_interval_yr, unavailability
     from schemesim.show.curves import plot_time_current
+    from schemesim.show.tables import readable
     from schemesim.study.brackets import Bracket
     from schemesim.study.comparison import compare
     from schemesim.study.coordination import coordination
@@ -238,6 +239,7 @@ _HOMES = {
     "schemesim.report.one_line": "plot_one_line",
     "schemesim.report.grid_layout": "neighbourhood",
     "schemesim.show.curves": "plot_time_current",
+    "schemesim.show.tables": "readable",
     "schemesim.scenario": "Scenario load_scenario save_scenario",
     "schemesim.scenario.deciding": "decide",
     "schemesim.scheme.trip_matrix": "trip_matrix",
@@ -411,6 +413,7 @@ __all__ = [
     "plot_timelines",
     "protected_object",
     "races",
+    "readable",
     "redundant",
     "register",
     "register_scenario",

@@ -105,6 +105,25 @@ def to_html(frame: pd.DataFrame, *, caption: str = "", most: int = MOST_ROWS) ->
     return "\n".join(lines)
 
 
+def readable(frame: pd.DataFrame) -> pd.DataFrame:
+    """The same table as text that is fit to be printed: brackets in one column, numbers as engineers read them.
+
+    The frames that results give hold plain numbers, to be computed with; this one is for a
+    report. Either can be written by pandas: ``to_csv``, ``to_excel``, ``to_latex``.
+
+    Examples
+    --------
+    >>> import pandas as pd
+    >>> frame = pd.DataFrame({"bus": ["B1"], "p_cleared_low": [0.999], "p_cleared_high": [0.9991]})
+    >>> readable(frame).to_dict("records")
+    [{'bus': 'B1', 'p_cleared': '99.900…99.910 %'}]
+    """
+    import pandas as pd  # heavy: only when a table is asked for
+
+    headings, texts, _ = cells(frame)
+    return pd.DataFrame(texts, columns=headings, index=frame.index, dtype=object)
+
+
 def ranked(frame: pd.DataFrame, *by: str) -> pd.DataFrame:
     """The rows sorted by columns, or by the middle of their bounds, the greatest first; ties keep their order."""
     keys = {}

@@ -161,6 +161,7 @@ PUBLIC: list[str] = [
     "plot_timelines",
     "protected_object",
     "races",
+    "readable",
     "redundant",
     "register",
     "register_scenario",
