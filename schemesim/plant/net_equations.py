@@ -66,6 +66,7 @@ class Equations:
         self._matrices: dict[int, SequenceMatrix] = {}
         self._buses: dict[int, Bus] = {}
         self._splits: dict[tuple[int, frozenset[str]], Split] = {}
+        self._whole: dict[int, tuple[Ints, Flags]] = {}
 
     def matrix(self, sequence: int) -> SequenceMatrix:
         """The matrix of a sequence; the negative is the positive where all impedances are the same."""
@@ -115,9 +116,16 @@ class Equations:
 
     def without(self, sequence: int, cut: Iterable[int]) -> tuple[Ints, Flags]:
         """Parts of the network once some buses are taken away: part of each bus, and whether each part is earthed."""
-        s = min(sequence, 1)
+        s, gone = min(sequence, 1), list(cut)
+        if gone:
+            return self._parts(s, gone)
+        if s not in self._whole:
+            self._whole[s] = self._parts(s, gone)
+        return self._whole[s]
+
+    def _parts(self, s: int, cut: list[int]) -> tuple[Ints, Flags]:
         gone = np.zeros(self.buses, dtype=np.bool_)
-        gone[list(cut)] = True
+        gone[cut] = True
         pairs = self.links[s]
         label = components(self.buses, pairs[~gone[pairs].any(axis=1)])
         earthed = np.zeros(int(label.max(initial=-1)) + 1, dtype=np.bool_)

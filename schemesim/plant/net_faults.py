@@ -15,7 +15,7 @@ from typing import TypeVar
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location, Plant
 from schemesim.plant.net_case import FaultType, ShuntFault
-from schemesim.plant.net_elements import Elements, elements_of
+from schemesim.plant.net_elements import elements_of
 from schemesim.plant.net_equations import NEGATIVE, POSITIVE, ZERO, Equations
 from schemesim.plant.net_matrices import BASE_MVA
 from schemesim.plant.net_ports import FaultPort, Ports, Response
@@ -110,7 +110,7 @@ class FaultedPlant:
         self.equations = equations
         self.fault = fault
         self.voltage_factor = voltage_factor
-        self.port = _port(equations.elements, fault)
+        self.port = _port(equations, fault)
         self._pieces = {s: Topologies(equations, s) for s in {min(s, 1) for s in _NEEDED[fault.type]}}
         self.ports: dict[int, Ports] = {}
         for s in _NEEDED[fault.type]:
@@ -209,8 +209,9 @@ def _splits(equations: Equations, opened: frozenset[str]) -> dict[int, Split]:
     return {bus: equations.split(bus, frozenset(names)) for bus, names in by_bus.items()}
 
 
-def _port(elements: Elements, fault: ShuntFault) -> FaultPort:
-    plant, where = elements.plant, fault.location
+def _port(equations: Equations, fault: ShuntFault) -> FaultPort:
+    elements, where = equations.elements, fault.location
+    plant = elements.plant
     if where.section not in plant.section:
         tip = nearest(where.section, plant.section)
         raise reject("section of a fault", where.section, "the name of a section", tip=tip)
@@ -223,7 +224,7 @@ def _port(elements: Elements, fault: ShuntFault) -> FaultPort:
         expected = "the zero-sequence impedance of every line (r0_ohm, x0_ohm), for faults to earth"
         raise reject("zero sequence", f"not known of {lines}", expected)
     if where.section not in elements.segments:
-        return _node_port(elements, where)
+        return _node_port(equations, where)
     segment = next(s for s in elements.segments[where.section] if where.position <= s.end)
     x = (where.position - segment.start) / (segment.end - segment.start)
     first, last = segment.terminals
@@ -232,11 +233,11 @@ def _port(elements: Elements, fault: ShuntFault) -> FaultPort:
     return FaultPort(bus, -1, ((first, 1 - x), (last, x)), z)
 
 
-def _node_port(elements: Elements, where: Location) -> FaultPort:
+def _node_port(equations: Equations, where: Location) -> FaultPort:
+    elements = equations.elements
     if where.section in elements.node_of:
         node = elements.node_of[where.section]
     else:
         node = elements.ends_of[where.section][0 if where.position < 0.5 else -1][1]
     bus = int(elements.bus_of[node])
-    mine = sorted((elements.bus_of == bus).nonzero()[0].tolist())
-    return FaultPort(bus, mine.index(node))
+    return FaultPort(bus, equations.bus(bus).nodes[node])

@@ -77,15 +77,16 @@ class Ports:
         self.terminals: dict[int, int] = {}
         self.place: dict[int, int] = {}
         self.z: Complexes = np.zeros((0, 0), dtype=complex)
-        buses = {port.bus} if not port.terminals else {int(equations.bus_at[t]) for t, _ in port.terminals}
-        self.extend(sorted(buses))
+        buses = [int(equations.bus_at[t]) for t, _ in port.terminals] or [port.bus]
+        self._grow(list(dict.fromkeys(buses)))
+        self._reduce()
 
     def extend(self, buses: Iterable[int]) -> None:
         """Make the terminals of more buses known."""
         new = [b for b in dict.fromkeys(buses) if b not in self.known]
         if not new:
             return
-        starts, rows, values = self.matrix.terminals
+        starts, rows, _ = self.matrix.terminals
         bus_at = self.equations.bus_at
         reached: dict[int, None] = {}
         for b in new:
@@ -96,8 +97,13 @@ class Ports:
             reached[b] = None
             for t in mine:
                 reached.update(dict.fromkeys(bus_at[rows[starts[t] : starts[t + 1]]].tolist()))
-        added = [b for b in reached if b not in self.place]
-        self._grow(added)
+        self._grow([b for b in reached if b not in self.place])
+        self._reduce()
+
+    def _reduce(self) -> None:
+        """What of the network the terminals at hand see."""
+        starts, rows, values = self.matrix.terminals
+        bus_at = self.equations.bus_at
         count = len(self.terminals)
         at_buses = np.zeros((len(self.place), count), dtype=complex)
         own = np.zeros((count, count), dtype=complex)
@@ -112,7 +118,8 @@ class Ports:
         if self.port.terminals:
             for t, weight in self.port.terminals:
                 drawn[self.place[int(bus_at[t])]] += weight
-                self.offset[self.terminals[t]] += weight
+                if t in self.terminals:
+                    self.offset[self.terminals[t]] += weight
         else:
             drawn[self.place[self.port.bus]] = 1.0
         self.by_moved = self.z @ at_buses
