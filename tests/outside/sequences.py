@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from schemesim.engine.answers import FixedAnswers
 from schemesim.engine.case import Case, bind
+from schemesim.engine.electrical import ElectricalSensing
 from schemesim.engine.event import run_event
 from schemesim.engine.outcome import Run
 from schemesim.engine.program import compile_scheme
@@ -21,6 +22,7 @@ from schemesim.plant.layouts import (
 from schemesim.plant.model import Plant, PlantBuilder, SectionKind
 from schemesim.scheme.dress import dress
 from schemesim.scheme.policy import Policy
+from schemesim.scheme.settings_rules import settings_for
 from schemesim.study.losses import lost
 from tests.rules.small import at
 
@@ -36,7 +38,11 @@ def played(plant: Plant, policy: Policy, place: str, *failed: str) -> tuple[Case
 
 def openings(plant: Plant, policy: Policy, place: str, *failed: str) -> dict[str, float]:
     """When each breaker opens in ms, and ``cleared`` (less than nothing: never)."""
-    _, run = played(plant, policy, place, *failed)
+    return in_ms(played(plant, policy, place, *failed)[1])
+
+
+def in_ms(run: Run) -> dict[str, float]:
+    """Openings of a run and its clearing time."""
     cleared = run.outcome.t_clear_us
     found = {o.breaker: o.t_open_us / 1000 for o in run.outcome.openings}
     return found | {"cleared": NOT_CLEARED if cleared is None else cleared / 1000}
@@ -63,6 +69,28 @@ def hub(layout: str, **keywords: object) -> Plant:
     }[layout]
     build(b, "Dale", [Bay(name, name) for name in FAR], **keywords)  # type: ignore[arg-type]  # those of the layout
     return b.build()
+
+
+def star() -> Plant:
+    """The chain with a third line, of 60 km, from Birch to Dale, which feeds in."""
+    b = PlantBuilder()
+    line(b, "L3", 60.0)
+    for name, length in (("L1", 100.0), ("L2", 100.0)):
+        line(b, name, length)
+    ends = (("G1", "Alder", 0.0, "L1"), ("G3", "Cedar", 1.0, "L2"), ("G4", "Dale", 1.0, "L3"))
+    for unit, station, end, circuit in ends:
+        generator(b, unit, station=station)
+        single_bus(b, station, [Bay(circuit, circuit, at=end), Bay(unit, unit)])
+    single_bus(b, "Birch", [Bay("L1", "L1", at=1.0), Bay("L2", "L2"), Bay("L3", "L3")])
+    return b.build()
+
+
+def measured(plant: Plant, policy: Policy, place: str, *failed: str) -> dict[str, float]:
+    """As ``openings``, for a three-phase fault by computed currents, elements set by the rules of the project."""
+    scheme = dress(plant, policy)
+    sensing = ElectricalSensing(settings_for(plant, scheme))
+    case = bind(compile_scheme(plant, scheme), at(place), sensing)
+    return in_ms(run_event(case, FixedAnswers(case.program, failed)))
 
 
 def tripped_at_dale(layout: str, policy: Policy, place: str, *failed: str) -> frozenset[str]:

@@ -9,8 +9,10 @@ from schemesim.plant.model import Location, Plant, PlantBuilder, Section, Sectio
 from schemesim.plant.net_case import FaultType, ShuntFault
 from schemesim.plant.net_data import LineImpedance, SourceImpedance
 from schemesim.plant.net_faults import network_of
+from schemesim.scheme.policy import LineScheme, ProtectionSet, single_set
 from tests.outside.records import DERIVED, LIBRARY, MEMORY, PUBLISHED, Record, half
-from tests.unit.electrical_plants import bay, ladder
+from tests.outside.sequences import NOT_CLEARED, measured, star
+from tests.unit.electrical_plants import bay, ladder, with_impedances
 
 SUBJECT = "short circuit"
 
@@ -135,6 +137,10 @@ def growth() -> float:
     return whole / relay
 
 
+PLAIN = single_set(sets=(ProtectionSet(line=LineScheme.DISTANCE),), breaker_failure=None)
+INDUCTIVE = with_impedances(star(), z1=0.4j, z0=1.2j, source_ohm=20.0)
+SILENT = "Birch/L2/relay 1: failure_to_operate"
+
 SAADAT = "Saadat, Power System Analysis"
 SEQUENCES = "symmetrical components, sequence networks by hand (Anderson, Analysis of Faulted Power Systems)"
 INFEED = "apparent impedance with infeed, Z1 + (1 + I_infeed/I_relay)·Z2 (line protection guides)"
@@ -162,5 +168,14 @@ RECORDS = (
        lambda: apparent_ohm(infeed=True, beyond=1.0)),
     of(INFEED, DERIVED, "without: 10 + 10, as far as a reach along the line goes, ohm", 20.0, 1e-9,
        lambda: apparent_ohm(infeed=False, beyond=1.0)),
+    # Lines of 0.4 ohm a km, sources of 20 ohm: Alder 20 + 40 and Dale 20 + 24 ohm from Birch, so the line beyond counts
+    # 1 + 60/44 times for Alder and 1 + 44/60 times for Dale. Zone 3 is 88 and 52.8 ohm. At 50 km Alder measures 87.3
+    # and trips; then Dale measures 24 + 20 and begins its own second. At 60 km they measure 96.7 and 65.6: nobody.
+    of(INFEED, DERIVED, "relay silent at Birch, L2 at 50 km: zone 3 of Alder, then of Dale",
+       {"Cedar.L2.CB": 70.0, "Alder.L1.CB": 1070.0, "Dale.L3.CB": 2140.0, "cleared": 2140.0}, 0.0005,
+       lambda: measured(INDUCTIVE, PLAIN, "L2", SILENT), whole=True),
+    of(INFEED, DERIVED, "the same at 60 km, within zone 3 by length: neither sees it",
+       {"Cedar.L2.CB": 70.0, "cleared": NOT_CLEARED}, 0.0005,
+       lambda: measured(INDUCTIVE, PLAIN, "L2@0.6", SILENT), whole=True),
     of(INFEED, DERIVED, "factor of the line beyond at its middle", 2.0, 1e-9, growth),
 )  # fmt: skip

@@ -19,7 +19,7 @@ from schemesim.scheme.policy import (
     single_set,
 )
 from tests.outside.records import MEMORY, PRACTICE, Record
-from tests.outside.sequences import openings
+from tests.outside.sequences import openings, star
 from tests.rules.small import chain, margin, play
 
 SUBJECT = "timing"
@@ -148,6 +148,10 @@ RECORDS = (
        "line of a dark station with infeed from both sides: 20 + 50, and 20 + 1000 + 50 by zone 3",
        {"Alder.L1.CB": 70.0, "Cedar.L2.CB": 1070.0, "cleared": 1070.0}, 0.0005,
        lambda: openings(chain(), duplicate_chain(), "L1", *DARK), whole=True),
+    of("remote back-up with infeed, by length: each remote end has zone 3 beyond the next line", PRACTICE,
+       "relay silent at Birch, L2 at 50 km: Alder at 150 of 220 km and Dale at 110 of 132 km by zone 3",
+       {"Cedar.L2.CB": 70.0, "Alder.L1.CB": 1070.0, "Dale.L3.CB": 1070.0, "cleared": 1070.0}, 0.0005,
+       lambda: openings(star(), PLAIN, "L2", "Birch/L2/relay 1: failure_to_operate"), whole=True),
     of("stepped distance: 80 % at once at each end, the rest in zone 2", PRACTICE,
        "fault at 90 %: the near end at once, the far end in zone 2",
        {"Birch.L1.CB": 70.0, "Alder.L1.CB": 420.0, "cleared": 420.0}, 0.0005,
