@@ -63,6 +63,7 @@ class Campaign:
     sensing: Sensing = field(default_factory=LogicalSensing)
     dispatch: str | None = None
     horizon_us: int = DEFAULT_HORIZON_US
+    _packed: dict[str, bytes] = field(default_factory=dict, init=False)
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "events", tuple(self.events))
@@ -137,7 +138,10 @@ class Campaign:
 
     def packed(self, place: int) -> bytes:
         """The scheme of a place, ready to travel."""
-        return packed(self.variants[self.places[place][0]], self.sensing)
+        variant = self.places[place][0]
+        if variant not in self._packed:
+            self._packed[variant] = packed(self.variants[variant], self.sensing)
+        return self._packed[variant]
 
 
 def _event_data(event: Event) -> list[object]:

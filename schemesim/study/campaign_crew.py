@@ -11,7 +11,7 @@ import os
 import signal
 import sys
 import threading
-from collections import deque
+from collections import Counter, deque
 from collections.abc import Callable, Iterator
 from concurrent.futures import FIRST_COMPLETED, BrokenExecutor, Executor, Future, ProcessPoolExecutor, wait
 from contextlib import suppress
@@ -27,6 +27,9 @@ AHEAD = 256
 
 AHEAD_EACH = 3
 """The same for each process of our own."""
+
+WITH_SCHEME = 8
+"""Pieces that carry the scheme of a variant with them from the start, so that workers have it soon."""
 
 MAX_DEATHS = 8
 """Crews of processes in a row that may die with no piece of work finished between."""
@@ -58,6 +61,7 @@ class Crew:
         self._workers = min(workers, pieces)
         self._again: deque[Work] = deque()
         self._waiting: dict[Future[Chunk | Missing], Work] = {}
+        self._sent: Counter[str] = Counter()
         self._deaths = 0
 
     def __enter__(self) -> Crew:
@@ -111,6 +115,9 @@ class Crew:
             work = self._again.popleft() if self._again else next(self._work, None)
             if work is None:
                 return False
+            if self._sent[work.key] < WITH_SCHEME and work.packed is None:
+                work = replace(work, packed=self._packed(work.place))
+            self._sent[work.key] += 1
             try:
                 self._waiting[self._executor().submit(run_work, work)] = work
             except BrokenExecutor:

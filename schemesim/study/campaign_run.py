@@ -13,7 +13,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from schemesim.engine.sensing import Event
-from schemesim.errors import ErrorList, nearest, reject
+from schemesim.errors import ErrorList, SchemesimError, nearest, reject
 from schemesim.study.campaign import Campaign, whole
 from schemesim.study.campaign_counts import PlaceCounts
 from schemesim.study.campaign_crew import Crew
@@ -175,9 +175,11 @@ def run_campaign(
                     kept.add(part)
                     finished += part.end - part.first
                     tell(finished, wanted)
-            except KeyboardInterrupt:
+            except (KeyboardInterrupt, SchemesimError) as error:
                 for part in crew.finished():
                     kept.add(part)
+                if isinstance(error, SchemesimError):
+                    raise
         return _result(kept)
 
 

@@ -185,7 +185,11 @@ class Backwards(Executor):
             todo, self.waiting, self.timer = self.waiting[::-1], [], None
         for future, fn, args in todo:
             if future.set_running_or_notify_cancel():
-                done = fn(*pickle.loads(pickle.dumps(args)))
+                try:
+                    done = fn(*pickle.loads(pickle.dumps(args)))
+                except BaseException as error:
+                    future.set_exception(error)
+                    continue
                 if isinstance(done, Chunk):
                     self.ran.append((done.place, done.first, done.end))
                 future.set_result(done)
@@ -195,7 +199,7 @@ class Backwards(Executor):
 def loky() -> Iterator[Executor]:
     from joblib.externals.loky import get_reusable_executor  # type: ignore[import-untyped]  # carries no types
 
-    executor = get_reusable_executor(max_workers=2, timeout=20)
+    executor = get_reusable_executor(max_workers=2, timeout=300)
     try:
         yield executor
     finally:
