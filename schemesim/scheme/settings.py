@@ -17,6 +17,7 @@ from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Plant
 from schemesim.scheme.model import Scheme, Sense
 from schemesim.scheme.phasor_elements import Element
+from schemesim.show.tables import to_html
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -165,4 +166,4 @@ class Settings:
         return pd.DataFrame(rows, columns=["block", "element", "what", "value", "reason"])
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())

@@ -21,6 +21,7 @@ from schemesim.errors import InputError, Problem, nearest
 from schemesim.scheme.failure_data import NO_FAULT_PER_YR, FailureData
 from schemesim.scheme.model import MODES, ComponentKind, FailureMode
 from schemesim.scheme.unavailability import Over, Quality, RateData, RateRule, unavailability
+from schemesim.show.tables import to_html
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -88,7 +89,7 @@ class StartingValues:
         return f"StartingValues({len(self.rows)} modes: {said})"
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def load_starting_values(path: str | Path | None = None) -> StartingValues:

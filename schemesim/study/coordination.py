@@ -17,6 +17,7 @@ from schemesim.scheme.phasor_elements import Overcurrent
 from schemesim.scheme.phasor_quantities import Quantities
 from schemesim.scheme.settings import Settings
 from schemesim.scheme.settings_data import NetworkOf
+from schemesim.show.tables import to_html
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -94,7 +95,7 @@ class Coordination:
         return frame
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
     def plot(self, ax: Axes | None = None) -> Axes:
         """The inverse curves over current, and each pair's smallest margin as a line between the two times."""

@@ -22,6 +22,7 @@ from schemesim.scheme.phasor_elements import Biased, Element, Part, size_of
 from schemesim.scheme.phasor_quantities import Quantities
 from schemesim.scheme.settings import Settings
 from schemesim.scheme.settings_data import NetworkOf
+from schemesim.show.tables import to_html
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -115,7 +116,7 @@ class ElementAudit:
         return pd.DataFrame(rows, columns=names)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
     def plot(self, ax: Axes | None = None, *, most: int = 40) -> Axes:
         """Smallest multiple of what each must see and greatest of what it must not, around the setting."""

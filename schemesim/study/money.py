@@ -28,6 +28,7 @@ from typing import TYPE_CHECKING
 from schemesim.errors import ErrorList
 from schemesim.plant.model import Location
 from schemesim.scheme.model import Component, ComponentKind, Scheme
+from schemesim.show.tables import to_html
 from schemesim.study.currency import EXPECTED, is_unit
 
 if TYPE_CHECKING:
@@ -204,7 +205,7 @@ class SchemeCost:
         return f"SchemeCost({len(self.components)} components, {self.per_yr:.6g} a year)"
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
