@@ -64,6 +64,38 @@ def looks_like_seconds(value_ms: float, least_ms: float = 1.0) -> str:
     return f"is it in seconds? {value_ms:g} s is {1000 * value_ms:g} ms" if 0 < value_ms < least_ms else ""
 
 
+def limit_mistake(limit_us: object) -> tuple[str, str] | None:
+    """What is wrong with a limit of the clearing time in microseconds: what was expected, and a hint; or None.
+
+    A limit over zero and under a millisecond can only be meant in ms.
+
+    Examples
+    --------
+    >>> limit_mistake(150)
+    ('a whole number of microseconds, zero or at least 1000', 'is it in ms? 150 ms is 150000')
+    >>> limit_mistake(150_000) is None
+    True
+    """
+    if isinstance(limit_us, bool) or not isinstance(limit_us, int) or limit_us < 0:
+        return "a whole number of microseconds, zero or more", ""
+    if 0 < limit_us < US_PER_MS:
+        expected = f"a whole number of microseconds, zero or at least {US_PER_MS}"
+        return expected, f"is it in ms? {limit_us} ms is {limit_us * US_PER_MS}"
+    return None
+
+
+def check_limit_us(limit_us: object) -> None:
+    """Refuse a limit that :func:`limit_mistake` finds wrong.
+
+    Raises
+    ------
+    InputError
+    """
+    mistake = limit_mistake(limit_us)
+    if mistake is not None:
+        raise reject("limit_us", limit_us, mistake[0], tip=mistake[1])
+
+
 def from_cycles(cycles: float, frequency_hz: float, what: str = "time") -> int:
     """Microseconds of a time given in cycles of the power frequency.
 

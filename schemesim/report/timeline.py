@@ -23,7 +23,7 @@ from schemesim.report.selection import select
 from schemesim.report.sequence import ClearingSequence, plain, shorten
 from schemesim.study.injection import Injected
 from schemesim.study.tree import Leaf
-from schemesim.ticks import from_cycles, from_ms, to_cycles, to_ms
+from schemesim.ticks import from_cycles, from_ms, looks_like_seconds, to_cycles, to_ms
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -182,6 +182,9 @@ def timeline(
     """
     from_cycles(1, frequency_hz)
     limit_us = None if limit_ms is None else from_ms(limit_ms, "limit of the clearing time")
+    tip = "" if limit_ms is None else looks_like_seconds(limit_ms)
+    if tip:
+        raise reject("limit of the clearing time", limit_ms, "a time of 1 ms or more", tip=tip)
     if not run.log:
         again = replay(case, run, times)
         if (again.outcome, again.asked) != (run.outcome, run.asked):

@@ -20,7 +20,7 @@ import numpy as np
 
 from schemesim.errors import ErrorList, reject
 from schemesim.scheme.delay_checks import A_TIME, take_times, whole_us
-from schemesim.ticks import from_ms
+from schemesim.ticks import from_ms, looks_like_seconds
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -200,11 +200,20 @@ def fixed_ms(ms: float) -> Fixed:
     Raises
     ------
     InputError
-        If it is negative, NaN, infinite, not a number or too long.
+        If it is negative, NaN, infinite, not a number or too long, or over zero and under 1 ms: nothing in a
+        protection scheme is so quick, so it is meant in seconds (``Fixed`` takes microseconds, any of them).
 
     Examples
     --------
     >>> fixed_ms(12.5)
     Fixed(us=12500)
+    >>> fixed_ms(0.02)  # doctest: +ELLIPSIS
+    Traceback (most recent call last):
+    ...
+    schemesim.errors.InputError: delay: got 0.02, expected 0, or a time of 1 ms or more (is it in seconds? 0.02 s ...)
     """
-    return Fixed(from_ms(ms, "delay"))
+    time = Fixed(from_ms(ms, "delay"))
+    tip = looks_like_seconds(ms)
+    if tip:
+        raise reject("delay", ms, "0, or a time of 1 ms or more", tip=tip)
+    return time

@@ -25,6 +25,7 @@ from schemesim.study.brackets import Bracket, exactly, total
 from schemesim.study.location import LocationOptions, LocationResult, study_location
 from schemesim.study.no_fault import NoFaultStudy
 from schemesim.study.tree import MAX_RUNS
+from schemesim.ticks import limit_mistake
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -337,9 +338,9 @@ def _check(
     for at in locations:
         if at.section not in known:
             errors.add("section", at.section, "a section", tip=nearest(at.section, known))
-    limit: object = limit_us
-    if isinstance(limit, bool) or not isinstance(limit, int) or limit < 0:
-        errors.add("limit_us", limit, "a whole number of microseconds, zero or more")
+    mistake = limit_mistake(limit_us)
+    if mistake is not None:
+        errors.add("limit_us", limit_us, mistake[0], tip=mistake[1])
     for at, rate in (frequencies or {}).items():
         if not 0 <= rate < float("inf"):
             errors.add(f"faults per year at {at}", rate, "a finite number of zero or more")

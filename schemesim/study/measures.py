@@ -25,6 +25,7 @@ from schemesim.scheme.model import Probability, Role
 from schemesim.study.brackets import Bracket, Expectation, exactly
 from schemesim.study.odds import add
 from schemesim.study.tree import End, Tree
+from schemesim.ticks import check_limit_us
 
 
 def p_cleared(tree: Tree) -> Bracket:
@@ -33,7 +34,14 @@ def p_cleared(tree: Tree) -> Bracket:
 
 
 def p_within_limit(tree: Tree, limit_us: int) -> Bracket:
-    """Probability that the fault is cleared at or before a limit in microseconds."""
+    """Probability that the fault is cleared at or before a limit in microseconds.
+
+    Raises
+    ------
+    InputError
+        For a limit that is none, or can only be meant in ms.
+    """
+    check_limit_us(limit_us)
     return tree.bracket(lambda o: cleared_by_time(o, limit_us))
 
 

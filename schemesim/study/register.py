@@ -25,6 +25,7 @@ from schemesim.scheme.model import Probability
 from schemesim.show.tables import to_html
 from schemesim.study.footnote import Group, Grouped, Monitored, check_monitored, group_of
 from schemesim.study.spoiled import AtLocation, Effect, RegisterOptions, Spoiled, place_row, register_at
+from schemesim.ticks import limit_mistake
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -249,9 +250,10 @@ def limits_of(program: Program, chosen: list[Location], limit_us: int | Mapping[
         if at.section not in known:
             errors.add("section", at.section, "a section", tip=nearest(at.section, known))
         limit: object = limit_us.get(at) if isinstance(limit_us, Mapping) else limit_us
-        if isinstance(limit, bool) or not isinstance(limit, int) or limit < 0:
-            errors.add(f"limit_us at {at}", limit, "a whole number of microseconds, zero or more")
-        else:
+        mistake = limit_mistake(limit)
+        if mistake is not None:
+            errors.add(f"limit_us at {at}", limit, mistake[0], tip=mistake[1])
+        elif isinstance(limit, int):
             limits[at] = limit
     errors.raise_if_any()
     return limits

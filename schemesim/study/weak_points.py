@@ -10,6 +10,7 @@ from schemesim.engine.case import Case
 from schemesim.scheme.model import Probability
 from schemesim.study.measures import cleared_by_time, excess, nominal
 from schemesim.study.tree import Happens, Tree
+from schemesim.ticks import check_limit_us
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,6 +64,8 @@ def single_points(tree: Tree, case: Case, limit_us: int | None = None) -> tuple[
     tuple of SinglePoint
         Not cleared first, then late, then more breakers; the more probable first.
     """
+    if limit_us is not None:
+        check_limit_us(limit_us)
     found = []
     base = nominal(tree)
     late_anyway = base is not None and limit_us is not None and not cleared_by_time(base, limit_us)

@@ -197,7 +197,7 @@ def test_only_like_is_compared() -> None:
     one = study(feeder_scheme(), locations=[F1])
     for other in (
         study(feeder_scheme(), locations=[F2]),
-        study(feeder_scheme(), locations=[F1], limit_us=1),
+        study(feeder_scheme(), locations=[F1], limit_us=1000),
         study(feeder_scheme(), locations=[F1], frequencies={F1: 1.0}),
     ):
         with pytest.raises(InputError, match="locations, limit and frequencies"):
