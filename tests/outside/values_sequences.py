@@ -38,6 +38,7 @@ LINE_SIDE, BUS_SIDE = CtPlacement.CIRCUIT_SIDE, CtPlacement.BUS_SIDE
 NO_BF = single_set(breaker_failure=None)
 END_FAULT = single_set(end_fault=True, breaker_failure=None)
 DEAD_ZONE = "fault between breaker and CT, one CT only (protection handbooks, bus-bar protection)"
+COUPLER = "fault between a bus coupler and its one CT takes both buses (protection handbooks, bus-bar protection)"
 STATION_DC = "loss of a station's DC: its bus is cleared from the remote ends only"
 DARK = ("Birch/DC 1: lost", "Birch/DC 2: lost")
 
@@ -81,6 +82,18 @@ RECORDS = (
     of(DEAD_ZONE, PRACTICE, "CT on the bus's side, breaker failure trips the bus",
        {"Birch.L1.CB": 70.0, "Alder.L1.CB": 85.0, "Birch.L2.CB": 230.0, "Birch.F2.CB": 230.0, "cleared": 230.0}, 0.0005,
        lambda: dead_zone(BUS_SIDE, ONE), whole=True),
+    # One CT at the coupler: the bus whose zone reaches to the CT is tripped, and the other goes on feeding the fault
+    # until breaker failure of the coupler trips it too.
+    *(
+        of(COUPLER, PRACTICE, f"CT on the side of {side}: {first[1]} at once, the other by breaker failure",
+           dict.fromkeys(("Dale.BC.CB", *(f"Dale.{x}.CB" for x in first[0])), 80.0)
+           | dict.fromkeys((f"Dale.{x}.CB" for x in last), 240.0) | {"cleared": 240.0}, 0.0005,
+           partial(lambda ct, place: openings(hub("double bus", ct=ct), ONE, place), ct, place), whole=True)
+        for side, ct, place, first, last in (
+            ("B1", BUS_SIDE, "Dale.BC.b", (("L2", "L4"), "B2"), ("L1", "L3")),
+            ("B2", LINE_SIDE, "Dale.BC.c", (("L1", "L3"), "B1"), ("L2", "L4")),
+        )
+    ),
     of(STATION_DC, PRACTICE, "bus fault at a station with generation left dark: never cleared",
        {"Birch.L1.CB": 420.0, "cleared": NOT_CLEARED}, 0.0005,
        lambda: openings(chain(), duplicate_chain(), "Alder.B1", "Alder/DC 1: lost", "Alder/DC 2: lost"), whole=True),
