@@ -28,6 +28,7 @@ from schemesim.engine.sensing import NoFault, Sensing
 from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Location
 from schemesim.scheme.model import Role, Scheme
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, exactly, total
 from schemesim.study.tree import Happens, explore
 
@@ -95,6 +96,9 @@ class Dependability:
                 for j in self.judged
             ]
         )
+
+    def _repr_html_(self) -> str:
+        return to_html(self.table())
 
     def __repr__(self) -> str:
         return (

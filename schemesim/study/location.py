@@ -14,6 +14,7 @@ from schemesim.engine.program import Program
 from schemesim.engine.sensing import Sensing
 from schemesim.plant.model import Location
 from schemesim.scheme.model import Role
+from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, Expectation
 from schemesim.study.losses import load_lost_mw, sections_lost
 from schemesim.study.measures import (
@@ -36,6 +37,7 @@ from schemesim.study.tree import MAX_RUNS, Tree, explore
 from schemesim.study.weak_points import SinglePoint, single_points
 
 if TYPE_CHECKING:
+    import pandas as pd
     from matplotlib.axes import Axes
 
 
@@ -62,7 +64,7 @@ class LocationOptions:
     dispatch: str | None = None
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, repr=False)
 class LocationResult:
     """What was found for one fault location.
 
@@ -156,6 +158,35 @@ class LocationResult:
             return ""
         point = self.single_points[0]
         return f"{point.failure} ({point.kind})"
+
+    def table(self) -> pd.DataFrame:
+        """The figures of the one location, one row for each measure; bounds where it has them."""
+        import pandas as pd  # heavy: only when a table is asked for
+
+        return pd.DataFrame(
+            [{"measure": name, "low": float(b.low), "high": float(b.high)} for name, b in self._figures().items()]
+        )
+
+    def _figures(self) -> dict[str, Bracket]:
+        names = ("p_cleared", "p_within_limit", "p_selective", "p_undetermined", "p_not_cleared", "p_late_or_uncleared")
+        found: dict[str, Bracket] = {name: getattr(self, name) for name in names}
+        found |= {f"p_by_{role.name.lower()}": b for role, b in self.p_by_role.items()}
+        means = ("breakers_mean", "breakers_excess", "load_lost_mw", "sections_lost")
+        return found | {name: getattr(self, name).bracket for name in means}
+
+    def __repr__(self) -> str:
+        t = None if self.nominal is None else self.nominal.t_clear_us
+        plainly = "not cleared" if t is None else f"cleared at {t / 1000:g} ms"
+        lines = [
+            f"LocationResult({self.location}: with no failure {plainly}, {len(self.intended)} breakers intended, {len(self.single_points)} single points of failure, "
+            f"{self.runs} runs)"
+        ]
+        lines.extend(f"  {name:28} {b}" for name, b in self._figures().items())
+        lines.append(f"  {'clearing time, P95':28} {self.clearing.quantile(0.95)}")
+        return "\n".join(lines)
+
+    def _repr_html_(self) -> str:
+        return to_html(self.table(), caption=f"fault on {self.location}")
 
     def plot_breakers(self, ax: Axes | None = None) -> Axes:
         """The distribution of the number of breakers tripped, on a logarithmic axis, with its brackets."""

@@ -52,6 +52,8 @@ def result(name: str) -> Any:
             return timeline(demo().case_of(demo().listed("retrip")), demo().play("retrip"), limit_ms=150)
         case "locations":
             return studied()
+        case "location":
+            return studied().results[0]
         case "comparison":
             return compare({"full": studied(), "single": studied("single")})
         case "injection":
@@ -75,7 +77,7 @@ def result(name: str) -> Any:
 
 
 RESULTS = (
-    "timeline", "locations", "comparison", "injection", "coverage", "trip matrix", "independence", "importance",
+    "timeline", "locations", "location", "comparison", "injection", "coverage", "trip matrix", "independence", "importance",
     "timers", "frontier",
 )  # fmt: skip
 each = pytest.mark.parametrize("name", RESULTS)
