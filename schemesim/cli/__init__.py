@@ -14,8 +14,8 @@ bracket that certainly holds. ``null`` stands for none and for what has no bound
 
 check
     ``stations``, ``sections``, ``breakers``, ``sources``, ``locations`` (counts); ``policies``, for each its
-    ``components``, ``blocks`` and ``questions``; ``runs`` (names); ``coverage_gaps`` (sections in no
-    protected zone).
+    ``components``, ``blocks`` and ``questions``; ``dc_domains``: for each policy and label its ``stations`` and how
+    many ``outputs`` hang on it; ``runs`` (names); ``coverage_gaps`` (sections in no protected zone).
 show
     ``run`` (null for ``--fault``), ``policy``, ``dispatch`` (null: all sources in service), ``out_of_service``,
     ``event``, ``failures``, ``limit_ms``; ``outcome`` with ``status``, ``t_clear_ms``,

@@ -10,6 +10,7 @@ from schemesim.cli.output import DONE, listing, put, table_text, whole_of
 from schemesim.errors import reject
 from schemesim.scenario import Scenario
 from schemesim.scenario.model import location
+from schemesim.scheme.model import ComponentKind, Gate, Scheme
 
 if TYPE_CHECKING:
     from schemesim.engine.case import Case
@@ -22,8 +23,10 @@ def check(scenario: Scenario, options: argparse.Namespace) -> int:
 
     plant = scenario.plant
     rows: list[dict[str, object]] = []
+    domains: list[dict[str, object]] = []
     for name in scenario.policies:
         program = scenario.program(name)
+        domains += _dc_domains(name, program.scheme)
         rows.append(
             {
                 "policy": name,
@@ -50,9 +53,32 @@ def check(scenario: Scenario, options: argparse.Namespace) -> int:
         "runs: " + (", ".join(names) if names else "none listed"),
         "",
         table_text(rows, list(rows[0])),
+        "",
+        table_text(domains, ["policy", "dc_domain", "stations", "outputs"], 2),
+        "outputs: of relays and trip circuits that hang on these DC supplies; a label met once only may be misspelt",
     ]
-    put(options, scenario.name, {**counts, "policies": rows, "runs": names, "coverage_gaps": gaps}, rows, text)
+    content = {**counts, "policies": rows, "dc_domains": domains, "runs": names, "coverage_gaps": gaps}
+    put(options, scenario.name, content, rows, text)
     return DONE
+
+
+def _dc_domains(policy: str, scheme: Scheme) -> list[dict[str, object]]:
+    """The DC domains of a policy by their label, where they are, and how much hangs on them."""
+    found: dict[str, dict[str, int]] = {}
+    for c in scheme.components:
+        if c.kind is ComponentKind.DC:
+            station, _, label = c.name.rpartition("/")
+            found.setdefault(label, {})[station] = 0
+    for block in scheme.blocks:
+        if isinstance(block, Gate):
+            for name in {ask.component for ask in block.unless}:
+                station, _, label = name.rpartition("/")
+                if station in found.get(label, {}):
+                    found[label][station] += 1
+    return [
+        {"policy": policy, "dc_domain": label, "stations": ", ".join(at), "outputs": sum(at.values())}
+        for label, at in sorted(found.items())
+    ]
 
 
 def show(scenario: Scenario, options: argparse.Namespace) -> int:

@@ -144,5 +144,18 @@ def plain(value: float) -> str:
 
 
 def words_of(row: Row) -> str:
-    """What a row of the log says."""
-    return f"answered {row.what}" if row.kind == "question" else row.what
+    """What a row of the log says.
+
+    A timer that runs out has put nothing out yet: what stands behind it may ask for more, as breaker failure
+    does for current. An element that starts has begun to measure and not picked up.
+    """
+    if row.kind == "question":
+        return f"answered {row.what}"
+    return _WORDS.get((row.kind, row.what), row.what)
+
+
+_WORDS = {
+    ("timer", "operates"): "runs out",
+    ("sense", "starts"): "begins to measure",
+    ("sense", "starts to reset"): "begins to reset",
+}
