@@ -223,7 +223,7 @@ def _put(
         for r in rows[:MAX_ROWS]
     ]  # fmt: skip
     state = "" if result.complete else "; not complete, the same call goes on from there"
-    text = [f"{result.trials} of {result.wanted} trials at {len(places)} places{state}", ""]
+    text = [f"{result.trials} of {max(result.trials, result.wanted)} trials at {len(places)} places{state}", ""]
     if shown:
         text += [table_text(shown, list(shown[0]), 1), ""]
     if len(rows) > MAX_ROWS:

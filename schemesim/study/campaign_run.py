@@ -98,7 +98,8 @@ class CampaignResult:
 
     def __repr__(self) -> str:
         state = "" if self.complete else " (not complete)"
-        lines = [f"CampaignResult: {self.trials} of {self.wanted} trials at {len(self.places)} places{state}"]
+        of = max(self.trials, self.wanted)
+        lines = [f"CampaignResult: {self.trials} of {of} trials at {len(self.places)} places{state}"]
         lines += [f"  {p.event}, {p.variant}: {p.trials} trials, cleared {p.p_cleared()!r}" for p in self.places[:12]]
         return "\n".join([*lines, f"  … and {len(self.places) - 12} more"] if len(self.places) > 12 else lines)
 
@@ -180,7 +181,7 @@ def run_campaign(
                     kept.add(part)
                 if isinstance(error, SchemesimError):
                     raise
-        return _result(kept)
+        return _result(kept, campaign.rounds)
 
 
 def load_campaign(store: str) -> CampaignResult:
@@ -192,11 +193,11 @@ def load_campaign(store: str) -> CampaignResult:
         For a file that is no store.
     """
     with Store(store) as kept:
-        return _result(kept)
+        return _result(kept, kept.trials)
 
 
-def _result(kept: Store) -> CampaignResult:
-    listed, trials = kept.places(), kept.trials
+def _result(kept: Store, trials: int) -> CampaignResult:
+    listed = kept.places()
     found = [kept.counts(n) for n in range(len(listed))]
     complete = all(c is not None and not list(missing_ranges(c.ranges, trials, trials)) for c in found)
     return CampaignResult(tuple(c for c in found if c is not None), trials * len(listed), complete)
