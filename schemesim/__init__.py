@@ -72,6 +72,7 @@ if TYPE_CHECKING:
     from schemesim.report.pictures import plot_timeline
     from schemesim.report.timeline import replay, timeline
     from schemesim.scenario import Scenario, load_scenario, save_scenario
+    from schemesim.scenario.campaigns import campaign_in, campaign_scenario, export_campaign
     from schemesim.scenario.deciding import decide
     from schemesim.scenario.equipment import load_equipment
     from schemesim.scenario.equipment_list import equipment_list
@@ -128,6 +129,9 @@ if TYPE_CHECKING:
     from schemesim.show.curves import plot_time_current
     from schemesim.show.tables import readable
     from schemesim.study.brackets import Bracket
+    from schemesim.study.campaign import Campaign
+    from schemesim.study.campaign_replay import replay_trial
+    from schemesim.study.campaign_run import load_campaign, run_campaign
     from schemesim.study.comparison import compare
     from schemesim.study.coordination import coordination
     from schemesim.study.dependability import outputs_of, study_dependability
@@ -222,6 +226,10 @@ _HOMES = {
     "schemesim.study.dependability": "outputs_of study_dependability",
     "schemesim.study.injection": "inject",
     "schemesim.study.montecarlo": "simulate",
+    "schemesim.study.campaign": "Campaign",
+    "schemesim.study.campaign_replay": "replay_trial",
+    "schemesim.study.campaign_run": "load_campaign run_campaign",
+    "schemesim.scenario.campaigns": "campaign_in campaign_scenario export_campaign",
     "schemesim.study.no_fault": "study_no_fault",
     "schemesim.study.locations": "iter_locations study_locations",
     "schemesim.study.comparison": "compare",
@@ -272,6 +280,7 @@ __all__ = [
     "Bracket",
     "Breaker",
     "BreakerFailurePolicy",
+    "Campaign",
     "Case",
     "CommonCause",
     "Component",
@@ -356,6 +365,8 @@ __all__ = [
     "breakers_distribution",
     "breakers_excess",
     "breakers_mean",
+    "campaign_in",
+    "campaign_scenario",
     "clearing_time",
     "clopper_pearson",
     "compare",
@@ -373,6 +384,7 @@ __all__ = [
     "duty",
     "equipment_list",
     "explore",
+    "export_campaign",
     "feeder",
     "fixed_ms",
     "frontier",
@@ -388,6 +400,7 @@ __all__ = [
     "isolation_zones",
     "iter_locations",
     "line",
+    "load_campaign",
     "load_equipment",
     "load_relay_schedule",
     "load_scenario",
@@ -419,8 +432,10 @@ __all__ = [
     "register_scenario",
     "relay_schedule",
     "replay",
+    "replay_trial",
     "report_scenario",
     "ring",
+    "run_campaign",
     "run_event",
     "save_scenario",
     "sectionalised_bus",
