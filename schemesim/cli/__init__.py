@@ -61,6 +61,12 @@ importance
     ``components`` (rows as in the CSV); ``others`` (count) in no explored sequence, and ``others_at_most``: the
     Birnbaum importance that any of these can have.
 
+campaign
+    ``action`` (run, show, replay). Of run and show: ``complete``, ``trials`` counted and ``wanted``, ``confidence`` and kind of
+    ``interval``, ``rows`` (one for each place: ``p_…`` with ``_low`` and ``_high``, an interval and no bracket);
+    with ``--location`` its ``endings``. Of replay: ``trial``, ``variant``, ``event``, ``failures``, ``counted``
+    (whether the trial is in the store), then as in show.
+
 CSV
 ---
 With ``--csv FILE`` the table of the command is written, whole or not at all: the rows of the
@@ -68,7 +74,7 @@ sequence (show), one row for each policy and location (study), one for each comb
 failures (inject), one for each measure and variant (decide), one for each single point or
 pair and location (register), each item out (outages), each item shared (audit), each timer (timer), each
 group and position (dial), each component (importance), one for each
-policy (check). The first row names the columns, as in the JSON.
+policy (check), each place (campaign run and show). The first row names the columns, as in the JSON.
 """
 
 from schemesim.cli.parser import main
