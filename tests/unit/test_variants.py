@@ -24,6 +24,7 @@ from schemesim.study.measures import excess
 from schemesim.study.money import Values
 from schemesim.study.risk import MEASURES, Explorer, event_cost
 from schemesim.study.variants import Paired, VariantStudy, paired, study_variants, verdict_of
+from tests.benchmarks.common_numbers import differences
 
 F = FailureMode
 OFTEN = FailureData(
@@ -267,3 +268,15 @@ def test_bad_questions_are_refused() -> None:
     with pytest.raises(InputError) as caught:
         study_variants(explorer(), {"a": BASE.program()}, trials=-1, seed=-1, confidence=1.0)
     assert len(caught.value.problems) == 3
+
+
+def test_the_figures_of_the_demo_agree_and_need_a_fifth_of_the_trials_at_most() -> None:
+    """One relay of a single set ten times better: trees and trials at once, as ``ratios.py`` prints them."""
+    for measure, row in differences(20_000).items():
+        pair = row.paired
+        assert pair is not None, measure
+        assert pair.differing > 0, measure
+        assert pair.variance_factor >= 5, measure
+        half = (pair.high - pair.estimate) / 1.96 * 4.5  # by chance in one of 10^5
+        assert row.difference.low - half <= pair.estimate <= row.difference.high + half, measure
+        assert row.difference.high < 0, measure  # better, for certain
