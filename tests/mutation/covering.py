@@ -14,9 +14,6 @@ import pytest
 if TYPE_CHECKING:
     import coverage
 
-KEPT = 200
-"""Tests kept for a line."""
-
 
 class Contexts:
     """A plugin that tells coverage which test is running and notes how long it takes."""
@@ -61,14 +58,16 @@ def cover(paths: list[str], into: Path) -> None:
     data = cov.get_data()
     names = sorted(contexts.seconds)
     number = {name: n for n, name in enumerate(names)}
-    lines: dict[str, dict[int, list[int]]] = {}
+    sets: dict[tuple[int, ...], int] = {}  # many lines are run by the same tests
+    lines: dict[str, dict[int, int]] = {}
     for file in sorted(data.measured_files()):
         found = lines.setdefault(str(Path(file).relative_to(Path.cwd())), {})
         for line, tests in data.contexts_by_lineno(file).items():
-            here = spread([t for t in tests if t in number and t not in failed], contexts.seconds)
-            found[line] = [number[t] for t in here[:KEPT]]
-    text = json.dumps({"tests": names, "seconds": [round(contexts.seconds[n], 4) for n in names], "lines": lines})
-    into.write_text(text, encoding="utf-8")
+            here = tuple(sorted(number[t] for t in tests if t in number and t not in failed))
+            found[line] = sets.setdefault(here, len(sets))
+    seconds = [round(contexts.seconds[n], 4) for n in names]
+    found_all = {"tests": names, "seconds": seconds, "sets": list(sets), "lines": lines}
+    into.write_text(json.dumps(found_all), encoding="utf-8")
 
 
 def spread(tests: list[str], seconds: Mapping[str, float]) -> list[str]:
@@ -88,9 +87,10 @@ def choose(found: dict[str, Any], file: str, first: int, last: int, budget_s: fl
     Lines that run on import only are tried by what runs any of the module.
     """
     of = found["lines"].get(file, {})
-    tests = {t for line in range(first, last + 1) for t in of.get(str(line), ())}
+    sets = found["sets"]
+    tests = {t for line in range(first, last + 1) if str(line) in of for t in sets[of[str(line)]]}
     if not tests:
-        tests = {t for here in of.values() for t in here}
+        tests = {t for here in set(of.values()) for t in sets[here]}
     seconds = dict(zip(found["tests"], found["seconds"], strict=True))
     out: list[str] = []
     spent = 0.0

@@ -69,7 +69,8 @@ def test_tests_are_chosen_of_every_file_in_turn() -> None:
     seconds = {"a::1": 1.0, "a::2": 2.0, "b::1": 5.0, "c::1": 0.5}
     assert spread(list(seconds), seconds) == ["c::1", "a::1", "b::1", "a::2"]
     names = list(seconds)
-    found = {"tests": names, "seconds": list(seconds.values()), "lines": {"f.py": {"3": [0, 1], "9": [2, 3]}}}
+    lines = {"f.py": {"3": 0, "9": 1}}
+    found = {"tests": names, "seconds": list(seconds.values()), "sets": [[0, 1], [2, 3]], "lines": lines}
     assert choose(found, "f.py", 3, 4, budget_s=10) == ["a::1", "a::2"]
     assert choose(found, "f.py", 5, 5, budget_s=4) == ["c::1", "a::1", "a::2"]  # no test of the line: of the module
     assert choose(found, "f.py", 9, 9, budget_s=0.1) == ["c::1"]  # one at least
