@@ -7,6 +7,7 @@ closed switch a bar across it. So a picture in greyscale tells the same.
 
 from __future__ import annotations
 
+import math
 from itertools import pairwise
 from typing import TYPE_CHECKING
 
@@ -21,10 +22,13 @@ from schemesim.ticks import to_ms
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
+    from matplotlib.lines import Line2D
 
 TINTS = ("#F7D79B", "#CFE3F1", "#B5DCC9", "#D9BBD0", "#E4E4E4")
 """Isolation zones: that of the fault has the first."""
 OUTLINES = (BLUE, PURPLE, GREY)
+LEAST_IN = 6.0
+"""Width of a picture at least, so that its title and legend have room."""
 _BOLT = ((0, 0), (-0.34, 0.16), (-0.22, 0.26), (-0.52, 0.56), (-0.10, 0.36), (-0.20, 0.25))
 
 
@@ -32,11 +36,14 @@ def draw(plant: Plant, placed: Placed, state: State, labels: str, ax: Axes | Non
     """Draw everything on the axes given, or on those of a new figure."""
     left, bottom, right, top = _extent(placed)
     lines = state.title.count("\n") + 1 if state.title else 0
-    head, foot = 0.12 + 0.18 * lines, 0.55
+    handles = _handles(state, plant, placed)
+    width = max((right - left) * UNIT_IN, LEAST_IN)
+    columns = max(int(width / 2.1), 1)
+    head, foot = 0.12 + 0.18 * lines, 0.2 + 0.17 * math.ceil(len(handles) / columns)
     if ax is None:
         from matplotlib.figure import Figure  # heavy: only when a picture is asked for
 
-        width, height = max((right - left) * UNIT_IN, 5.5), (top - bottom) * UNIT_IN
+        right, height = left + width / UNIT_IN, (top - bottom) * UNIT_IN
         figure = Figure(figsize=(width, height + head + foot))
         whole = height + head + foot
         ax = figure.add_axes((0.0, foot / whole, 1.0, height / whole))
@@ -72,7 +79,10 @@ def draw(plant: Plant, placed: Placed, state: State, labels: str, ax: Axes | Non
     if state.title:
         text = "\n".join(shorten(line, int((right - left) * 7.2 * pen.size)) for line in state.title.split("\n"))
         ax.set_title(text, fontsize=FONT_PT + 1, loc="left", x=0.01)
-    _legend(ax, state, plant, placed)
+    ax.legend(
+        handles=handles, loc="upper left", bbox_to_anchor=(0.01, 0), borderaxespad=0.3, ncol=columns,
+        fontsize=FONT_PT - 0.5, frameon=False, handlelength=2.0,
+    )  # fmt: skip
     return ax
 
 
@@ -212,7 +222,9 @@ def _fault(pen: Pen, placed: Placed, fault: Location) -> None:
     at = fault_point(placed, fault)
     if at is None:
         return
-    bolt = Polygon([(at[0] + x, at[1] + y) for x, y in _BOLT], closed=True)
+    crowded = any(s.dx < 0 and abs(s.x - at[0]) < 0.5 and abs(s.y - at[1]) < 0.8 for s in placed.sheet.spots.values())
+    side = -1 if crowded else 1  # away from labels on the left
+    bolt = Polygon([(at[0] + side * x, at[1] + y) for x, y in _BOLT], closed=True)
     bolt.set_facecolor(VERMILLION)
     bolt.set_edgecolor(BLACK)
     bolt.set_linewidth(0.7 * pen.size)
@@ -220,7 +232,7 @@ def _fault(pen: Pen, placed: Placed, fault: Location) -> None:
     pen.add(bolt, f"fault: {fault}")
 
 
-def _legend(ax: Axes, state: State, plant: Plant, placed: Placed) -> None:
+def _handles(state: State, plant: Plant, placed: Placed) -> list[Line2D]:
     """What is there to be explained, and no more."""
     from matplotlib.lines import Line2D  # heavy: only when a picture is asked for
     from matplotlib.markers import MarkerStyle
@@ -234,7 +246,7 @@ def _legend(ax: Axes, state: State, plant: Plant, placed: Placed) -> None:
         return mark
 
     drawn = [plant.device[name] for name in placed.sheet.spots]
-    handles = []
+    handles: list[Line2D] = []
     if state.fault is not None and fault_point(placed, state.fault) is not None:
         bolt = Line2D(
             [], [], linestyle="none", marker=MarkerStyle(Path([*_BOLT, _BOLT[0]])), label=f"fault on {state.fault}"
@@ -248,6 +260,8 @@ def _legend(ax: Axes, state: State, plant: Plant, placed: Placed) -> None:
         handles.append(square("white", BLACK, 0.9, "breaker, open before"))
     if any(d.name in state.openings for d in drawn):
         handles.append(square("white", VERMILLION, 2.0, "opened, with its time"))
+        if state.intended and any(n in state.openings and n not in state.intended for n in placed.sheet.spots):
+            handles[-1].set_label("opened, with its time; beyond: not intended")
     if any(d.kind is DeviceKind.CT for d in drawn):
         ring = Line2D([], [], linestyle="none", marker="o", markersize=5, color=BLACK, label="CT")
         ring.set_markerfacecolor("none")
@@ -264,7 +278,4 @@ def _legend(ax: Axes, state: State, plant: Plant, placed: Placed) -> None:
         handles.append(
             Line2D([], [], color=OUTLINES[n % len(OUTLINES)], linewidth=1.4, label=f"protected zone of {element}")
         )
-    ax.legend(
-        handles=handles, loc="upper left", bbox_to_anchor=(0.01, 0), borderaxespad=0.3, ncol=4,
-        fontsize=FONT_PT - 0.5, frameon=False, handlelength=2.0,
-    )  # fmt: skip
+    return handles

@@ -51,10 +51,13 @@ class Pen:
         how.setdefault("color", BLACK)
         how.setdefault("va", "center")
         size = how.pop("points", FONT_PT - 1.5)
-        self.ax.text(
+        from matplotlib.patheffects import withStroke  # heavy: only when a picture is asked for
+
+        drawn = self.ax.text(
             x, y, text, ha=away, fontsize=size * self.size, fontweight="bold" if bold else "normal",
             zorder=z, linespacing=1.05, **how,
         )  # fmt: skip
+        drawn.set_path_effects([withStroke(linewidth=2.0 * self.size, foreground="#F7F7F7")])
 
     def frame(self, name: str, x0: float, y0: float, x1: float, y1: float) -> None:
         from matplotlib.patches import Rectangle  # heavy: only when a picture is asked for
@@ -130,7 +133,7 @@ class Pen:
         bold = opening is not None
         if opening is not None:
             needless = state.intended and device.name not in state.intended
-            text += f"\n{plain(to_ms(opening.t_open_us))} ms" + ("\nbeyond zone" if needless else "")
+            text += f"\n{plain(to_ms(opening.t_open_us))} ms" + ("\nbeyond" if needless else "")
         if device.name in state.failed:
             text += "\n" + "\n".join(wrap(state.failed[device.name], 12))
             bold = True
@@ -139,10 +142,7 @@ class Pen:
         va = "center" if beside else ("bottom" if spot.dy > 0 else "top")
         dy = spot.dy if beside else (0.24 if spot.dy > 0 else -0.24)
         color = VERMILLION if device.name in state.failed else BLACK
-        self.text(
-            spot.x + spot.dx, spot.y + dy, text, bold=bold, away=away, va=va, color=color, z=5.5,
-            bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.4, "alpha": 0.7} if bold else None,
-        )  # fmt: skip
+        self.text(spot.x + spot.dx, spot.y + dy, text, bold=bold, away=away, va=va, color=color, z=5.5)
 
     def transformer(self, x: float, y: float, across: bool) -> None:
         from matplotlib.patches import Circle  # heavy: only when a picture is asked for

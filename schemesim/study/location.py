@@ -178,7 +178,8 @@ class LocationResult:
         t = None if self.nominal is None else self.nominal.t_clear_us
         plainly = "not cleared" if t is None else f"cleared at {t / 1000:g} ms"
         lines = [
-            f"LocationResult({self.location}: with no failure {plainly}, {len(self.intended)} breakers intended, {len(self.single_points)} single points of failure, "
+            f"LocationResult({self.location}: with no failure {plainly}, {len(self.intended)} breakers intended, "
+            f"{len(self.single_points)} single points of failure, "
             f"{self.runs} runs)"
         ]
         lines.extend(f"  {name:28} {b}" for name, b in self._figures().items())

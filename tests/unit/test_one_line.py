@@ -253,13 +253,18 @@ def test_a_fault_shows_its_zones_what_tripped_and_what_failed() -> None:
     assert outlined == protected_object(demo().plant, "L4").zone
     found = texts(ax)
     assert "D2.CB2\n70 ms" in found
-    assert "F5.CB\n230 ms\nbeyond zone" in found
+    assert "F5.CB\n230 ms\nbeyond" in found
     assert "L4.CB\ndoes not\nopen" in found
     assert ax.get_title(loc="left").startswith("fault on L4@0.7; Dunmore.L4.CB: does_not_open")
     legend = ax.get_legend()
     assert legend is not None
     words = [t.get_text() for t in legend.get_texts()]
-    assert {"failure", "opened, with its time", "protected zone of L4", "left without a source"} <= set(words)
+    assert {
+        "failure",
+        "opened, with its time; beyond: not intended",
+        "protected zone of L4",
+        "left without a source",
+    } <= set(words)
 
 
 def test_what_is_left_without_a_source_is_dotted() -> None:

@@ -77,8 +77,8 @@ def result(name: str) -> Any:
 
 
 RESULTS = (
-    "timeline", "locations", "location", "comparison", "injection", "coverage", "trip matrix", "independence", "importance",
-    "timers", "frontier",
+    "timeline", "locations", "location", "comparison", "injection", "coverage", "trip matrix", "independence",
+    "importance", "timers", "frontier",
 )  # fmt: skip
 each = pytest.mark.parametrize("name", RESULTS)
 
