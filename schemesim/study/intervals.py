@@ -1,17 +1,19 @@
-"""Intervals for a probability estimated from a count of successes in independent trials.
+"""Intervals for a probability estimated from counts of successes in independent trials.
 
 Clopper–Pearson never covers less often than it says, and is wider for it; Wilson
-covers about as often as it says on average, and is the one to plot.
+covers about as often as it says on average, and is the one to plot. Where the trials were divided
+among strata of known weight, ``stratified`` joins intervals of the strata.
 """
 
 from __future__ import annotations
 
 import math
 import operator
+from collections.abc import Sequence
 from statistics import NormalDist
 from typing import Any
 
-from schemesim.errors import ErrorList
+from schemesim.errors import ErrorList, reject
 
 
 def wilson(successes: int, trials: int, confidence: float = 0.95) -> tuple[float, float]:
@@ -108,6 +110,75 @@ def clopper_pearson(successes: int, trials: int, confidence: float = 0.95) -> tu
     low = float(betaincinv(successes, failures + 1, tail)) if successes else 0.0
     high = float(betainccinv(successes + 1, failures, tail)) if failures else 1.0
     return low, high
+
+
+def stratified(
+    weights: Sequence[float], successes: Sequence[int], trials: Sequence[int], confidence: float = 0.95
+) -> tuple[float, float]:
+    """An interval for a probability estimated stratum by stratum.
+
+    The estimate is Σ Wᵢ·xᵢ/nᵢ. Its distance to either bound is that of each stratum's own interval
+    (lᵢ, uᵢ), weighted, squared and added: √ Σ Wᵢ²(p̂ᵢ − lᵢ)² below, √ Σ Wᵢ²(uᵢ − p̂ᵢ)² above. A stratum's interval is
+    Jeffreys', and Clopper and Pearson's where its trials all agree: a stratum without a success is not taken
+    for one that has none, but adds about Wᵢ·3.7/nᵢ (at 95 %). The coverage is near the nominal one where
+    some strata are in doubt, and above it where hardly any is.
+
+    Parameters
+    ----------
+    weights : sequence of float
+        Known probability of each stratum; they add up to 1.
+    successes, trials : sequence of int
+        How often it happened in each stratum, and of how many independent trials, 1 at least.
+    confidence : float
+        Nominal two-sided coverage, between 0 and 1.
+
+    Returns
+    -------
+    tuple of float
+        Lower and upper bound.
+
+    Raises
+    ------
+    InputError
+        For counts that do not fit each other, weights that are no probabilities or do not add up to 1,
+        or a confidence not between 0 and 1.
+
+    References
+    ----------
+    G. Y. Zou and A. Donner, Statistics in Medicine 27 (2008) 1693–1702 (variances recovered from the
+    limits of each part); L. D. Brown, T. T. Cai and A. DasGupta, Statistical Science 16 (2001) 101–133
+    (Jeffreys' interval); both from memory.
+
+    Examples
+    --------
+    >>> low, high = stratified([0.9, 0.1], [0, 30], [1000, 50])
+    >>> round(low, 4), round(high, 4)
+    (0.0462, 0.0731)
+    """
+    errors = ErrorList()
+    if not weights or not len(weights) == len(successes) == len(trials):
+        sizes = (len(weights), len(successes), len(trials))
+        raise reject("strata", sizes, "as many weights as counts of successes and of trials, one at least")
+    if not all(0 <= w <= 1 for w in weights) or abs(math.fsum(weights) - 1) > 1e-6:
+        errors.add("weights of strata", math.fsum(weights), "probabilities that add up to 1")
+    for n in trials:
+        if n == 0:
+            errors.add("trials of a stratum", n, "one or more")
+    errors.raise_if_any()
+    for x, n in zip(successes, trials, strict=True):
+        _checked(x, n, confidence)
+    import numpy as np
+    from scipy.special import betainccinv, betaincinv  # heavy: only when an interval is asked for
+
+    w, yes, tried = np.array(weights, dtype=float), np.array(successes), np.array(trials)
+    no, tail = tried - yes, (1.0 - confidence) / 2.0
+    certain = tail ** (1.0 / tried)  # so likely must all be for all to agree no more seldom than the tail
+    low = np.where(no == 0, certain, np.where(yes == 0, 0.0, betaincinv(yes + 0.5, no + 0.5, tail)))
+    high = np.where(yes == 0, 1.0 - certain, np.where(no == 0, 1.0, betainccinv(yes + 0.5, no + 0.5, tail)))
+    share = yes / tried
+    middle = float(w @ share)
+    below, above = (math.sqrt(float(np.sum((w * d) ** 2))) for d in (share - low, high - share))
+    return max(middle - below, 0.0), min(middle + above, 1.0)
 
 
 def _checked(successes: int, trials: int, confidence: float) -> tuple[int, int]:

@@ -28,6 +28,7 @@ from schemesim.engine.event import DEFAULT_HORIZON_US
 from schemesim.engine.many import NEVER_US, ManyDrawn, ManyDrawnTimes
 from schemesim.errors import ErrorList, reject
 from schemesim.study.intervals import clopper_pearson, wilson
+from schemesim.study.precision import FIRST_TRIALS, Precision
 from schemesim.study.tree import End, Happens
 from schemesim.study.trial_columns import Alike, Distinct, columns
 
@@ -211,7 +212,7 @@ class Counts:
 
 def simulate(
     case: Case,
-    trials: int,
+    trials: int | Precision,
     seed: int,
     first_trial: int = 0,
     *,
@@ -224,8 +225,8 @@ def simulate(
     Parameters
     ----------
     case : Case
-    trials : int
-        How many.
+    trials : int or Precision
+        How many; or how narrow the Wilson interval of an event should get.
     seed : int
         Zero or more.
     first_trial : int
@@ -244,16 +245,24 @@ def simulate(
     if chunk is None:
         chunk = CHUNK if case.random else CHUNK_AT_FIXED_TIMES
     errors = ErrorList()
-    wanted = (("trials", trials, 0), ("seed", seed, 0), ("first_trial", first_trial, 0), ("chunk", chunk, 1))
+    count = trials.max_trials if isinstance(trials, Precision) else trials
+    wanted = (("trials", count, 0), ("seed", seed, 0), ("first_trial", first_trial, 0), ("chunk", chunk, 1))
     for name, number, least in wanted:
         value: object = number
         if isinstance(value, bool) or not isinstance(value, int) or value < least:
             errors.add(name, value, f"a whole number of {least} or more")
     errors.raise_if_any()
-    starts = range(first_trial, first_trial + trials, chunk)
-    work = [_Chunk(case, seed, start, min(start + chunk, first_trial + trials), horizon_us) for start in starts]
-    parts: Iterable[Counts] = map(_run_chunk, work) if executor is None else executor.map(_run_chunk, work)
-    return _sum(str(case.event), seed, parts)
+    out = Counts(str(case.event), seed, (), ())
+    more = min(FIRST_TRIALS, count) if isinstance(trials, Precision) else count
+    while more:
+        first = first_trial + out.trials
+        starts = range(first, first + more, chunk)
+        work = [_Chunk(case, seed, start, min(start + chunk, first + more), horizon_us) for start in starts]
+        parts: Iterable[Counts] = map(_run_chunk, work) if executor is None else executor.map(_run_chunk, work)
+        out = _sum(out.event, seed, chain((out,), parts))
+        found = out.share(trials.event, trials.confidence) if isinstance(trials, Precision) else None
+        more = trials.more(out.trials, found) if isinstance(trials, Precision) and found is not None else 0
+    return out
 
 
 @dataclass(frozen=True)
