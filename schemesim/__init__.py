@@ -159,15 +159,15 @@ if TYPE_CHECKING:
     from schemesim.study.misoperations import misoperation, study_misoperations
     from schemesim.study.money import CostRule, Costs, Money, Values
     from schemesim.study.montecarlo import simulate
-    from schemesim.study.precision import Precision
-    from schemesim.study.stratified import simulate_stratified
     from schemesim.study.no_fault import study_no_fault
     from schemesim.study.outages import planned_outages, study_outages
+    from schemesim.study.precision import Precision
     from schemesim.study.proof_intervals import TestCosts, study_test_intervals
     from schemesim.study.races import races
     from schemesim.study.register import register
     from schemesim.study.risk import Explorer
     from schemesim.study.sensitivity import uncertainty
+    from schemesim.study.stratified import simulate_stratified
     from schemesim.study.timer_study import Weights, study_timers
     from schemesim.study.tree import Narrow, Tree, explore
     from schemesim.study.variants import study_variants
