@@ -17,11 +17,12 @@ from schemesim.errors import ErrorList, nearest
 from schemesim.plant.model import Location, Plant
 from schemesim.scheme.model import Breaker, ComponentKind, Gate, Scheme
 from schemesim.study.brackets import Bracket, exactly
-from schemesim.study.location import LocationOptions, LocationResult
+from schemesim.study.location import LocationOptions, LocationResult, measure
 from schemesim.study.locations import LocationStudy, iter_locations
 from schemesim.study.outage_results import BREAKER, CHANNEL, DC, KINDS, SET, Outage, OutageResult, OutageStudy, Worse
 from schemesim.study.register import limits_of
 from schemesim.study.spoiled import Effect
+from schemesim.study.tree import explore
 from schemesim.study.weak_points import SinglePoint
 
 Progress = Callable[[int, int], None]
@@ -167,18 +168,47 @@ def study_outages(
         return found
 
     before: dict[Location, LocationResult] = {}
+    asked: dict[Location, frozenset[str]] = {}
     results: list[OutageResult] = []
     complete = True
     try:
-        before = studied(program, chosen)
+        for at in chosen:
+            before[at], asked[at] = _base(program, at, sensing, replace(options, limit_us=limits[at]))
+            done += 1
+            if progress is not None:
+                progress(done, pieces)
         for outage in todo:
-            now = {**before, **studied(with_out(program, outage), places[outage])}
+            again = [at for at in places[outage] if outage.kind == BREAKER or outage.components & asked[at]]
+            done += len(places[outage]) - len(again)
+            now = {**before, **studied(with_out(program, outage), again)}
             study = LocationStudy(tuple(now[at] for at in chosen), options, frequencies)
             results.append(_result(outage, study, before, limits, len(places[outage]), hours.get(outage)))
     except KeyboardInterrupt:
         complete = False
     base = LocationStudy(tuple(before[at] for at in chosen if at in before), options, frequencies, None, complete)
     return OutageStudy(base, tuple(results), complete)
+
+
+def _base(
+    program: Program, at: Location, sensing: Sensing, options: LocationOptions
+) -> tuple[LocationResult, frozenset[str]]:
+    """A location with all in service, and the components whose failure its tree depends on.
+
+    Where no run of the tree asked about an item, every run ends alike with the item out (rule R4): the location's
+    results hold as they are. What is certain is never asked, so an item with a mode that has no question always counts.
+    """
+    case = bind(program, at, sensing, dispatch=options.dispatch)
+    tree = explore(
+        case, epsilon=options.epsilon, max_runs=options.max_runs, horizon_us=options.horizon_us, complete=1
+    )
+    met = {q for leaf in tree.leaves for q, _ in leaf.asked}
+    found = {program.questions[q].component for q in met}
+    for name in case.names:
+        block = program.scheme.block[name]
+        if isinstance(block, Gate):
+            asks = (*block.unless, *block.given)
+            found.update(ask.component for ask in asks if not program.asks.get(ask) or ask in program.constant)
+    return measure(case, at, tree, options.limit_us), frozenset(found)
 
 
 def _bears_on(case: Case) -> frozenset[str]:
