@@ -6,6 +6,7 @@ from schemesim.errors import InputError, Problem
 from schemesim.plant import layouts
 from schemesim.plant.model import Device, Dispatch, Plant, PlantBuilder, Section, Source, VoltageTransformer
 from schemesim.plant.wiring import doubtful_wiring
+from schemesim.scenario.impedances import put_impedances
 from schemesim.scenario.locate import Path
 from schemesim.scenario.notes import Notes
 from schemesim.scenario.schema import Layout, PlantIn, StationIn
@@ -46,6 +47,7 @@ def plant_of(notes: Notes, said: PlantIn) -> Plant | None:
     before = len(notes.problems)
     for n, station in enumerate(said.stations):
         station_of(notes, b, station, ("plant", "stations", n))
+    put_impedances(notes, b, said.impedances)
     if len(notes.problems) > before:
         return None
     try:

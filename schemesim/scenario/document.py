@@ -8,6 +8,7 @@ from typing import Any
 from schemesim.engine.sensing import NoFault
 from schemesim.errors import reject
 from schemesim.plant.model import Location, Plant, SectionKind
+from schemesim.scenario.impedances import impedances_data
 from schemesim.scenario.locate import Data
 from schemesim.scenario.maintenance import maintenance_data
 from schemesim.scenario.model import ListedRun, Scenario
@@ -71,6 +72,8 @@ def _plain(item: Any) -> dict[str, Any]:
     out: dict[str, Any] = {}
     for f in fields(item):
         value = getattr(item, f.name)
+        if f.name == "impedance":
+            continue
         if value != f.default or f.name == "windings":
             out[f.name] = list(value) if isinstance(value, tuple) else str(value) if f.name == "kind" else value
     return out
@@ -85,6 +88,7 @@ def _plant(plant: Plant) -> dict[str, Any]:
         "sources": [_plain(x) for x in plant.sources],
         "voltage_transformers": [_plain(x) for x in plant.vts],
         "dispatches": dispatches,
+        "impedances": impedances_data(plant),
     }
     return {k: v for k, v in found.items() if v}
 

@@ -15,6 +15,7 @@ from pydantic import BeforeValidator, Field, PlainValidator
 from schemesim.plant.bays import CORES, WINDINGS, CtPlacement
 from schemesim.plant.model import DeviceKind, SectionKind
 from schemesim.plant.net_case import FaultType
+from schemesim.scenario.impedances import ImpedancesIn
 from schemesim.scenario.maintenance import MaintenanceIn
 from schemesim.scenario.money import MoneyIn
 from schemesim.scenario.parts import Part, PolicyIn
@@ -211,6 +212,7 @@ class PlantIn(Part):
     sources: Annotated[list[SourceIn], MANY] = []
     voltage_transformers: Annotated[list[VtIn], MANY] = []
     dispatches: Annotated[list[DispatchIn], Field(max_length=100)] = []
+    impedances: ImpedancesIn = ImpedancesIn()
 
 
 TABLES: dict[str, type[Part]] = {
