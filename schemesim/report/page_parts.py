@@ -223,7 +223,7 @@ def register(found: Register | None) -> str:
             [
                 words(e.name),
                 words(e.group.value + (", exempt" if e.exempt else "")),
-                number(float(e.probability)),
+                Cell(f"{float(e.probability):.3g}", float(e.probability)),
                 Cell(e.worst.label, float(-e.worst)),
                 number(len(e.spoiled)),
                 time_ms(max((s.t_clear_us for s in e.spoiled if s.t_clear_us is not None), default=None)),

@@ -16,6 +16,8 @@ from schemesim.scenario.studying import study_scenario
 from schemesim.scenario.weak import register_scenario
 from schemesim.scheme.delays import Delay
 from schemesim.scheme.failure_data import NO_FAULT_PER_YR, ORDERS_OF_MAGNITUDE, FailureData
+from schemesim.scheme.policy import BreakerFailurePolicy, LocalBackup, Policy
+from schemesim.scheme.unavailability import RateRule
 from schemesim.study.location import LocationResult
 from schemesim.study.locations import LocationStudy
 from schemesim.study.register import Register
@@ -204,8 +206,7 @@ def assumptions_of(scenario: Scenario, policy: str | None = None) -> list[Assump
                    "shipped, an assumed order of magnitude" if data.no_fault_per_yr == NO_FAULT_PER_YR else _FILE),
         _frequencies(scenario),
     ]  # fmt: skip
-    for path, value in _times(chosen):
-        found.append(Assumption("time", f"{path}: {value}", f"policy “{name}” of the scenario"))
+    found += _policy_times(chosen, name)
     for element, other in scenario.exceptions.items():
         found.append(Assumption("exception", f"{element} is protected by policy “{other}”", _FILE))
     if scenario.out_of_service:
@@ -232,12 +233,11 @@ def _failure_data(data: FailureData) -> list[Assumption]:
             shipped = ORDERS_OF_MAGNITUDE.get(kind, {}).get(mode) == p
             said = f"{kind.replace('_', ' ')}, {mode.replace('_', ' ')}: {float(p):g} on demand"
             found.append(Assumption("failure data", said, f"{_SHIPPED} (or stated alike)" if shipped else _FILE))
-    for rule in data.rates:
-        said = f"{rule.kind} {rule.pattern}, {rule.mode}: {rule.data}"
-        found.append(Assumption("failure data", said, _FILE))
+    found += [Assumption("failure data", _rate(rule), _rate_source(rule)) for rule in data.rates]
     for o in data.overrides:
-        said = ", ".join(f"{m}: {float(p):g}" for m, p in o.modes.items())
-        found.append(Assumption("failure data", f"{o.pattern}: {said}", _FILE))
+        parts = [f"{m.replace('_', ' ')} {float(p):g} on demand" for m, p in o.modes.items()]
+        parts += [] if o.no_fault_per_yr is None else [f"{o.no_fault_per_yr:g} trips with no fault a year"]
+        found.append(Assumption("failure data", f"{o.pattern}: {', '.join(parts)}", _FILE))
     if data.relay_beta:
         said = f"{data.relay_beta:.3g} of a relay's failures to operate is common to all relays of the element there"
         found.append(Assumption("common cause", said, _FILE))
@@ -245,6 +245,54 @@ def _failure_data(data: FailureData) -> list[Assumption]:
         said = f"{cause.name}: {float(cause.probability):g} on demand"
         found.append(Assumption("common cause", said, _FILE))
     return found
+
+
+def _rate(rule: RateRule) -> str:
+    """What a rule says, in words.
+
+    Examples
+    --------
+    >>> from schemesim.scheme.model import ComponentKind, FailureMode
+    >>> from schemesim.scheme.unavailability import RateData
+    >>> data = RateData(rate_per_yr=0.01, coverage=0.97, test_interval_yr=6.0, repair_h=24.0)
+    >>> _rate(RateRule(kind=ComponentKind.RELAY, mode=FailureMode.FAILURE_TO_OPERATE, data=data))
+    'relay, failure to operate: 0.01 a year, 97 % found at once, tested every 6 years, repaired in 24 h'
+    """
+    d = rule.data
+    parts = [f"{d.rate_per_yr:g} a year"] if d.rate_per_yr else []
+    if d.revealed:
+        parts.append("found at once")
+    elif d.coverage:
+        parts.append(f"{100 * d.coverage:g} % found at once")
+    if d.test_interval_yr is not None:
+        every = "year" if d.test_interval_yr == 1 else f"{d.test_interval_yr:g} years"
+        lasts = f" for {d.test_duration_h:g} h" if d.test_duration_h else ""
+        parts.append(f"tested every {every}{lasts}{', by turns' if rule.staggered else ''}")
+    if d.repair_h:
+        parts.append(f"repaired in {d.repair_h:g} h")
+    if d.on_demand:
+        parts.append(f"{d.on_demand:g} on demand" + (" besides" if d.rate_per_yr else ""))
+    where = "" if rule.pattern == "*" else f" of {rule.pattern}"
+    return f"{rule.kind.replace('_', ' ')}{where}, {rule.mode.replace('_', ' ')}: {', '.join(parts)}"
+
+
+def _rate_source(rule: RateRule) -> str:
+    said = [*([str(rule.quality)] if rule.quality else []), *([rule.source] if rule.source else [])]
+    return f"{_FILE}: {'; '.join(said)}" if said else _FILE
+
+
+def _policy_times(policy: Policy, name: str) -> list[Assumption]:
+    """The times of a policy, those of one part together; those as shipped and those stated told apart."""
+    usual = dict(_times(Policy(local_backup=LocalBackup(), breaker_failure=BreakerFailurePolicy())))
+    found: dict[tuple[str, bool], list[str]] = {}
+    for path, value in _times(policy):
+        part, _, last = path.rpartition(": ")
+        found.setdefault((part, usual.get(path) == value), []).append(f"{last} {value}")
+    shipped, stated = "as shipped: assumed, common practice", f"policy “{name}” of the scenario"
+    return [
+        Assumption("times", f"{part}: {', '.join(values)}", shipped if alike else stated)
+        for (part, alike), values in found.items()
+    ]
 
 
 def _frequencies(scenario: Scenario) -> Assumption:
@@ -260,12 +308,12 @@ def _times(part: object, path: str = "") -> list[tuple[str, str]]:
     found: list[tuple[str, str]] = []
     for f in fields(part):  # type: ignore[arg-type]  # called with dataclasses only
         value = getattr(part, f.name)
-        here = f"{path} {f.name}".strip().replace("_", " ")
+        word = "local back-up" if f.name == "local_backup" else f.name.replace("_", " ")
         if isinstance(value, Delay):
             kind = "" if value.is_fixed else f" nominal, {type(value).__name__.lower()}"
-            found.append((here, f"{value.nominal_us / 1000:g} ms{kind}"))
+            found.append((f"{'others' if path == 'times' else path}: {word}", f"{value.nominal_us / 1000:g} ms{kind}"))
         elif hasattr(value, "__dataclass_fields__"):
-            found += _times(value, here)
+            found += _times(value, path if path and word == "times" else word)
     return found
 
 

@@ -143,7 +143,7 @@ def test_the_page_tells_assumptions_settings_and_the_safety_note(page: HtmlPage,
     listed = assumptions_of(small)
     assert [row[0] for row in found.rows["assumptions-table"][1:]] == [a.topic for a in listed]
     assert all(a.source for a in listed)
-    assert {"what a relay sees", "limit of the clearing time", "failure data", "fault frequencies", "time"} <= {
+    assert {"what a relay sees", "limit of the clearing time", "failure data", "fault frequencies", "times"} <= {
         a.topic for a in listed
     }
     assert page.html.count(html.escape(NOTE)) == 2
@@ -154,8 +154,18 @@ def test_the_page_tells_assumptions_settings_and_the_safety_note(page: HtmlPage,
 
 def test_stated_failure_data_and_shipped_ones_are_told_apart(small: Scenario) -> None:
     source = {a.statement: a.source for a in assumptions_of(small) if a.topic == "failure data"}
-    assert len(source) > 3
-    assert all("shipped" in text or text == "scenario" for text in source.values())
+    assert source["relay, failure to operate: 0.002 on demand"] == "scenario"
+    assert source["coil, failure to operate: 0.0001 on demand"].startswith("shipped order of magnitude")
+    rates = [text for statement, text in source.items() if statement.startswith("vt winding, lost: 0.02 a year")]
+    assert rates == ["scenario: assumed; fuse failures of one year"]
+
+
+def test_times_stated_and_shipped_are_told_apart(small: Scenario) -> None:
+    found = {(a.statement.partition(":")[0], a.source.partition(" ")[0]): a.statement for a in assumptions_of(small)
+             if a.topic == "times"}  # fmt: skip
+    assert "delay 250 ms" in found[("local back-up", "policy")]
+    assert "bus delay 270 ms" in found[("local back-up", "as")]
+    assert found[("breaker", "as")] == "breaker: interrupting 50 ms, auxiliary 5 ms, late by 100 ms"
 
 
 def test_the_same_study_gives_the_same_page(small: Scenario, study: LocationStudy, page: HtmlPage) -> None:

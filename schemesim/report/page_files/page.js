@@ -88,6 +88,16 @@
   one("grade").addEventListener("change", filter);
   one("filter").form.addEventListener("submit", (event) => event.preventDefault());
 
+  // On paper nothing is folded away.
+  let folded = [];
+  addEventListener("beforeprint", () => {
+    folded = [...document.querySelectorAll("details:not([open])")];
+    for (const part of folded) part.open = true;
+  });
+  addEventListener("afterprint", () => {
+    for (const part of folded) part.open = false;
+  });
+
   // Clearing sequences: made from their templates when opened, one at a time.
   const panel = one("case");
   let opener = null;
