@@ -64,6 +64,10 @@ class ElectricalSensing:
     -----
     Faults are computed without load, so an event without a fault (rule R18) is left to
     logical sensing, where load current counts for current detectors.
+
+    Examples
+    --------
+    ``bind(program, Location("L1", 0.5), ElectricalSensing(settings_for(plant, scheme), fault="lg"))``
     """
 
     def __init__(
@@ -107,16 +111,16 @@ class ElectricalSensing:
         """See :class:`schemesim.engine.sensing.Sensing`."""
         if isinstance(event, NoFault):
             return self._logical.candidates(program, event, dispatch)
-        blocks = _set_blocks(program, self.settings)
-        counted = [(i, b, s) for i, b, s in blocks if s.counts(event.section)]
+        blocks, ways = _set_blocks(program, self.settings), _both_ways(program, self.settings)
+        counted = [(i, b) for i, b, s in blocks if s.counts(event.section)]
         if self.everywhere:
-            return [i for i, _, _ in counted]
-        longest = max((_reach_of(b.condition) for _, b, _ in counted), default=0.0) * _LONGER
+            return [i for i, _ in counted]
+        longest = max((_reach_of(b.condition) for _, b in counted), default=0.0) * _LONGER
         near = program.paths.distances(event, frozenset(), longest)
         faulted = self.network(program, dispatch).at(self._shunt(event))
         quantities = self._quantities(program, dispatch, faulted.solve(_idle(program, event)))
         found = []
-        for i, b, s in counted:
+        for i, b in counted:
             c = b.condition
             if isinstance(c, InZone) and event.section not in c.sections:
                 continue
@@ -126,7 +130,7 @@ class ElectricalSensing:
                 for t in c.terminals
                 for side in (program.plant.device[t.ct].a, program.plant.device[t.ct].b)
             )
-            if within_reach or _either_way(s.element).multiple(quantities) >= _NEAR:
+            if within_reach or ways[i].multiple(quantities) >= _NEAR:
                 found.append(i)
         return found
 
@@ -247,6 +251,12 @@ def _set_blocks(program: Program, settings: Settings) -> tuple[tuple[int, Sense,
     return tuple(
         (i, b, of[b.name]) for i, b in enumerate(program.blocks) if isinstance(b, Sense) and b.name in of
     )
+
+
+@lru_cache(maxsize=4)
+def _both_ways(program: Program, settings: Settings) -> dict[int, Element]:
+    """The element of each block, looking both ways."""
+    return {i: _either_way(s.element) for i, _, s in _set_blocks(program, settings)}
 
 
 def _reach_of(condition: Condition) -> float:

@@ -70,7 +70,14 @@ class Distance:
     Loop selection: no zero and no negative sequence is three-phase; no zero sequence is between the
     two phases whose difference is greatest; else the phase in which zero and negative sequence
     agree is the faulted one to earth, or the healthy one of two phases to earth, and the loop of
-    smaller impedance decides (common practice).
+    smaller impedance decides (common practice). The circle is the static one: memory decides the
+    direction and does not widen it.
+
+    Examples
+    --------
+    >>> zone_1 = Distance(terminals=(Terminal("CT1", "L1"),), vt="B1.VT", reach_ohm=8 + 32j, k0=0.67)
+    >>> zone_1.shape, zone_1.direction
+    (<Shape.MHO: 'mho'>, <Direction.FORWARD: 'forward'>)
     """
 
     terminals: tuple[Terminal, ...]

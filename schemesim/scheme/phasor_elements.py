@@ -76,6 +76,11 @@ class Looking:
         Into the inner side of the CTs; else out of it.
     angle_deg : float
         Characteristic angle.
+
+    Examples
+    --------
+    >>> Looking("B1.VT", Polarising.NEGATIVE, forward=False).angle_deg
+    75.0
     """
 
     vt: str
@@ -108,6 +113,12 @@ class Overcurrent:
     drop_out : float
         Ratio of drop-out to pick-up.
     looking : Looking or None
+
+    Examples
+    --------
+    >>> element = Overcurrent(terminals=(Terminal("CT1", "L1"),), pick_up_a=600.0, part=Part.RESIDUAL)
+    >>> element.looks_at
+    (('CT1',), ())
     """
 
     terminals: tuple[Terminal, ...]
@@ -154,6 +165,12 @@ class Biased:
     share_of : str
         A CT: then the element counts only where that CT carries ``pick_up_a`` itself or the
         greatest part, so that what is left without its core can be told.
+
+    Examples
+    --------
+    >>> zone = (Terminal("CT1", "L1"), Terminal("CT2", "L1"))
+    >>> Biased(terminals=zone, pick_up_a=120.0, slope=0.3).drop_out
+    0.95
     """
 
     terminals: tuple[Terminal, ...]
@@ -204,6 +221,11 @@ class Voltage:
         Primary volts: between phases for ``Part.BETWEEN``, to earth for ``Part.PHASE``.
     under : bool
         Picks up below the setting; the multiple is then setting ÷ voltage.
+
+    Examples
+    --------
+    >>> Voltage(vt="B1.VT", setting_v=0.7 * 132e3).looks_at
+    ((), ('B1.VT',))
     """
 
     vt: str

@@ -60,6 +60,8 @@ class Quantities:
     lost_vts: frozenset[str] = frozenset()
     _currents: dict[Terminal, Phasors] = field(default_factory=dict)
     _voltages: dict[str, Phasors] = field(default_factory=dict)
+    _remembered: dict[str, complex] = field(default_factory=dict)
+    _sections: dict[str, str] = field(default_factory=dict)
 
     def current(self, terminals: Iterable[Terminal]) -> Phasors:
         """Sum of the currents of CTs (or of sources by their name) into their inner side."""
@@ -81,13 +83,19 @@ class Quantities:
         """Phase-to-earth voltage at a VT."""
         found = self._voltages.get(vt)
         if found is None:
-            section = next(v.section for v in self.plant.vts if v.name == vt)
-            found = self._voltages[vt] = NONE if vt in self.lost_vts else self.solution.voltage(section, vt)
+            lost = vt in self.lost_vts
+            found = self._voltages[vt] = NONE if lost else self.solution.voltage(self._section_of(vt), vt)
         return found
 
     def remembered(self, vt: str) -> complex:
         """Positive-sequence voltage at a VT before the fault; 0 where the VT is lost."""
-        if vt in self.lost_vts:
-            return 0j
-        section = next(v.section for v in self.plant.vts if v.name == vt)
-        return self.memory.voltage(section, vt)[1]
+        found = self._remembered.get(vt)
+        if found is None:
+            lost = vt in self.lost_vts
+            found = self._remembered[vt] = 0j if lost else self.memory.voltage(self._section_of(vt), vt)[1]
+        return found
+
+    def _section_of(self, vt: str) -> str:
+        if not self._sections:
+            self._sections.update((v.name, v.section) for v in self.plant.vts)
+        return self._sections[vt]

@@ -68,7 +68,7 @@ class Setting:
         return section not in self.never and (self.only is None or section in self.only)
 
 
-@dataclass(frozen=True, repr=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Settings:
     """Settings of a scheme, in the order of their blocks.
 

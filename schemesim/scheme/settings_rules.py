@@ -98,6 +98,21 @@ def settings_for(
     ------
     InputError
         If an element needs a VT, or the impedance of a line, that is not there.
+
+    Examples
+    --------
+    >>> from schemesim.plant.layouts import Bay, feeder, generator, single_bus
+    >>> from schemesim.plant.model import PlantBuilder
+    >>> from schemesim.scheme.dress import dress
+    >>> from schemesim.scheme.policy import Policy
+    >>> b = PlantBuilder()
+    >>> generator(b, "G1", station="Alder", kv=20.0, impedance_pu=0.2)
+    >>> feeder(b, "F1", station="Alder", load_mw=10, kv=20.0)
+    >>> single_bus(b, "Alder", [Bay("G1", "G1"), Bay("F1", "F1")], kv=20.0)
+    >>> plant = b.build()
+    >>> found = settings_for(plant, dress(plant, Policy())).of["Alder/F1/1 50"]
+    >>> found.choices[0].reason
+    '1.3 times the greatest load of F1: 10 MW = 289 A; 0.03 of the smallest fault current, 12500 A at F1'
     """
     if network is None:
         from schemesim.plant.net_faults import network_of  # heavy: scipy, only where currents are wanted

@@ -153,6 +153,10 @@ def coordination(
     ------
     InputError
         If a block has no setting, or a location or dispatch is not there.
+
+    Examples
+    --------
+    ``coordination(program, settings, [("F1 51", "G1 51")], [Location("F1")]).plot()``
     """
     if network is None:
         from schemesim.plant.net_faults import network_of  # heavy: scipy

@@ -181,6 +181,10 @@ def audit_elements(
     ------
     InputError
         If a block has no setting, or a location, dispatch or source is not there.
+
+    Examples
+    --------
+    ``audit_elements(program, settings_for(plant, scheme)).table().head(20)`` shows the least sensitive.
     """
     if network is None:
         from schemesim.plant.net_faults import network_of  # heavy: scipy
