@@ -31,12 +31,13 @@ def lay_out(plant: Plant, parts: Parts) -> Sheet:
     if not parts.buses:
         for group in parts.groups:
             order = ring_of(group)
-            if order is None:
-                at.rows(group)
-            else:
+            if order is not None:
                 at.ring(group, order)
+            elif group.junctions:
+                at.rows(group, at.free())
     else:
         at.with_buses()
+    at.rest()
     at.sheet.level()
     return at.sheet
 
@@ -94,6 +95,27 @@ class _Station:
 
     def __post_init__(self) -> None:
         self.sheet = Sheet()
+
+    def free(self) -> float:
+        """The first place to the right of all that is drawn."""
+        return self.sheet.box()[2] + LANE if self.sheet.spots else 0.0
+
+    def rest(self) -> None:
+        """What found no place in any pattern: a lane of its own on the right, joined to its bus by a wire."""
+        groups = [Group((), (c,)) for c in self.parts.couplers]
+        for group in (*self.parts.groups, *groups):
+            left = tuple(c for c in group.chains if c.devices[0].name not in self.sheet.spots)
+            if left and group.junctions and len(left) == len(group.chains):
+                self.rows(group, self.free())
+                left = tuple(c for c in left if c.devices[0].name not in self.sheet.spots)
+            for chain in left:
+                x, length = self.free(), (len(chain.devices) + 1) * STEP
+                self.sheet.chain(chain, [(x, 0.0), (x, length)])
+                for node, y, up in ((chain.a, 0.0, -1), (chain.b, length, 1)):
+                    self.finish(node, x, y, up)
+                    if node.section in self.sheet.buses:
+                        side = self.sheet.buses[node.section][1]
+                        self.sheet.wire(node.section, (x, y), (x + 0.3 * up, y), (x + 0.3 * up, side[1]), side)
 
     def goes_up(self, circuits: Sequence[Node]) -> bool:
         """Lines and transformers lead up, to other stations."""
@@ -279,7 +301,7 @@ class _Station:
         above, below = order[: (n + 1) // 2], order[(n + 1) // 2 :]
         inner = [c for c in group.chains if c.a in order and c.b in order]
         most = max(len(c.devices) for c in inner)
-        left = self.sheet.box()[2] + LANE if self.sheet.wires else 0.0
+        left = self.free()
         pitch, height = max((most + 1) * STEP, 2.1), (most + 1) * STEP + 0.5
         right = left + (len(above) - 1) * pitch
         places: dict[Node, Point] = {j: (left + i * pitch, height) for i, j in enumerate(above)}
@@ -331,7 +353,7 @@ class _Station:
             column += LANE
         drawn: dict[frozenset[Node], int] = {}
         for c in group.chains:
-            if c.a.circuit or c.b.circuit:
+            if c.a.circuit or c.b.circuit or c.a == c.b:  # a loop finds its place at the end
                 continue
             pair = frozenset((c.a, c.b))
             shift = drawn.get(pair, 0) * 0.5

@@ -9,6 +9,8 @@ from itertools import combinations, pairwise
 from pathlib import Path
 
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
@@ -372,3 +374,37 @@ def test_mistakes_name_what_is_known() -> None:
         plot_one_line(plant, protected=["L99"])
     with pytest.raises(InputError, match="station"):
         neighbourhood(plant, "Oak")
+
+
+@st.composite
+def any_plant(draw: st.DrawFn) -> Plant:
+    """Sections of any kind joined by devices of any kind in any way: loops, parallel ones, islands."""
+    kinds = draw(st.lists(st.sampled_from(list(SectionKind)), min_size=2, max_size=9))
+    sections = tuple(Section(name=f"S{i}", kind=k, length=1.0) for i, k in enumerate(kinds))
+    ends = st.tuples(st.integers(0, len(kinds) - 1), st.integers(0, len(kinds) - 1)).filter(lambda p: p[0] != p[1])
+    what = st.tuples(ends, st.sampled_from(list(DeviceKind)), st.booleans(), st.sampled_from(["", "Elm", "Fir"]))
+    devices = tuple(
+        Device(
+            name=f"D{i}", kind=kind, a=f"S{a}", b=f"S{b}", closed=closed, station=at,
+            cores=("1",) if kind is DeviceKind.CT else (),
+        )
+        for i, ((a, b), kind, closed, at) in enumerate(draw(st.lists(what, min_size=1, max_size=14)))
+    )  # fmt: skip
+    return Plant(sections=sections, devices=devices, sources=(Source(name="G", section="S0"),))
+
+
+@settings(max_examples=120, deadline=None)
+@given(any_plant())
+def test_any_plant_can_be_drawn_with_every_device_on_its_wires(plant: Plant) -> None:
+    placed = arrange(plant, station_names(plant))
+    assert set(placed.sheet.spots) == set(plant.device)
+    assert [d.name for d in plant.devices if not touches(placed.sheet, d)] == []
+
+
+@settings(max_examples=10, deadline=None)
+@given(any_plant())
+def test_any_plant_is_drawn_to_the_end(plant: Plant) -> None:
+    ax = plot_one_line(plant, fault="S1", labels="all")
+    drawn = gids(ax, "breaker") + gids(ax, "ct") + gids(ax, "switch")
+    joints = [d for d in plant.devices if d.kind is DeviceKind.JOINT]
+    assert len(drawn) + len(joints) == len(plant.devices)
