@@ -42,7 +42,8 @@ class Campaign:
     observe : frozenset of str
         Trip outputs whose operation is counted, for dependability and security; see
         :func:`schemesim.study.dependability.outputs_of`.
-    sensing : Sensing
+    sensing : Sensing or mapping of str to Sensing
+        Of all variants, or of each.
     dispatch : str or None
     horizon_us : int
 
@@ -60,7 +61,7 @@ class Campaign:
     failures: tuple[tuple[str, ...], ...] = ()
     limit_us: int | Mapping[Event, int] = 150_000
     observe: frozenset[str] = frozenset()
-    sensing: Sensing = field(default_factory=LogicalSensing)
+    sensing: Sensing | Mapping[str, Sensing] = field(default_factory=LogicalSensing)
     dispatch: str | None = None
     horizon_us: int = DEFAULT_HORIZON_US
     _packed: dict[str, bytes] = field(default_factory=dict, init=False)
@@ -109,10 +110,14 @@ class Campaign:
         """Limit of the clearing time of an event, in microseconds."""
         return self.limit_us if isinstance(self.limit_us, int) else self.limit_us[event]
 
+    def sensing_of(self, variant: str) -> Sensing:
+        """The sensing of a variant."""
+        return self.sensing[variant] if isinstance(self.sensing, Mapping) else self.sensing
+
     @cached_property
     def keys(self) -> Mapping[str, str]:
         """Digest of the plant and scheme of each variant."""
-        return {name: digest((p.plant, p.scheme, self.sensing)) for name, p in self.variants.items()}
+        return {name: digest((p.plant, p.scheme, self.sensing_of(name))) for name, p in self.variants.items()}
 
     def about(self) -> dict[str, object]:
         """Everything the counts depend on, as plain data; the numbers of trials and of a chunk are no part of it."""
@@ -140,7 +145,7 @@ class Campaign:
         """The scheme of a place, ready to travel."""
         variant = self.places[place][0]
         if variant not in self._packed:
-            self._packed[variant] = packed(self.variants[variant], self.sensing)
+            self._packed[variant] = packed(self.variants[variant], self.sensing_of(variant))
         return self._packed[variant]
 
 
@@ -166,6 +171,8 @@ def _check(c: Campaign) -> ErrorList:
     for name, items in (("variants", c.variants), ("events", c.events)):
         if not items:
             errors.add(name, "none", "at least one")
+    if isinstance(c.sensing, Mapping) and (lacking := sorted(set(c.variants) - set(c.sensing))):
+        errors.add("sensing", "none", f"one for each variant; {', '.join(lacking)} has none")
     if bool(c.failures) == bool(c.trials):
         got = f"{c.trials} trials and {len(c.failures)} failure sets"
         errors.add("campaign", got, "either trials or failure sets, one or more")

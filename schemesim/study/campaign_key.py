@@ -31,7 +31,8 @@ def digest(item: object) -> str:
     Parameters
     ----------
     item : object
-        Fields of dataclasses that equality leaves out (caches) are left out here too.
+        Fields of dataclasses that equality leaves out (caches) are left out here too; a function counts by its
+        name, another object by what is pickled of it.
 
     Returns
     -------
@@ -54,10 +55,12 @@ def digest(item: object) -> str:
 
 
 def _digest(item: object) -> bytes:
+    if isinstance(item, np.generic):
+        item = item.item()
     kind = f"{type(item).__module__}.{type(item).__qualname__}"
     if isinstance(item, Enum):
         return _hash(kind, [item.name.encode()])
-    if item is None or isinstance(item, (bool, int, float, str, bytes, Fraction)):
+    if item is None or isinstance(item, (bool, int, float, complex, str, bytes, Fraction)):
         return _hash(kind, [repr(item).encode("utf-8", "surrogatepass")])
     if dataclasses.is_dataclass(item) and not isinstance(item, type):
         fields = [f.name for f in dataclasses.fields(item) if f.compare]
@@ -71,8 +74,10 @@ def _digest(item: object) -> bytes:
         return _hash("set", sorted(_digest(x) for x in item))
     if isinstance(item, Sequence):
         return _hash("sequence", (_digest(x) for x in item))
+    if callable(item) and hasattr(item, "__qualname__"):
+        return _hash("function", [f"{item.__module__}.{item.__qualname__}".encode()])
     if hasattr(item, "__dict__"):
-        return _hash(kind, [_digest(vars(item))])
+        return _hash(kind, [_digest(item.__getstate__())])
     raise reject("input of a campaign", kind, "data: dataclasses, mappings, sets, sequences, numbers, text")
 
 

@@ -99,7 +99,8 @@ def replay_trial(
         if isinstance(number, bool) or not isinstance(number, int) or not 0 <= number < most:
             raise reject("trial", trial, f"a whole number from 0 to {most - 1}")
         at = campaign.places[place][1]
-        case = case_of(campaign.variants[variant], at, campaign.sensing, campaign.dispatch, campaign.observe)
+        program, sensing = campaign.variants[variant], campaign.sensing_of(variant)
+        case = case_of(program, at, sensing, campaign.dispatch, campaign.observe)
         run = _run(campaign, case, trial)
         ending, t_us = ending_of(case, run.outcome, run.final_mask)
         failures = tuple(case.questions[q].name for q, yes in run.asked if yes)

@@ -8,17 +8,23 @@ from typing import Any
 
 from schemesim.engine.answers import DrawnAnswers
 from schemesim.engine.case import bind
+from schemesim.engine.electrical import ElectricalSensing
 from schemesim.engine.event import run_event
 from schemesim.engine.outcome import Outcome
-from schemesim.engine.program import Program
-from schemesim.engine.sensing import LogicalSensing
+from schemesim.engine.program import Program, compile_scheme
+from schemesim.engine.sensing import LogicalSensing, Sensing
 from schemesim.engine.times import DelayTimes
 from schemesim.plant.model import Location
 from schemesim.scheme.delays import Delay
 from schemesim.scheme.distributions import Uniform
+from schemesim.scheme.dress import dress
+from schemesim.scheme.policy import duplicate_chain
+from schemesim.scheme.settings_rules import settings_for
 from schemesim.study.campaign import Campaign
 from schemesim.study.campaign_counts import PlaceCounts
 from schemesim.study.measures import cleared_by
+from tests.rules.small import chain
+from tests.unit.electrical_plants import with_impedances
 from tests.unit.small_schemes import as_float, feeder_scheme, program_of
 
 SEED = 20_241
@@ -38,6 +44,16 @@ def variants(opening: Delay | None = None) -> dict[str, Program]:
 
 def small(opening: Delay | None = None, trials: int = 120, **more: Any) -> Campaign:
     return Campaign(variants(opening), (F1, F2), trials=trials, seed=SEED, **more)
+
+
+def electrical(trials: int = 20) -> Campaign:
+    """Under computed currents and under logical sensing, each a variant."""
+    plant = with_impedances(chain())
+    scheme = dress(plant, duplicate_chain())
+    of = compile_scheme(plant, scheme)
+    currents = ElectricalSensing(settings_for(plant, scheme), fault="lg")
+    both: dict[str, Sensing] = {"currents": currents, "graph": LogicalSensing()}
+    return Campaign(dict.fromkeys(both, of), (Location("L1", 0.05),), trials=trials, seed=SEED, sensing=both)
 
 
 def outcomes(of: Program, at: Location, trials: int, seed: int = SEED) -> list[Outcome]:

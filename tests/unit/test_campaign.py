@@ -25,13 +25,14 @@ from schemesim.plant.model import Location
 from schemesim.scheme.model import Role
 from schemesim.study.campaign import Campaign
 from schemesim.study.campaign_counts import PlaceCounts
+from schemesim.study.campaign_replay import replay_trial
 from schemesim.study.campaign_run import load_campaign, run_campaign
 from schemesim.study.campaign_tallies import BIN_US, joined_ranges, missing_ranges, rounded_up
 from schemesim.study.campaign_work import Chunk, Missing, run_work
 from schemesim.study.dependability import study_dependability
 from schemesim.study.injection import inject
 from schemesim.study.store import Store
-from tests.unit.campaign_cases import F1, F2, MAIN, OPENING, SEED, as_counts, outcomes, program, roles, small, variants
+from tests.unit.campaign_cases import F1, F2, MAIN, OPENING, SEED, as_counts, electrical, outcomes, program, roles, small, variants
 
 
 @pytest.fixture
@@ -236,6 +237,17 @@ def test_processes_of_its_own_give_the_same(path: str, plain: Any) -> None:
     assert run_campaign(small(OPENING), path, workers=2, chunk=33).places == plain
 
 
+def test_each_variant_may_have_a_sensing_of_its_own(tmp_path: Path) -> None:
+    campaign = electrical()
+    result = run_campaign(campaign, str(tmp_path / "a.db"), chunk=7)
+    assert run_campaign(campaign, str(tmp_path / "b.db"), workers=2, chunk=10).places == result.places
+    for variant in campaign.variants:
+        assert replay_trial(campaign, variant, "L1@0.05", 3, store=str(tmp_path / "a.db")).counted
+    currents, graph = (bind(p, campaign.events[0], campaign.sensing_of(v)) for v, p in campaign.variants.items())
+    assert type(currents.sensed) is not type(graph.sensed)
+    assert len(set(campaign.keys.values())) == 2
+
+
 # --- gone on with ------------------------------------------------------------------------
 
 
@@ -398,6 +410,8 @@ def test_bad_campaigns_are_refused_with_every_mistake() -> None:
         Campaign({}, ())
     with pytest.raises(InputError, match="a limit for F2"):
         Campaign(variants(), (F1, F2), trials=1, limit_us={F1: 100_000})
+    with pytest.raises(InputError, match="one for each variant; as it is has none"):
+        Campaign(variants(), (F1,), trials=1, sensing={"apart": LogicalSensing()})
     with pytest.raises(InputError, match="nil or certain"):
         Campaign(variants(), (F1,), failures=(("IN: delayed_operation",),))
 
