@@ -1,19 +1,20 @@
 """A scenario's timers, one dial turned, and the importance of its components: one call each.
 
 What they say of the demo, in plain words. The times of "full" have no spread, so a timer either trips needlessly or
-does not. Every breaker-failure timer is set to 150 ms and has 80 left after the breaker's 50 and the detector's 20; in some
-places 70, because current flows on until a slower breaker has opened too. Clearing with a breaker stuck takes 230 to
-255 ms: against 250 the breakers whose failure also has to trip a far end over a channel are 5 late, and a timer from 70
-to 145 ms would be in time and never needless. Zone 2 of the lines (350 ms) leaves breaker failure 100 to 110 ms.
+does not. Every breaker-failure timer is set to 150 ms and has 80 left after the breaker's 50 and the detector's 20;
+in some places 70, because current flows on until a slower breaker has opened too. Clearing with a breaker stuck
+takes 230 to 255 ms: against 250 the breakers whose failure also has to trip a far end over a channel are 5 late,
+and a timer from 70 to 145 ms would be in time and never needless. Zone 2 of the lines (350 ms) leaves breaker
+failure 100 to 110 ms.
 
 With times that scatter (policy "scattered times": breakers 50 ms and now and then 65, detectors 10 to 30) 150 ms is
-never needless still, but late in 19 of 20 clearings at Dunmore's line breakers, and in one of fifty at Alder's generators. A
-setting from 91 to 129 ms keeps both under one in a thousand at these breakers, 115 has the least of both together.
-Counting a late clearing twenty times as much as a needless trip moves that by two milliseconds only: either side
-falls by a factor of ten each few milliseconds.
+never needless still, but late in 19 of 20 clearings at Dunmore's line breakers, and in one of fifty at Alder's
+generators. A setting from 91 to 129 ms keeps both under one in a thousand at these breakers, 115 has the least of
+both together. Counting a late clearing twenty times as much as a needless trip moves that by two milliseconds only:
+either side falls by a factor of ten each few milliseconds.
 
-A second set in 1-out-of-2 makes the protection of Alder miss less and trip more without need; 2-out-of-2 misses more
-and trips less without need; 2-out-of-3 trips less without need than a single set and does not miss more.
+A second set in 1-out-of-2 makes the protection of Alder miss less and trip more without need; 2-out-of-2 misses
+more and trips less without need; 2-out-of-3 trips less without need than a single set and does not miss more.
 """
 
 from __future__ import annotations
