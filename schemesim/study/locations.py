@@ -24,6 +24,7 @@ from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, exactly, total
 from schemesim.study.location import LocationOptions, LocationResult, study_location
 from schemesim.study.no_fault import NoFaultStudy
+from schemesim.study.spread import breakers_over, cleared_over
 from schemesim.study.tree import MAX_RUNS
 from schemesim.ticks import limit_mistake
 
@@ -181,6 +182,24 @@ class LocationStudy:
         alone = [b for some in groups.values() if len(some) == 1 for b in some]  # such as the trips of sources
         groups = {station: some for station, some in groups.items() if len(some) > 1} | {"": alone}
         return plot_map(rows, groups, title="breakers opened, by the place of the fault", ax=ax)
+
+    def plot_breakers(self, ax: Axes | None = None) -> Axes:
+        """The share of faults that trip each number of breakers, over all locations, with its brackets."""
+        from schemesim.show.bars import plot_counts  # heavy: only when a picture is asked for
+
+        found = breakers_over((r for r in self.results if self.weight(r) > 0), self.weighted)
+        counts = {n: (float(b.low), float(b.high)) for n, b in found.items()}
+        return plot_counts(counts, title="breakers tripped, all faults", x="breakers tripped", ax=ax)
+
+    def plot_clearing(self, ax: Axes | None = None) -> Axes:
+        """The share of faults not yet cleared after a time, over all locations; the limit marked."""
+        from schemesim.show.curves import Line, plot_left  # heavy: only when a picture is asked for
+
+        found = cleared_over([r for r in self.results if self.weight(r) > 0], self.weighted)
+        steps = [(t / 1000, (float(b.low), float(b.high))) for t, b in found]
+        limit = self.options.limit_us / 1000
+        line = Line(limit, f"limit {limit:g} ms", dashed=True)
+        return plot_left(steps, title="time to clear, all faults", lines=[line], ax=ax)
 
     def __repr__(self) -> str:
         lines = [

@@ -28,6 +28,7 @@ from schemesim.study.frontier import Choice, Frontier
 from schemesim.study.importance_study import study_importance
 from schemesim.study.injection import inject
 from schemesim.study.locations import LocationStudy
+from schemesim.study.spread import breakers_over, cleared_over
 from schemesim.study.timer_study import study_timers
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -162,6 +163,8 @@ PICTURES: dict[str, Callable[[Axes | None], Axes]] = {
     "map": lambda ax: result("locations").plot(ax=ax),
     "breakers": lambda ax: result("locations").results[0].plot_breakers(ax),
     "clearing": lambda ax: result("locations").results[0].plot_clearing(150, ax),
+    "breakers of all": lambda ax: result("locations").plot_breakers(ax),
+    "clearing of all": lambda ax: result("locations").plot_clearing(ax),
     "importance": lambda ax: result("importance").plot(ax=ax),
     "timer": lambda ax: result("timers").results[0].plot(ax),
     "frontier": lambda ax: result("frontier").plot(ax),
@@ -203,3 +206,18 @@ def test_the_timer_marks_its_setting() -> None:
     found = result("timers").results[0]
     assert f"set {found.race.delay.nominal_us / 1000:g} ms" in gids(found.plot(), "line")
     assert len(gids(found.plot(), "curve")) == 2
+
+
+def test_distributions_over_locations_are_the_weighted_mean() -> None:
+    found = result("locations")
+    mine = {str(r.location): r for r in found.results}
+    weights = {name: found.weight(r) for name, r in mine.items()}
+    counts = breakers_over(found.results, found.weighted)
+    assert set(counts) == {n for r in found.results for n in r.breakers}
+    for n, share in counts.items():
+        low = sum(weights[name] * float(r.breakers[n].low) for name, r in mine.items() if n in r.breakers)
+        assert float(share.low) == pytest.approx(low / sum(weights.values()), abs=1e-12)
+    last = cleared_over(found.results, found.weighted)[-1][1]
+    low = sum(weights[name] * float(r.clearing.cdf[-1][1].low) for name, r in mine.items()) / sum(weights.values())
+    assert float(last.low) == pytest.approx(low, abs=1e-12)
+    assert sum(float(b.low) for b in counts.values()) <= 1 <= sum(float(b.high) for b in counts.values())
