@@ -82,7 +82,8 @@ class RelaySchedule:
         return f"RelaySchedule({len(self.policies) - breakers} elements, {breakers} breakers)"
 
     def _repr_html_(self) -> str:
-        return str(self.table().fillna("").to_html(index=False))
+        table = self.table()
+        return str(table.where(table.notna(), "").to_html(index=False, max_rows=60))
 
 
 def load_relay_schedule(

@@ -290,6 +290,9 @@ def test_a_schedule_says_what_is_there_and_nothing_else(two: Plant) -> None:
     assert getattr(scheme.block["Birch/F1/1 50"], "operate", None) == Fixed(25_000)
     assert {c for c in scheme.component if c.endswith("/core 2")} == {"Alder.G1.CTc/core 2", "Alder.L1.CTc/core 2"}
     assert repr(schedule) == "RelaySchedule(3 elements, 1 breakers)"
+    shown = schedule._repr_html_()
+    assert "<td>87L</td>" in shown
+    assert "None" not in shown
 
 
 def test_a_second_dc_supply_in_one_row_changes_that_bay_only(two: Plant) -> None:
