@@ -130,7 +130,8 @@ class ElectricalSensing:
                 for t in c.terminals
                 for side in (program.plant.device[t.ct].a, program.plant.device[t.ct].b)
             )
-            if within_reach or ways[i].multiple(quantities) >= _NEAR:
+            missing = self.settings.of[b.name].missing
+            if within_reach or ways[i].multiple(quantities.without(missing)) >= _NEAR:
                 found.append(i)
         return found
 
@@ -202,6 +203,7 @@ class _Computed:
             else isinstance(b.condition, Always)
             for b in senses
         )
+        self.missing = tuple(of[b.name].missing if b.name in of else frozenset[str]() for b in senses)
         self._last: tuple[frozenset[str], Solution, tuple[float, ...]] | None = None
         self._around: Neighbourhood | None = None
 
@@ -210,7 +212,11 @@ class _Computed:
         if self._last is None or self._last[0] != names:
             solution = self.faulted.solve(names | self.idle)
             q = self.sensing._quantities(self.program, self.dispatch, solution)
-            multiples = tuple(float(e) if isinstance(e, bool) else e.multiple(q) for e in self.elements)
+            seen = {names: q.without(names) for names in set(self.missing)}
+            multiples = tuple(
+                float(e) if isinstance(e, bool) else e.multiple(seen[missing])
+                for e, missing in zip(self.elements, self.missing, strict=True)
+            )
             self._last = names, solution, multiples
         return self._last[1], self._last[2]
 

@@ -51,6 +51,8 @@ class Quantities:
         Before the fault, for what polarises by memory.
     open_cts, lost_vts : frozenset of str
         CTs whose core is open, VTs whose winding is lost.
+    whole : Quantities or None
+        The same with nothing missing, where it is at hand: what it knows is not computed again.
     """
 
     plant: Plant
@@ -58,6 +60,7 @@ class Quantities:
     memory: Solution
     open_cts: frozenset[str] = frozenset()
     lost_vts: frozenset[str] = frozenset()
+    whole: Quantities | None = None
     _currents: dict[Terminal, Phasors] = field(default_factory=dict)
     _voltages: dict[str, Phasors] = field(default_factory=dict)
     _remembered: dict[str, complex] = field(default_factory=dict)
@@ -75,24 +78,46 @@ class Quantities:
         """Current of one CT into its inner side."""
         found = self._currents.get(terminal)
         if found is None:
-            blind = terminal.ct in self.open_cts
-            found = self._currents[terminal] = NONE if blind else self.solution.current(terminal.ct, terminal.inner)
+            if terminal.ct in self.open_cts:
+                found = NONE
+            elif self.whole is not None:
+                found = self.whole.at(terminal)
+            else:
+                found = self.solution.current(terminal.ct, terminal.inner)
+            self._currents[terminal] = found
         return found
+
+    def without(self, missing: frozenset[str]) -> Quantities:
+        """The same without the signals of some CTs or VTs (rule R5)."""
+        if not missing:
+            return self
+        cts, vts = self.open_cts | missing, self.lost_vts | missing
+        return Quantities(self.plant, self.solution, self.memory, cts, vts, self)
 
     def voltage(self, vt: str) -> Phasors:
         """Phase-to-earth voltage at a VT."""
         found = self._voltages.get(vt)
         if found is None:
-            lost = vt in self.lost_vts
-            found = self._voltages[vt] = NONE if lost else self.solution.voltage(self._section_of(vt), vt)
+            if vt in self.lost_vts:
+                found = NONE
+            elif self.whole is not None:
+                found = self.whole.voltage(vt)
+            else:
+                found = self.solution.voltage(self._section_of(vt), vt)
+            self._voltages[vt] = found
         return found
 
     def remembered(self, vt: str) -> complex:
         """Positive-sequence voltage at a VT before the fault; 0 where the VT is lost."""
         found = self._remembered.get(vt)
         if found is None:
-            lost = vt in self.lost_vts
-            found = self._remembered[vt] = 0j if lost else self.memory.voltage(self._section_of(vt), vt)[1]
+            if vt in self.lost_vts:
+                found = 0j
+            elif self.whole is not None:
+                found = self.whole.remembered(vt)
+            else:
+                found = self.memory.voltage(self._section_of(vt), vt)[1]
+            self._remembered[vt] = found
         return found
 
     def _section_of(self, vt: str) -> str:

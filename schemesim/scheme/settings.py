@@ -55,6 +55,9 @@ class Setting:
     never : frozenset of str
         Sections of faults for which it does not count.
     choices : tuple of Choice
+    missing : frozenset of str
+        CTs and VTs whose signal this block is without: what a function does on a failure of theirs is
+        a block of its own in the scheme (rule R5).
     """
 
     block: str
@@ -62,6 +65,7 @@ class Setting:
     only: frozenset[str] | None = None
     never: frozenset[str] = frozenset()
     choices: tuple[Choice, ...] = ()
+    missing: frozenset[str] = frozenset()
 
     def counts(self, section: str) -> bool:
         """Whether it counts for faults on a section."""
@@ -153,6 +157,8 @@ class Settings:
             errors.add("settings", name, "the name of a sense block", tip=nearest(name, senses))
         for s in self.items:
             cts, vts = s.element.looks_at
+            for name in sorted(s.missing - set(cts) - set(vts)):
+                errors.add(f"missing signal of {s.block!r}", name, f"one of {sorted({*cts, *vts})}")
             for what, names, known in (("CT", cts, carries), ("VT", vts, known_vts)):
                 for name in sorted(set(names) - known):
                     errors.add(f"{what} of {s.block!r}", name, f"a {what} of the plant", tip=nearest(name, known))

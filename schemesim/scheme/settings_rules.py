@@ -8,7 +8,7 @@ network it is for.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 from schemesim.errors import ErrorList
 from schemesim.plant.model import Plant, Section, SectionKind
@@ -120,7 +120,7 @@ def settings_for(
         network = network_of
     states = (None, *(d.name for d in plant.dispatches)) if dispatches is None else dispatches
     data = PlantData(plant, network, dict(max_load_a or {}), states)
-    chooser = _Chooser(data, rules or SettingRules())
+    chooser = _Chooser(data, scheme, rules or SettingRules())
     items = [s for b in scheme.blocks if isinstance(b, Sense) and (s := chooser.setting(b)) is not None]
     chooser.errors.raise_if_any()
     return Settings(tuple(items))
@@ -129,6 +129,7 @@ def settings_for(
 @dataclass(frozen=True)
 class _Chooser:
     data: PlantData
+    scheme: Scheme
     rules: SettingRules
     errors: ErrorList = field(default_factory=ErrorList)
 
@@ -194,6 +195,10 @@ class _Chooser:
 
     def _zone(self, block: str, sections: frozenset[str], cts: tuple[str, ...]) -> Setting:
         o = self.data.by_zone.get(sections)
+        if " through " in block:
+            whole = self._unbalanced(block, sections)
+            if whole is not None:
+                return whole
         terminals = tuple(self._terminal(ct) for ct in cts)
         if o is not None and (" sees " in block or self.data.plant.section[o.element].kind is not SectionKind.FEEDER):
             mine = {t.ct: t for t in o.terminals}
@@ -210,6 +215,18 @@ class _Chooser:
             only = sections
         element = elements[0] if len(elements) == 1 else Either(tuple(elements))
         return Setting(block, element, only, choices=(Choice("pick_up_a", pick_up, why),))
+
+    def _unbalanced(self, block: str, nearby: frozenset[str]) -> Setting | None:
+        """A differential without the core of one CT, as the scheme asks of it for faults near by."""
+        base, _, ct = block.partition(" through ")
+        beside = self.scheme.block.get(f"{base} sees {ct}")
+        if not isinstance(beside, Sense) or not isinstance(beside.condition, InZone):
+            return None
+        o = self.data.by_zone.get(beside.condition.sections)
+        if o is None:
+            return None
+        setting = self._differential(block, o, "")
+        return replace(setting, only=nearby, missing=frozenset({ct}))
 
     def _differential_pick_up(self, terminals: tuple[Terminal, ...]) -> tuple[float, str]:
         load, whence = max(self.data.load_a(t) for t in terminals)
@@ -266,7 +283,8 @@ class _Chooser:
         ]
         if isinstance(plant.section[own.name].impedance, LineImpedance):
             choices.append(Choice("k0", k0, f"(Z0 - Z1)/(3 Z1) of {own.name}"))
-        return Setting(block, element, choices=tuple(choices))
+        missing = frozenset({vt}) if block.endswith(" on current") else frozenset[str]()
+        return Setting(block, element, choices=tuple(choices), missing=missing)
 
     def _impedance(
         self, reach: Reach, own: Section, station: str, kv: float

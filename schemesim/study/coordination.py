@@ -177,7 +177,7 @@ def coordination(
             for kind in faults:
                 solved = grid.at(ShuntFault(place, FaultType(kind), resistance_ohm)).solve(frozenset())
                 q = Quantities(program.plant, solved, grid.prefault())
-                seen = {name: settings.of[name].element.multiple(q) for name in names}
+                seen = {n: settings.of[n].element.multiple(q.without(settings.of[n].missing)) for n in names}
                 times = {name: time_s(program, senses[name], seen[name]) for name in names}
                 for front, behind in wanted:
                     if math.isfinite(min(times[front], times[behind])):

@@ -202,6 +202,7 @@ def audit_elements(
     groups = _grouped(chosen, settings)
     tally = {name: _Tally() for name in groups}
     elements = {name: _whole(settings.of[group[0]].element) for name, group in groups.items()}
+    missing = {name: settings.of[group[0]].missing for name, group in groups.items()}
     for dispatch in states:
         grid = network(plant, dispatch)
         memory = grid.prefault()
@@ -222,7 +223,8 @@ def audit_elements(
                     total = size_of(solved.fault, Part.PHASE)
                     for block, must in meant.items():
                         if _feeds(q, elements[block], total):
-                            tally[block].count(must, elements[block].multiple(q), f"{place} {kind}", state)
+                            multiple = elements[block].multiple(q.without(missing[block]))
+                            tally[block].count(must, multiple, f"{place} {kind}", state)
     rows = [t.row(name) for name, t in tally.items()]
     rows.sort(key=lambda r: (r.least.multiple if r.least else float("inf"), r.block))
     return ElementAudit(tuple(rows), len(places) * len(kinds), (1 + len(set(away))) * len(states))
