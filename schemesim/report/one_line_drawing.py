@@ -78,10 +78,10 @@ def draw(plant: Plant, placed: Placed, state: State, labels: str, ax: Axes | Non
         _fault(pen, placed, state.fault)
     if state.title:
         text = "\n".join(shorten(line, int((right - left) * 7.2 * pen.size)) for line in state.title.split("\n"))
-        ax.set_title(text, fontsize=FONT_PT + 1, loc="left", x=0.01)
+        ax.set_title(text, fontsize=max((FONT_PT + 1) * pen.size, 5.0), loc="left", x=0.01)
     ax.legend(
         handles=handles, loc="upper left", bbox_to_anchor=(0.01, 0), borderaxespad=0.3, ncol=columns,
-        fontsize=FONT_PT - 0.5, frameon=False, handlelength=2.0,
+        fontsize=max((FONT_PT - 0.5) * pen.size, 4.5), frameon=False, handlelength=2.0,
     )  # fmt: skip
     return ax
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Protocol
 
 from schemesim.errors import ErrorList
 from schemesim.show.style import BLACK, CYCLE, FONT_PT, ORANGE, VERMILLION, below, new_axes, tidy
@@ -141,9 +141,17 @@ def plot_bands(
     return ax
 
 
+class Timed(Protocol):
+    """A characteristic that tells its operate time."""
+
+    def operate_s(self, multiple: float, /) -> float | None:
+        """Operate time in seconds at a multiple of the pick-up current."""
+
+
 def plot_time_current(
-    curves: Mapping[str, Callable[[float], float | None]],
+    curves: Mapping[str, Timed | Callable[[float], float | None]],
     *,
+    pick_ups_a: Mapping[str, float] | None = None,
     least: float = 1.05,
     most: float = 20.0,
     marks: Mapping[str, float] | None = None,
@@ -155,9 +163,12 @@ def plot_time_current(
 
     Parameters
     ----------
-    curves : mapping of label to callable
+    curves : mapping of label to curve or callable
         From the multiple of the pick-up current to the operate time in seconds; no time, infinity
         or a mistake in value (below pick-up) leaves a gap.
+    pick_ups_a : mapping of label to float or None
+        Pick-up current of each curve in A; then the axis is the current in A, so that relays with
+        different pick-ups can be set beside each other, and marks are in A too.
     least, most : float
         Range of multiples.
     marks : mapping of label to float or None
@@ -186,21 +197,28 @@ def plot_time_current(
         errors.add("most multiple", most, "a finite number over the least multiple")
     for name, at in (marks or {}).items():
         if not 0 < at < math.inf:
-            errors.add(f"mark {name!r}", at, "a finite multiple over zero")
+            errors.add(f"mark {name!r}", at, "a finite multiple (or current) over zero")
+    for label in curves if pick_ups_a is not None else ():
+        if not 0 < (pick_ups_a or {}).get(label, 0) < math.inf:
+            errors.add(f"pick-up of {label!r}", (pick_ups_a or {}).get(label), "a finite current over zero, in A")
     errors.raise_if_any()
+    scale = {label: 1.0 if pick_ups_a is None else float(pick_ups_a[label]) for label in curves}
+    least, most = least * min(scale.values(), default=1.0), most * max(scale.values(), default=1.0)
     ax = new_axes(ax, 4.2, bottom_in=1.0, left_in=0.8)
     ax.set_xscale("log")
     ax.set_yscale("log")
     multiples = [least * (most / least) ** (i / 240) for i in range(241)]
     for n, (label, curve) in enumerate(curves.items()):
         color, dash, _ = CYCLE[n % len(CYCLE)]
-        times = [_time(curve, m) for m in multiples]
+        times = [_time(curve, m / scale[label]) for m in multiples]
         (drawn,) = ax.plot(multiples, times, color=color, linestyle=dash, linewidth=1.5, label=label, zorder=3)
         drawn.set_gid(f"curve: {label}")
     explained = False
     for name, at in (marks or {}).items():
         mark_lines(ax, [Line(at, name)])
-        found = sorted((t, label) for label, curve in curves.items() if not math.isnan(t := _time(curve, at)))
+        found = sorted(
+            (t, label) for label, curve in curves.items() if not math.isnan(t := _time(curve, at / scale[label]))
+        )
         for i, (t, label) in enumerate(found):
             (dot,) = ax.plot([at], [t], marker="o", markersize=4, color=BLACK, linestyle="none", zorder=5)
             dot.set_gid(f"at {name}: {label}")
@@ -217,9 +235,10 @@ def plot_time_current(
                 (short,) = ax.plot([at, at], [found[i - 1][0], t], color=ORANGE, linewidth=4, zorder=4, label=words)
                 short.set_gid(f"short of grading: {found[i - 1][1]} to {label}")
     ax.set_xlim(least, most)
-    tidy(ax, title=title, x="current, multiples of pick-up", y="operate time, s")
+    words = "current, multiples of pick-up" if pick_ups_a is None else "current, A"
+    tidy(ax, title=title, x=words, y="operate time, s")
     ax.grid(True, which="both", color="#E3E3E3", linewidth=0.5)
-    ticks = [m for m in (1, 1.5, 2, 3, 5, 7, 10, 15, 20, 30, 50, 100) if least <= m <= most]
+    ticks = [m * 10.0**e for e in range(-3, 7) for m in (1, 1.5, 2, 3, 5, 7) if least <= m * 10.0**e <= most]
     ax.set_xticks(ticks, [f"{m:g}" for m in ticks])
     ax.set_xticks([], minor=True)
     low, high = (t * f for t, f in zip(ax.get_ylim(), (1.0, 1.0), strict=True))
@@ -230,10 +249,11 @@ def plot_time_current(
     return ax
 
 
-def _time(curve: Callable[[float], float | None], multiple: float) -> float:
+def _time(curve: Timed | Callable[[float], float | None], multiple: float) -> float:
     """An operate time in seconds; no number where the curve has none."""
+    operate: Any = getattr(curve, "operate_s", curve)
     try:
-        t = curve(multiple)
+        t = operate(multiple)
     except (ArithmeticError, ValueError):
         return math.nan
     return math.nan if t is None or not 0 < t < math.inf else float(t)

@@ -30,7 +30,7 @@ from schemesim.show.scatter import Spot, plot_frontier
 from schemesim.show.tables import cells, ranked, to_html
 from schemesim.show.trade import plot_trade
 from schemesim.study.brackets import Bracket
-from schemesim.study.dials import Figures
+from schemesim.study.dials import DialStudy, Figures
 
 ROOT = Path(__file__).resolve().parents[2]
 SUPER = str.maketrans("⁻⁰¹²³⁴⁵⁶⁷⁸⁹−", "-0123456789-")
@@ -235,6 +235,23 @@ def test_time_current_curves_take_any_callable() -> None:
     assert ax.get_ylabel() == "operate time, s"
 
 
+def test_time_current_curves_in_amperes_on_one_axis() -> None:
+    # IEC 60255-151 very inverse: t = 13.5 / (M − 1) · TMS. At 1200 A: M = 3 and 4, TMS 0.1 and 0.2: 0.675 s and 0.9 s.
+    class Inverse:
+        def __init__(self, dial: float) -> None:
+            self.dial = dial
+
+        def operate_s(self, multiple: float) -> float:
+            return self.dial * 13.5 / (multiple - 1) if multiple > 1 else math.inf
+
+    curves = {"far": Inverse(0.1), "near": Inverse(0.2)}
+    ax = plot_time_current(curves, pick_ups_a={"far": 400, "near": 300}, marks={"end of line": 1200})
+    assert ax.get_xlabel() == "current, A"
+    assert [t.get_text() for t in ax.texts if t.get_text().endswith(" s")] == ["0.675 s", "0.9 s"]
+    with pytest.raises(InputError, match="near"):
+        plot_time_current(curves, pick_ups_a={"far": 400})
+
+
 def test_time_current_curves_refuse_a_range_that_is_none() -> None:
     with pytest.raises(InputError) as caught:
         plot_time_current({}, least=0, most=-1, marks={"here": math.inf})
@@ -299,6 +316,17 @@ def test_dependability_and_security_turn_by_turn() -> None:
     assert isinstance(upright, LineCollection)
     assert upright.get_segments()[0][:, 1].tolist() == pytest.approx([0.008, 0.01])
     assert legend(ax) == ["Alder", "votes 1oo1", "votes 2oo2"]
+
+
+def test_a_dial_draws_the_kind_it_is_asked_for() -> None:
+    figures = tuple(
+        Figures(position, kind, name, Bracket(0.99, 0.992), Bracket(0.999, 0.9992), Bracket(0, 0))
+        for position in ("1oo1", "2oo2")
+        for kind, name in (("station", "Alder"), ("relay", "Alder/L1/relay 1"))
+    )
+    study = DialStudy("votes", ("1oo1", "2oo2"), figures)
+    assert gids(study.plot(), "group") == ["Alder"]
+    assert gids(study.plot("relay"), "group") == ["Alder/L1/relay 1"]
 
 
 CHARTS: dict[str, Callable[[Axes | None], Axes]] = {
