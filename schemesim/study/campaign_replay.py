@@ -129,9 +129,9 @@ def _counted(store: Store, place: int, trial: int, ending: CampaignEnding, t_us:
         when = rounded_up(t_us, BIN_US) if chunk.facts.random and t_us is not None else t_us
         if chunk.each is not None:
             tally, clear_us = chunk.each[trial - chunk.first]
-            same = (chunk.tallies[tally].ending, clear_us) == (ending, when)
+            same = chunk.tallies[tally].ending.alike(ending) and clear_us == when
         else:
-            same = any(t.ending == ending and when in dict(t.times) for t in chunk.tallies)
+            same = any(t.ending.alike(ending) and when in dict(t.times) for t in chunk.tallies)
         if not same:
             told = f"trial {trial} comes out otherwise than it was counted in {store.path}"
             raise RunError(f"{told}; the store was made with {store.about['versions']}")

@@ -11,7 +11,7 @@ from __future__ import annotations
 
 import json
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 from schemesim.engine.outcome import Status
@@ -32,7 +32,8 @@ class CampaignEnding:
     cleared_by : Role or None
         Role of what cleared the fault, as :func:`schemesim.study.measures.cleared_by` has it.
     tripped : tuple of (str, Role, str, bool)
-        Each breaker committed, the role and the trip output that did it, whether it interrupted; by name.
+        Each breaker committed, the role and the trip output that did it, whether it interrupted; by name. Of
+        several outputs of one role at one instant any may stand there.
     operated : tuple of str
         Observed outputs that operated, by name.
     open : tuple of str
@@ -56,6 +57,10 @@ class CampaignEnding:
         """Names of everything that was committed to open."""
         return frozenset(name for name, *_ in self.tripped)
 
+    def alike(self, other: CampaignEnding) -> bool:
+        """Whether two endings are the same but for which of several outputs is named at a breaker."""
+        return _unnamed(self) == _unnamed(other)
+
     def to_text(self) -> str:
         """As compact JSON; equal endings give equal text."""
         by = None if self.cleared_by is None else self.cleared_by.name
@@ -77,6 +82,10 @@ class CampaignEnding:
             sections_lost=sections,
             at_horizon=bool(at_horizon),
         )
+
+
+def _unnamed(ending: CampaignEnding) -> CampaignEnding:
+    return replace(ending, tripped=tuple((name, role, "", done) for name, role, _, done in ending.tripped))
 
 
 @dataclass(frozen=True, slots=True)
