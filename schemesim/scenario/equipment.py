@@ -29,6 +29,16 @@ from schemesim.plant.model import (
     VoltageTransformer,
 )
 from schemesim.plant.wiring import doubtful_wiring
+from schemesim.scenario.equipment_impedances import (
+    COUPLING_CELLS,
+    LINE_CELLS,
+    SOURCE_CELLS,
+    TRANSFORMER_CELLS,
+    coupling,
+    line_impedance,
+    source_impedance,
+    transformer_impedance,
+)
 from schemesim.scenario.tables import Row, in_order, read_table
 
 if TYPE_CHECKING:
@@ -37,16 +47,21 @@ if TYPE_CHECKING:
 LAYOUTS = ("single_bus", "sectionalised_bus", "double_bus", "ring", "breaker_and_a_half")
 
 _SECTION = ("station", "kv", "length", "load_mw")
+_UNIT = ("unit", "trips", "impedance_pu", *SOURCE_CELLS)
 _DEVICE = ("station", "a", "b", "a_at", "b_at", "closed")
 CELLS: Mapping[str, tuple[str, ...]] = {
     "station": ("kv", "layout", "ct", "cores", "windings", "closed"),
     "bay": ("station", "to", "at", "bus", "ct", "breaker"),
     **{str(kind): _SECTION for kind in SectionKind},
-    "generator": (*_SECTION, "unit", "trips", "impedance_pu"),
+    "line": (*_SECTION, *LINE_CELLS),
+    "feeder": (*_SECTION, *LINE_CELLS),
+    "transformer": (*_SECTION, *TRANSFORMER_CELLS),
+    "generator": (*_SECTION, *_UNIT),
     **{str(kind): _DEVICE for kind in DeviceKind},
     "ct": (*_DEVICE, "cores"),
-    "source": ("station", "section", "trips", "feeds_own_zone", "impedance_pu"),
+    "source": ("station", "section", "trips", "feeds_own_zone", "impedance_pu", *SOURCE_CELLS),
     "vt": ("station", "section", "windings"),
+    "coupling": COUPLING_CELLS,
     "dispatch": ("out",),
 }
 """The cells a row of each kind may have, besides ``kind`` and ``name``; the trade's meaning of each:
@@ -55,7 +70,7 @@ CELLS: Mapping[str, tuple[str, ...]] = {
 ``b_at`` where along them (0 to 1); ``to`` and ``at``, the circuit a bay leads to and where it joins it; ``bus``, the
 number of the bus a bay is on; ``closed`` yes or no (of a double bus: the coupler); ``cores`` and ``windings`` labels
 separated by blanks; ``unit`` the name of a generator's source (``<name>.unit`` where it is empty, ``none`` for none);
-``out`` sources separated by semicolons.
+``out`` sources separated by semicolons. Impedances: :mod:`schemesim.scenario.equipment_impedances`.
 """
 
 COLUMNS = ("kind", "name", *dict.fromkeys(cell for cells in CELLS.values() for cell in cells))
@@ -142,7 +157,7 @@ class _Reading:
             self.bays.setdefault(row.required("station"), []).append(row)
             return
         seen = self.stations if kind == "station" else self.by_name
-        if kind != "dispatch" and name:
+        if kind not in ("dispatch", "coupling") and name:
             if name in seen:
                 row.note("name", name, "a name not used twice", f"first in row {seen[name].number}")
             seen.setdefault(name, row)
@@ -160,6 +175,11 @@ class _Reading:
                 self.builder.add(
                     VoltageTransformer(name=name, section=section, station=row.text("station"), windings=windings)
                 )
+        elif kind == "coupling":
+            self.joined += [(row, "a", row.text("a")), (row, "b", row.text("b"))]
+            between = coupling(row)
+            if between is not None:
+                self.builder.add(between)
         elif kind == "dispatch":
             self.outs.append(row)
 
@@ -167,18 +187,21 @@ class _Reading:
         length = row.number_of("length")
         if kind is SectionKind.LINE and not length > 0 and not row.bad:
             row.note("length", row.text("length") or "nothing", "a length over zero")
+        impedance_of = {SectionKind.LINE: line_impedance, SectionKind.FEEDER: line_impedance,
+                        SectionKind.TRANSFORMER: transformer_impedance}.get(kind)  # fmt: skip
         made = Section(name=name, kind=kind, station=row.text("station"), kv=row.number_of("kv"), length=length,
-                       load_mw=row.number_of("load_mw"))  # fmt: skip
+                       load_mw=row.number_of("load_mw"),
+                       impedance=None if impedance_of is None else impedance_of(row))  # fmt: skip
         unit = row.text("unit", f"{name}.unit") if kind is SectionKind.GENERATOR else "none"
         trips, impedance = row.truth("trips", True), self._impedance(row)
+        behind = source_impedance(row) if kind is SectionKind.GENERATOR else None
         if row.bad:
             return
         self.builder.add(made)
         if unit != "none":
             self.by_name.setdefault(unit, row)
-            self.builder.add(
-                Source(name=unit, section=name, station=made.station, trips=trips, impedance_pu=impedance)
-            )
+            self.builder.add(Source(name=unit, section=name, station=made.station, trips=trips,
+                                    impedance_pu=impedance, impedance=behind))  # fmt: skip
 
     def _device(self, row: Row, kind: DeviceKind, name: str) -> None:
         a, b = row.required("a"), row.required("b")
@@ -196,11 +219,11 @@ class _Reading:
     def _source(self, row: Row, name: str) -> None:
         section = row.required("section")
         trips, own = row.truth("trips", False), row.truth("feeds_own_zone", True)
-        impedance = self._impedance(row)
+        impedance, behind = self._impedance(row), source_impedance(row)
         self.joined.append((row, "section", section))
         if not row.bad:
             self.builder.add(Source(name=name, section=section, station=row.text("station"), trips=trips,
-                                    feeds_own_zone=own, impedance_pu=impedance))  # fmt: skip
+                                    feeds_own_zone=own, impedance_pu=impedance, impedance=behind))  # fmt: skip
 
     def _impedance(self, row: Row) -> float | None:
         return row.number_of("impedance_pu") if "impedance_pu" in row.cells else None

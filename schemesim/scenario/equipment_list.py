@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 from schemesim.errors import InputError, Problem
 from schemesim.plant.model import Plant, SectionKind, Source
 from schemesim.scenario.equipment import COLUMNS
+from schemesim.scenario.equipment_impedances import cells_of
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -28,8 +29,7 @@ def equipment_list(plant: Plant) -> pd.DataFrame:
     Raises
     ------
     InputError
-        For a plant with labels that a cell cannot hold (blanks, commas or semicolons in them), or with
-        impedances beyond ``impedance_pu``, which a list has no columns for.
+        For a plant with labels that a cell cannot hold (blanks, commas or semicolons in them).
 
     Examples
     --------
@@ -50,12 +50,13 @@ def equipment_list(plant: Plant) -> pd.DataFrame:
     rows: list[dict[str, object]] = []
     for s in plant.sections:
         row: dict[str, object] = {"kind": str(s.kind), "name": s.name, "station": s.station, "kv": s.kv or None,
-                                  "length": s.length or None, "load_mw": s.load_mw or None}  # fmt: skip
+                                  "length": s.length or None, "load_mw": s.load_mw or None,
+                                  **cells_of(s.impedance)}  # fmt: skip
         if s.kind is SectionKind.GENERATOR:
             unit = units.get(s.name)
             row["unit"] = "none" if unit is None else ""
             if unit is not None:
-                row |= {"trips": _word(unit.trips), "impedance_pu": unit.impedance_pu}
+                row |= {"trips": _word(unit.trips), "impedance_pu": unit.impedance_pu, **cells_of(unit.impedance)}
         rows.append(row)
     rows += [
         {"kind": str(d.kind), "name": d.name, "station": d.station, "a": d.a, "b": d.b, "a_at": d.a_at or None,
@@ -64,7 +65,7 @@ def equipment_list(plant: Plant) -> pd.DataFrame:
     ]  # fmt: skip
     rows += [
         {"kind": "source", "name": x.name, "station": x.station, "section": x.section, "trips": _word(x.trips),
-         "feeds_own_zone": _word(x.feeds_own_zone), "impedance_pu": x.impedance_pu}
+         "feeds_own_zone": _word(x.feeds_own_zone), "impedance_pu": x.impedance_pu, **cells_of(x.impedance)}
         for x in plant.sources
         if units.get(x.section) is not x
     ]  # fmt: skip
@@ -72,6 +73,7 @@ def equipment_list(plant: Plant) -> pd.DataFrame:
         {"kind": "vt", "name": v.name, "station": v.station, "section": v.section, "windings": " ".join(v.windings)}
         for v in plant.vts
     ]
+    rows += [{"kind": "coupling", "name": f"{c.a} beside {c.b}", **cells_of(c)} for c in plant.couplings]
     rows += [
         {"kind": "dispatch", "name": state.name, "out": "; ".join(sorted(state.out))} for state in plant.dispatches
     ]
@@ -104,9 +106,5 @@ def _check_cells(plant: Plant) -> None:
         for name in sorted(state.out)
         if ";" in name
     ]
-    said = [s.name for s in plant.sections if s.impedance is not None]
-    said += [s.name for s in plant.sources if s.impedance is not None]
-    said += [f"{c.a} and {c.b}" for c in plant.couplings]
-    wrong += [Problem("impedance", name, "none: an equipment list has no column for it") for name in said]
     if wrong:
         raise InputError(wrong)

@@ -100,6 +100,25 @@ class Row:
             return default
         return value
 
+    def real(self, column: str) -> float | None:
+        """A finite number of any sign, None where there is none."""
+        value = self._number(column)
+        if value is not None and not math.isfinite(value):
+            self.note(column, self.cells[column], "a finite number")
+            return None
+        return value
+
+    def reals(self, column: str) -> tuple[float, ...]:
+        """Finite numbers, separated by blanks or semicolons."""
+        found: list[float] = []
+        for part in self.text(column).replace(";", " ").split():
+            alone = Row({column: part}, self.number, self.file, self.problems)
+            value = alone.real(column)
+            self.bad = self.bad or alone.bad
+            if value is not None:
+                found.append(value)
+        return tuple(found)
+
     def time_us(self, column: str, least_ms: float = 1.0) -> int | None:
         """A time given in ms, in microseconds; one over zero and under ``least_ms`` can only be meant in seconds."""
         value = self._number(column)

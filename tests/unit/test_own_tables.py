@@ -12,6 +12,7 @@ import pytest
 from schemesim.errors import InputError
 from schemesim.plant.layouts import Bay, feeder, generator, line, single_bus
 from schemesim.plant.model import Plant, PlantBuilder
+from schemesim.plant.net_data import Coupling, LineImpedance, SourceImpedance, TransformerImpedance
 from schemesim.scenario import Scenario, load_scenario
 from schemesim.scenario.equipment import load_equipment
 from schemesim.scenario.equipment_list import equipment_list
@@ -74,7 +75,7 @@ def frame(rows: list[dict[str, object]]) -> pd.DataFrame:
 def test_an_equipment_list_written_and_read_is_the_same_plant(name: str) -> None:
     plant = load_scenario(SCENARIOS[name]).plant
     listed = equipment_list(plant)
-    count = len(plant.sections) + len(plant.devices) + len(plant.vts) + len(plant.dispatches)
+    count = len(plant.sections) + len(plant.devices) + len(plant.vts) + len(plant.dispatches) + len(plant.couplings)
     loose = [s for s in plant.sources if not s.name.endswith(".unit")]
     assert len(listed) == count + len(loose)
     assert load_equipment(listed, length_unit=plant.length_unit) == plant
@@ -191,6 +192,63 @@ def test_columns_are_renamed_left_out_or_refused(two: Plant) -> None:
     assert any("column: got 'Art'" in f for f in found)
     assert any("got 'make'" in f for f in found)
     assert any("the column kind" in f for f in found)
+
+
+def impedances(**changes: object) -> list[dict[str, object]]:
+    """Two lines side by side, a transformer, a generator and an infeed, all with impedances."""
+    ohms = {"r_ohm": 2, "x_ohm": 10.5, "r0_ohm": 6, "x0_ohm": 30}
+    rows: list[dict[str, object]] = [
+        {"kind": "bus", "name": "B1", "kv": 132},
+        {"kind": "bus", "name": "B2", "kv": 132},
+        {"kind": "line", "name": "L1", "kv": 132, "length": 40, **ohms},
+        {"kind": "line", "name": "L2", "kv": 132, "length": 40, **ohms},
+        {"kind": "transformer", "name": "T1", "mva": 60, "winding_kv": "132 11", "r_pu": 0.003, "x_pu": "0.12",
+         "group": "YNd1", "earth_r_ohm": "5 0"},
+        {"kind": "generator", "name": "G1", "kv": 11, "x_ohm": 0.4, "r_ohm": 0, "r0_ohm": 0.0, "x0_ohm": 0.2},
+        {"kind": "source", "name": "N", "section": "B2", "r_ohm": 1, "x_ohm": 8, "r2_ohm": 1, "x2_ohm": 7},
+        {"kind": "coupling", "name": "L1 beside L2", "a": "L1", "b": "L2", "r0_ohm": 1, "x0_ohm": 12},
+        {"kind": "breaker", "name": "CB1", "a": "B1", "b": "L1", "b_at": 0},
+        {"kind": "breaker", "name": "CB2", "a": "B2", "b": "L1", "b_at": 1},
+        {"kind": "breaker", "name": "CB3", "a": "B1", "b": "L2", "b_at": 0},
+        {"kind": "breaker", "name": "CB4", "a": "B2", "b": "L2", "b_at": 1},
+        {"kind": "breaker", "name": "CBT", "a": "B1", "b": "T1", "b_at": 0},
+        {"kind": "breaker", "name": "CBG", "a": "G1", "b": "T1", "b_at": 1},
+    ]  # fmt: skip
+    for key, value in changes.items():
+        name, _, column = key.partition("_")
+        next(row for row in rows if row["name"] == name)[column] = value
+    return rows
+
+
+@pytest.mark.parametrize("way", WAYS)
+def test_impedances_go_there_and_back(tmp_path: Path, way: str) -> None:
+    plant = load_equipment(frame(impedances()))
+    assert plant.section["L1"].impedance == LineImpedance(r_ohm=2, x_ohm=10.5, r0_ohm=6, x0_ohm=30)
+    assert plant.section["T1"].impedance == TransformerImpedance(
+        mva=60, kv=(132, 11), r_pu=(0.003,), x_pu=(0.12,), group="YNd1", earth_r_ohm=(5, 0)
+    )
+    assert plant.source["G1.unit"].impedance == SourceImpedance(r_ohm=0, x_ohm=0.4, r0_ohm=0, x0_ohm=0.2)
+    assert plant.source["N"].impedance == SourceImpedance(r_ohm=1, x_ohm=8, r2_ohm=1, x2_ohm=7)
+    assert plant.couplings == (Coupling(a="L1", b="L2", r0_ohm=1, x0_ohm=12),)
+    assert load_equipment(WAYS[way](equipment_list(plant), tmp_path)) == plant
+
+
+@pytest.mark.parametrize(
+    ("cell", "value", "phrase"),
+    [
+        ("L1_x_ohm", None, "at row 2: x_ohm: got 'nothing', expected a value beside r_ohm, r0_ohm, x0_ohm"),
+        ("L1_r0_ohm", None, "at row 2: zero-sequence impedance: got 'one of two'"),
+        ("T1_x_pu", "0.1 0.2", "at row 4: x_pu: got (0.1, 0.2), expected 1 number"),
+        ("T1_group", "YNq1", "at row 4: group: got 'YNq1'"),
+        ("T1_winding_kv", "132 eleven", "at row 4: winding_kv: got 'eleven', expected a number"),
+        ("N_x_ohm", "inf", "at row 6: x_ohm: got 'inf', expected a finite number"),
+        ("L1 beside L2_b", "L3", "at row 7: b: got 'L3', expected the name of a section"),
+        ("B1_x_ohm", 5, "at row 0: x_ohm: got 5, expected an empty cell"),
+    ],
+)
+def test_an_impedance_that_cannot_be_is_named_by_its_row(cell: str, value: object, phrase: str) -> None:
+    found = mistakes(lambda: load_equipment(frame(impedances(**{cell: value}))))
+    assert any(f.startswith(phrase) for f in found), found
 
 
 def test_labels_that_a_cell_cannot_hold_are_not_written() -> None:
