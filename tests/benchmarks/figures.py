@@ -110,7 +110,9 @@ def tree_figures(name: str, epsilons: Sequence[str] = ("1e-4", "1e-6")) -> Itera
         yield f"tree_s_{epsilon}_{name}", spent
 
 
-def costs(name: str, epsilon: float = 1e-4, repeats: int = 5) -> list[Cost]:
+def costs(
+    name: str, epsilon: float = 1e-4, repeats: int = 5, copies: Sequence[int] | None = None
+) -> list[Cost]:
     """What the same location costs on grids of growing size, sizes taken in turn.
 
     Raises
@@ -118,7 +120,7 @@ def costs(name: str, epsilon: float = 1e-4, repeats: int = 5) -> list[Cost]:
     RuntimeError
         If it is not the same location: another case, other runs, other ends.
     """
-    grids = [joined(name, copies) for copies in COPIES[name]]
+    grids = [joined(name, n) for n in copies or COPIES[name]]
     first = case_of(grids[0], name)
     same = explore(first, epsilon=epsilon)
     spent: list[tuple[list[float], list[float], list[float]]] = [([], [], []) for _ in grids]
@@ -182,3 +184,11 @@ def table(name: str, found: Sequence[Cost]) -> str:
         for c in found
     ]
     return "\n".join(lines)
+
+
+def grid_figures(repeats: int = 3) -> Iterator[Figure]:
+    """Time per location of a station of the test system: in a grid of 242 buses over that in one of 26."""
+    small, large = costs("rts96", repeats=repeats, copies=(0, 9))
+    if (small.buses, large.buses) != (26, 242):
+        raise RuntimeError(f"grids of {small.buses} and {large.buses} buses, expected 26 and 242")
+    yield "grid", large.location_s / small.location_s
