@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence, Set
 from dataclasses import dataclass, field, replace
+from fractions import Fraction
 
 import pytest
 from hypothesis import given
@@ -261,3 +262,70 @@ def test_r10_speeds() -> None:
 @pytest.mark.parametrize("rate", [0, AT_ONCE, -speed_for(1_000_000)])
 def test_r10_an_element_below_pick_up_is_never_due(rate: int) -> None:
     assert Motion().turn(0, speed_for(250_000)).turn(100_000, rate).due() is None
+
+
+Step = tuple[int, int, str]
+"""How long (us), the time of the curve (us), and what happens: it travels, goes back, resets at once, stands still."""
+
+
+def by_fractions(steps: Sequence[Step], overtravel_us: int) -> Fraction | None:
+    """∫dt/t(I) in exact fractions: when it gets to 1, or None."""
+    now, travel = Fraction(0), Fraction(0)
+    last, running_on = Fraction(0), Fraction(0)
+    for lasts, time_us, what in steps:
+        end = now + lasts
+        if what == "travels":
+            last, running_on = Fraction(1, time_us), Fraction(overtravel_us)
+            if travel + lasts * last >= 1:
+                return now + (1 - travel) / last
+            travel, now = travel + lasts * last, end
+            continue
+        on = min(Fraction(lasts), running_on)
+        if last and travel + on * last >= 1:
+            return now + (1 - travel) / last
+        travel, running_on = travel + on * last, running_on - on
+        rest: Fraction = lasts - on
+        if rest > 0 or running_on == 0:
+            if what == "resets":
+                travel = Fraction(0)
+            elif what == "goes back":
+                travel = max(Fraction(0), travel - rest / time_us)
+        now = end
+    return None
+
+
+def by_motion(steps: Sequence[Step], overtravel_us: int) -> int | None:
+    """The same by the code of the engines."""
+    motion, now = Motion(), 0
+    for lasts, time_us, what in steps:
+        speed = {"travels": speed_for(time_us), "goes back": -speed_for(time_us), "resets": AT_ONCE, "stands": 0}[what]
+        if speed != motion.rate:
+            motion = motion.turn(now, speed, overtravel_us)
+        due = motion.due()
+        if due is not None and due <= now + lasts:
+            return due
+        now += lasts
+    return None
+
+
+@given(
+    st.lists(
+        st.tuples(
+            st.integers(1, 400_000),
+            st.integers(50_000, 900_000),
+            st.sampled_from(["travels", "travels", "goes back", "resets", "stands"]),
+        ),
+        min_size=1,
+        max_size=12,
+    ),
+    st.sampled_from([0, 0, 30_000, 200_000]),
+)
+def test_r10_the_integral_agrees_with_exact_fractions(steps: list[Step], overtravel_us: int) -> None:
+    """Within two microseconds, as each speed is rounded up once; a step that ends just then may hide it."""
+    exact, found = by_fractions(steps, overtravel_us), by_motion(steps, overtravel_us)
+    ends = [sum(s[0] for s in steps[: n + 1]) for n in range(len(steps))]
+    if exact is None or found is None:
+        alone = [Fraction(x) for x in (exact, found) if x is not None]
+        assert all(any(abs(x - end) <= 2 for end in ends) for x in alone)
+    elif not any(abs(exact - end) <= 2 or abs(found - end) <= 2 for end in ends):
+        assert abs(found - exact) <= 2
