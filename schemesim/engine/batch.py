@@ -1,6 +1,8 @@
-"""The batch engine: many runs of one case at once, in columns.
+"""The batch engine: many runs of one case in lockstep, each with its own clock.
 
-For now each row is a run of the event engine; the columns are those of the engine in the making.
+Two ways of doing the same. Where delays are fixed, rows walk through an automaton of states that were met
+before (:mod:`walk`). Where they are random, no two runs meet the same states, and every signal of 64 rows stands in
+one word (:mod:`packed`).
 """
 
 from __future__ import annotations
@@ -8,11 +10,14 @@ from __future__ import annotations
 import numpy as np
 
 from schemesim.engine.case import Case
-from schemesim.engine.event import DEFAULT_HORIZON_US, run_event
-from schemesim.engine.many import NEVER_US, Batch, Ending, ManyAnswers, ManyNominalTimes, ManyTimes
-from schemesim.engine.times import DelayTimes
-from schemesim.scheme.delays import Delay
-from schemesim.scheme.model import Probability
+from schemesim.engine.columns import Columns, gather
+from schemesim.engine.event import DEFAULT_HORIZON_US
+from schemesim.engine.many import Batch, ManyAnswers, ManyNominalTimes, ManyTimes
+from schemesim.engine.packed import Packed
+from schemesim.engine.walk import Walk
+
+ROWS = 16_384
+"""Rows walked together: their times stay near the processor."""
 
 
 def run_batch(
@@ -38,45 +43,26 @@ def run_batch(
     Returns
     -------
     Batch
-        Row i equals the run of the event engine with the answers and times of row i.
+        Row i equals the run of the event engine with the answers and times of row i: every
+        opening, its role and all times to the microsecond. Where delays are random and several trip
+        outputs energise a coil at one instant in one role, the one named is the first by name.
+
+    Raises
+    ------
+    RunError
+        If an instant does not settle.
     """
     many = times or ManyNominalTimes()
-    place = {case.names[b]: i for i, b in enumerate(case.breakers)}
-    watched = {case.names[g]: i for i, g in enumerate(case.observed)}
-    known: dict[Ending, int] = {}
-    ending = np.zeros(rows, dtype=np.int32)
-    t_clear = np.full(rows, NEVER_US, dtype=np.int64)
-    t_open = np.full((rows, len(place)), NEVER_US, dtype=np.int64)
-    t_trip = np.full((rows, len(place)), NEVER_US, dtype=np.int64)
-    t_operated = np.full((rows, len(watched)), NEVER_US, dtype=np.int64)
-    for row in range(rows):
-        one = np.array([row])
-        ran = run_event(case, _OneRow(answers, one), times=_OneRowTimes(many, one), horizon_us=horizon_us)
-        o = ran.outcome
-        for op in o.openings:
-            t_open[row, place[op.breaker]], t_trip[row, place[op.breaker]] = op.t_open_us, op.t_trip_us
-        for name, t in o.operated:
-            t_operated[row, watched[name]] = t
-        if o.t_clear_us is not None:
-            t_clear[row] = o.t_clear_us
-        tripped = sorted((place[op.breaker], op.role, op.via, op.interrupted) for op in o.openings)
-        operated = sorted(watched[name] for name, _ in o.operated)
-        end = Ending(o.status, tuple(tripped), tuple(operated), o.at_horizon, ran.final_mask)
-        ending[row] = known.setdefault(end, len(known))
-    return Batch(case, tuple(known), ending, t_clear, t_open, t_trip, t_operated)
-
-
-class _OneRow:
-    def __init__(self, many: ManyAnswers, row: np.ndarray[tuple[int], np.dtype[np.intp]]) -> None:
-        self.many, self.row = many, row
-
-    def answer(self, question: int, probability: Probability) -> bool:  # noqa: ARG002
-        return bool(self.many.answers(question, self.row)[0])
-
-
-class _OneRowTimes(DelayTimes):
-    def __init__(self, many: ManyTimes, row: np.ndarray[tuple[int], np.dtype[np.intp]]) -> None:
-        self.many, self.row = many, row
-
-    def of(self, name: str, delay: Delay) -> int:
-        return int(self.many.of(name, delay, self.row)[0])
+    packed = case.inverse or (case.random and not isinstance(many, ManyNominalTimes))
+    pieces: list[Columns] = []
+    for first in range(0, rows, ROWS):
+        part = np.arange(first, min(first + ROWS, rows))
+        if packed:
+            run = Packed(case.wiring, part, answers, many, horizon_us)
+            run.finish()
+            pieces.append(run.columns())
+        else:
+            walk = Walk(case, part, answers, many)
+            walk.finish(horizon_us)
+            pieces.append(walk.columns())
+    return gather(case, pieces)

@@ -11,7 +11,7 @@ from collections import deque
 from collections.abc import Mapping, Set
 from dataclasses import dataclass, field
 from functools import cached_property
-from typing import NamedTuple
+from typing import TYPE_CHECKING, NamedTuple
 
 import networkx as nx
 
@@ -39,6 +39,10 @@ from schemesim.plant.zones import Duty, duty
 from schemesim.scheme.curves import Curve
 from schemesim.scheme.delays import Delay
 from schemesim.scheme.model import Breaker, Contact, Gate, Sense
+
+if TYPE_CHECKING:
+    from schemesim.engine.automaton import Automaton
+    from schemesim.engine.wiring import Wiring
 
 
 @dataclass(frozen=True, slots=True)
@@ -139,6 +143,10 @@ class Case:
     def __repr__(self) -> str:
         return f"Case({self.event}: {len(self.names)} blocks, {len(self.breakers)} breakers that may open)"
 
+    def __getstate__(self) -> dict[str, object]:
+        """What goes to another process: not the states met so far, which are found again."""
+        return {k: v for k, v in self.__dict__.items() if k not in ("automaton", "wiring")}
+
     @property
     def questions(self) -> tuple[Question, ...]:
         """Questions of the program; answers use their indices."""
@@ -212,6 +220,20 @@ class Case:
         groups: nx.DiGraph[int] = nx.condensation(graph)
         members = {n: tuple(sorted(groups.nodes[n]["members"])) for n in groups}
         return tuple(members[n] for n in nx.lexicographical_topological_sort(groups, key=lambda n: members[n]))
+
+    @cached_property
+    def automaton(self) -> Automaton:
+        """The states of this case that the batch engine has met so far."""
+        from schemesim.engine.automaton import Automaton
+
+        return Automaton(self)
+
+    @cached_property
+    def wiring(self) -> Wiring:
+        """The case as the batch engine reads it."""
+        from schemesim.engine.wiring import wiring_of
+
+        return wiring_of(self)
 
     @property
     def topologies_met(self) -> int:

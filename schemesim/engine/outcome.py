@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from enum import StrEnum
 
 from schemesim.scheme.model import Role
@@ -78,6 +78,14 @@ class Outcome:
     openings: tuple[Opening, ...]
     operated: tuple[tuple[str, int], ...] = ()
     at_horizon: bool = False
+
+    def without_via(self) -> Outcome:
+        """The same without the names of the trip outputs.
+
+        Of several that energise a coil at one instant in one role the event engine names one it
+        asked, and trials with random delays the first by name; nothing else tells them apart.
+        """
+        return replace(self, openings=tuple(replace(o, via="") for o in self.openings))
 
     @property
     def tripped(self) -> frozenset[str]:

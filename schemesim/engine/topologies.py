@@ -1,0 +1,63 @@
+"""Topologies that rows of the packed engine have met, numbered; what each means is looked up in the case."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from schemesim.engine.case import Case
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+
+class Topologies:
+    """Number 0 is the plant before any opening.
+
+    Attributes
+    ----------
+    masks : list of int
+        Breakers of the case that are open.
+    holds : ndarray of bool, shape (room, sinks)
+        Which conditions hold; rows beyond those numbered are room to grow.
+    fed : ndarray of bool, shape (room,)
+    """
+
+    def __init__(self, case: Case, sinks: int) -> None:
+        self.case = case
+        self.masks: list[int] = []
+        self._number: dict[int, int] = {}
+        self._after: dict[tuple[int, int, bool], int] = {}
+        self.holds = np.zeros((8, sinks), dtype=np.bool_)
+        self.fed = np.zeros(8, dtype=np.bool_)
+        self.number(0)
+
+    def number(self, mask: int) -> int:
+        """The number of a topology."""
+        known = self._number.get(mask)
+        if known is None:
+            known = self._number[mask] = len(self.masks)
+            self.masks.append(mask)
+            if known >= len(self.fed):
+                self.holds = np.concatenate([self.holds, np.zeros_like(self.holds)])
+                self.fed = np.concatenate([self.fed, np.zeros_like(self.fed)])
+            found = self.case.topology(mask)
+            for s, truth in found.holds:
+                self.holds[known, s] = truth
+            self.fed[known] = found.fed
+        return known
+
+    def switched(self, before: NDArray[np.int32], place: int, opens: bool) -> NDArray[np.int32]:
+        """The topologies after a breaker has opened or closed."""
+        numbers, where = np.unique(before, return_inverse=True)
+        after = [self._switched(n, place, opens) for n in numbers.tolist()]
+        return np.array(after, dtype=np.int32)[where]
+
+    def _switched(self, before: int, place: int, opens: bool) -> int:
+        key = (before, place, opens)
+        known = self._after.get(key)
+        if known is None:
+            mask, bit = self.masks[before], 1 << place
+            known = self._after[key] = self.number(mask | bit if opens else mask & ~bit)
+        return known
