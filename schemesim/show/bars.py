@@ -12,6 +12,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
 ROW_IN = 0.24
+EXPLORED = "at least", "at most (not all explored)"
 
 
 def plot_bars(
@@ -69,7 +70,7 @@ def plot_bars(
 
 def plot_counts(
     counts: Mapping[int, tuple[float, float]], *, title: str = "", x: str = "", marked: int | None = None,
-    marked_text: str = "", ax: Axes | None = None,
+    marked_text: str = "", words: tuple[str, str] = EXPLORED, ax: Axes | None = None,
 ) -> Axes:  # fmt: skip
     """The probability of each whole number on a logarithmic axis, with its bracket.
 
@@ -79,6 +80,8 @@ def plot_counts(
     title, x : str
     marked : int or None
         A number pointed out by ``marked_text``.
+    words : (str, str)
+        What the bars up to the low and up to the high bound are called.
     ax : matplotlib Axes or None
     """
     ax = new_axes(ax, 2.6, bottom_in=0.95)
@@ -110,7 +113,7 @@ def plot_counts(
     if marked is not None:
         line = ax.axvline(marked, color=VERMILLION, linestyle="--", linewidth=1.2, zorder=1, label=marked_text)
         line.set_gid(f"marked: {marked}")
-    _explain(ax, any(high > low for low, high in counts.values()))
+    _explain(ax, any(high > low for low, high in counts.values()), words)
     return ax
 
 
@@ -119,15 +122,15 @@ def _two_lines(text: str) -> str:
     return text.replace("…", "…\n") if len(text) > 9 else text
 
 
-def _explain(ax: Axes, brackets: bool) -> None:
+def _explain(ax: Axes, brackets: bool, words: tuple[str, str] = EXPLORED) -> None:
     """What solid and hatched mean."""
     from matplotlib.patches import Patch  # heavy: only when a picture is asked for
 
     handles, _ = ax.get_legend_handles_labels()
     if brackets:
         handles = [
-            Patch(facecolor=BLUE, edgecolor=BLACK, label="at least"),
-            Patch(facecolor="white", edgecolor=BLUE, hatch="/////", label="at most (not all explored)"),
+            Patch(facecolor=BLUE, edgecolor=BLACK, label=words[0]),
+            Patch(facecolor="white", edgecolor=BLUE, hatch="/////", label=words[1]),
             *handles,
         ]
     if handles:

@@ -27,12 +27,15 @@ from schemesim.engine.case import Case
 from schemesim.engine.event import DEFAULT_HORIZON_US
 from schemesim.engine.many import NEVER_US, ManyDrawn, ManyDrawnTimes
 from schemesim.errors import ErrorList, reject
+from schemesim.show.tables import to_html
 from schemesim.study.intervals import clopper_pearson, wilson
 from schemesim.study.precision import FIRST_TRIALS, Precision
 from schemesim.study.tree import End, Happens
 from schemesim.study.trial_columns import Alike, Distinct, columns
 
 if TYPE_CHECKING:
+    import pandas as pd
+    from matplotlib.axes import Axes
     from numpy.typing import NDArray
 
 CHUNK = 10_000
@@ -203,6 +206,38 @@ class Counts:
         spread = math.fsum(times * (v - mean) ** 2 for v, times in pairs) / (n - 1)
         half = NormalDist().inv_cdf(0.5 + confidence / 2) * math.sqrt(spread / n)
         return Mean(mean, mean - half, mean + half, confidence)
+
+    def breakers(self, confidence: float = 0.95) -> dict[int, Share]:
+        """How often each number of breakers was tripped, with Wilson's interval, in ascending order."""
+        found: dict[int, int] = {}
+        for end, n in self._each():
+            few = len(end.outcome.tripped)
+            found[few] = found.get(few, 0) + n
+        return {few: self._share(found[few], confidence, "wilson") for few in sorted(found)}
+
+    def table(self, confidence: float = 0.95) -> pd.DataFrame:
+        """How often the fault was cleared and each number of breakers tripped, with Wilson's interval."""
+        import pandas as pd  # heavy: only when a table is asked for
+
+        shares = {"cleared": self.cleared(confidence=confidence)}
+        shares |= {f"{n} breakers tripped": share for n, share in self.breakers(confidence).items()}
+        rows = [
+            {"outcome": name, "trials": s.successes, "p_estimate": s.estimate, "p_low": s.low, "p_high": s.high}
+            for name, s in shares.items()
+        ]
+        return pd.DataFrame(rows)
+
+    def plot(self, confidence: float = 0.95, ax: Axes | None = None) -> Axes:
+        """The number of breakers tripped: the interval of each share as a hatched bar."""
+        from schemesim.show.bars import plot_counts  # heavy: only when a picture is asked for
+
+        counts = {n: (s.low, s.high) for n, s in self.breakers(confidence).items()}
+        words = f"below the {100 * confidence:g} % interval", f"{100 * confidence:g} % interval"
+        title = f"{self.event}: breakers tripped in {self.trials} trials"
+        return plot_counts(counts, title=title, x="breakers tripped", words=words, ax=ax)
+
+    def _repr_html_(self) -> str:
+        return to_html(self.table(), caption=f"{self.event}, seed {self.seed}: {self.trials} trials")
 
     def __repr__(self) -> str:
         kinds = len(self._known) + len({alike.ending for alike in self._columns})

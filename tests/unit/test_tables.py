@@ -27,7 +27,9 @@ from schemesim.study.comparison import compare
 from schemesim.study.frontier import Choice, Frontier
 from schemesim.study.importance_study import study_importance
 from schemesim.study.injection import inject
+from schemesim.study.intervals import wilson
 from schemesim.study.locations import LocationStudy
+from schemesim.study.montecarlo import simulate
 from schemesim.study.spread import breakers_over, cleared_over
 from schemesim.study.timer_study import study_timers
 
@@ -55,6 +57,8 @@ def result(name: str) -> Any:
             return studied()
         case "location":
             return studied().results[0]
+        case "trials":
+            return simulate(demo().case(Location("Dunmore.L4.c")), 400, seed=1)
         case "comparison":
             return compare({"full": studied(), "single": studied("single")})
         case "injection":
@@ -78,7 +82,7 @@ def result(name: str) -> Any:
 
 
 RESULTS = (
-    "timeline", "locations", "location", "comparison", "injection", "coverage", "trip matrix", "independence",
+    "timeline", "locations", "location", "trials", "comparison", "injection", "coverage", "trip matrix", "independence",
     "importance", "timers", "frontier",
 )  # fmt: skip
 each = pytest.mark.parametrize("name", RESULTS)
@@ -165,6 +169,7 @@ PICTURES: dict[str, Callable[[Axes | None], Axes]] = {
     "clearing": lambda ax: result("locations").results[0].plot_clearing(150, ax),
     "breakers of all": lambda ax: result("locations").plot_breakers(ax),
     "clearing of all": lambda ax: result("locations").plot_clearing(ax),
+    "trials": lambda ax: result("trials").plot(ax=ax),
     "importance": lambda ax: result("importance").plot(ax=ax),
     "timer": lambda ax: result("timers").results[0].plot(ax),
     "frontier": lambda ax: result("frontier").plot(ax),
@@ -221,3 +226,16 @@ def test_distributions_over_locations_are_the_weighted_mean() -> None:
     low = sum(weights[name] * float(r.clearing.cdf[-1][1].low) for name, r in mine.items()) / sum(weights.values())
     assert float(last.low) == pytest.approx(low, abs=1e-12)
     assert sum(float(b.low) for b in counts.values()) <= 1 <= sum(float(b.high) for b in counts.values())
+
+
+def test_trials_show_their_intervals() -> None:
+    found = result("trials")
+    shares = found.breakers()
+    assert sum(s.successes for s in shares.values()) == found.trials == 400
+    for n, s in shares.items():
+        assert (s.low, s.high) == wilson(found.count(lambda o, n=n: len(o.tripped) == n), 400)
+    ax = found.plot(0.9)
+    assert gids(ax, "bracket") == [str(n) for n in shares]
+    legend = ax.get_legend()
+    assert legend is not None
+    assert [t.get_text() for t in legend.get_texts()] == ["below the 90 % interval", "90 % interval"]
