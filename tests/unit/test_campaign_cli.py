@@ -202,12 +202,12 @@ def test_failure_sets_from_a_file(tmp_path: Path) -> None:
 @pytest.mark.skipif(os.name != "posix", reason="SIGINT")
 def test_an_interrupt_keeps_what_was_finished(tmp_path: Path) -> None:
     store = tmp_path / "s.db"
-    arguments = ("run", SMALL, "--store", store, "--location", "L1@0.2", "--trials", "5000", "--chunk", "10",
+    arguments = ("run", SMALL, "--store", store, "--location", "L1@0.2", "--trials", "20000", "--chunk", "10",
                  "--seed", "3", "--workers", "2")  # fmt: skip
     pipe = subprocess.PIPE
     with subprocess.Popen(command(*arguments), stdout=pipe, stderr=pipe, text=True, encoding="utf-8", env=ENV) as run:
         assert run.stderr is not None
-        assert run.stderr.readline() == "campaign: 0 of 5000 trials\n"
+        assert run.stderr.readline() == "campaign: 0 of 20000 trials\n"
         while not (store.exists() and _some_are_in(store)):
             assert run.poll() is None
         run.send_signal(signal.SIGINT)
@@ -216,8 +216,8 @@ def test_an_interrupt_keeps_what_was_finished(tmp_path: Path) -> None:
     assert "Traceback" not in err
     assert err.endswith("interrupted; what was finished is in the store, and the same call goes on from there\n")
     kept = load_campaign(str(store))
-    assert 0 < kept.trials < 5000
-    assert f"{kept.trials} of 5000 trials at 1 places; not complete" in out
+    assert 0 < kept.trials < 20_000
+    assert f"{kept.trials} of 20000 trials at 1 places; not complete" in out
     good(*arguments[:7], "40", *arguments[8:10], "--seed", "3", "--quiet")
     (place,) = load_campaign(str(store)).places
     assert place.ranges[0][0] == 0
