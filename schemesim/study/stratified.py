@@ -275,7 +275,7 @@ def simulate_stratified(
 
 def _split(rows: int, spread: NDArray[np.float64]) -> NDArray[np.int64]:
     """Rows in proportion to a spread, ``LEAST_ROWS`` at least."""
-    return np.maximum(np.rint(rows * spread / spread.sum()), LEAST_ROWS).astype(np.int64)
+    return np.asarray(np.maximum(np.rint(rows * spread / spread.sum()), LEAST_ROWS), dtype=np.int64)
 
 
 def _strata(tree: Tree, cylinders: Sequence[Cylinder], most: int) -> tuple[Stratum, ...]:

@@ -42,7 +42,7 @@ def test_trials_of_the_plain_script(benchmark: Benchmark) -> None:
 
 
 def test_draws_alone(benchmark: Benchmark) -> None:
-    """Some forty components, and a hundred random times: of senses, channels, lockouts and breakers."""
+    """Some two hundred numbers a trial: the state of each component it may ask about, and each random time."""
     assert 100 * TRIALS < benchmark(draws, TRIALS) < 300 * TRIALS
 
 

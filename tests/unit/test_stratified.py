@@ -166,7 +166,7 @@ def test_what_a_cylinder_leaves_open_is_drawn_given_what_it_fixes(case: Case) ->
     tree = explore(case, epsilon=0, max_runs=1)
     free = leaves_of(tree)[0]
     rows, n = np.arange(60_000), 20_000
-    fixed = ({late: True}, {stuck: False}, {})
+    fixed: tuple[dict[int, bool], ...] = ({late: True}, {stuck: False}, {})
     table = Table([type(free)(answers, 1.0) for answers in fixed])
     drawn = Drawn(case.program, table, np.repeat(np.arange(3), n), 9, 0)
     of_stuck, of_late, of_bf = (drawn.answers(q, rows).reshape(3, n) for q in (stuck, late, bf))
