@@ -210,8 +210,8 @@ class Counts:
     def breakers(self, confidence: float = 0.95) -> dict[int, Share]:
         """How often each number of breakers was tripped, with Wilson's interval, in ascending order."""
         found: dict[int, int] = {}
-        for end, n in self._each():
-            few = len(end.outcome.tripped)
+        known = ((len(end.outcome.tripped), n) for end, n in self._known)
+        for few, n in chain(known, ((len(alike.breakers), alike.rows.size) for alike in self._columns)):
             found[few] = found.get(few, 0) + n
         return {few: self._share(found[few], confidence, "wilson") for few in sorted(found)}
 

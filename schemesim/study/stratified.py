@@ -37,6 +37,7 @@ from schemesim.engine.draws import uniforms
 from schemesim.engine.event import DEFAULT_HORIZON_US
 from schemesim.engine.many import NEVER_US, Batch, ManyAnswers, ManyDrawnTimes, ManyTimes
 from schemesim.errors import ErrorList, reject
+from schemesim.show.tables import to_html
 from schemesim.study.cylinders import Cylinder, Drawn, Table, leaves_of, unopened
 from schemesim.study.intervals import stratified
 from schemesim.study.precision import FIRST_TRIALS, Precision
@@ -183,6 +184,9 @@ class StratifiedCounts:
         if event is not None:
             data["happened"] = self.hits(event)
         return pd.DataFrame(data).sort_values("weight", ascending=False, kind="stable", ignore_index=True)
+
+    def _repr_html_(self) -> str:
+        return to_html(self.table(), caption=repr(self))
 
     def __repr__(self) -> str:
         rows = f"{sum(self.rows)} rows in {len(self.strata)} strata"

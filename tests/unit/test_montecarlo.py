@@ -134,6 +134,13 @@ def test_cleared_is_the_share_of_its_event(delay: Uniform | None) -> None:
         counts.cleared(method="normal")  # type: ignore[arg-type]  # that is the test
 
 
+@pytest.mark.parametrize("delay", [None, Uniform(40_000, 60_000)], ids=["fixed", "random"])
+def test_breakers_are_counted_as_the_outcomes_tell(delay: Uniform | None) -> None:
+    counts = simulate(case_of(feeder_scheme(as_float, delay)), 300, SEED)
+    told = Counter(len(end.outcome.tripped) for end, n in counts.ends for _ in range(n))
+    assert {few: share.successes for few, share in counts.breakers().items()} == dict(told)
+
+
 def test_answers_drawn_in_a_row_are_those_drawn_one_by_one(case: Case) -> None:
     program = case.program
     for q, question in enumerate(program.questions):
