@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING
 
 from schemesim.engine.sensing import Event
 from schemesim.errors import ErrorList, SchemesimError, nearest, reject
+from schemesim.show.tables import to_html
 from schemesim.study.campaign import Campaign, whole
 from schemesim.study.campaign_counts import PlaceCounts
 from schemesim.study.campaign_crew import Crew
@@ -104,7 +105,7 @@ class CampaignResult:
         return "\n".join([*lines, f"  … and {len(self.places) - 12} more"] if len(self.places) > 12 else lines)
 
     def _repr_html_(self) -> str:
-        return str(self.table().to_html(index=False))
+        return to_html(self.table())
 
 
 def run_campaign(
