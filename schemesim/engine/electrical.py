@@ -33,6 +33,7 @@ from schemesim.scheme.phasor_elements import Element, Overcurrent
 from schemesim.scheme.phasor_quantities import Quantities
 from schemesim.scheme.settings import Setting, Settings
 from schemesim.scheme.settings_data import NetworkOf
+from schemesim.scheme.settings_rules import settings_for
 
 _NEAR = 0.3
 """A block may pick up in some topology if, whatever its direction, it measures this share of its setting at first."""
@@ -40,14 +41,18 @@ _NEAR = 0.3
 _LONGER = 2.5
 """... or if the fault lies within this multiple of its reach along the lines."""
 
+_KEPT = 8
+"""Programs whose settings by rule are kept."""
+
 
 class ElectricalSensing:
     """Sensing by computed currents and voltages.
 
     Parameters
     ----------
-    settings : Settings
-        An element for every sense block that measures.
+    settings : Settings or None
+        An element for every sense block that measures; None chooses them by rule for each program it
+        is asked about (:func:`schemesim.scheme.settings_rules.settings_for`), so that it serves every variant.
     fault : FaultType
         What kind of fault the locations of a study have.
     resistance_ohm : float
@@ -72,7 +77,7 @@ class ElectricalSensing:
 
     def __init__(
         self,
-        settings: Settings,
+        settings: Settings | None = None,
         *,
         fault: FaultType | str = FaultType.LLL,
         resistance_ohm: float = 0.0,
@@ -90,15 +95,35 @@ class ElectricalSensing:
         self.everywhere = everywhere
         self._network_of = network
         self._networks: dict[tuple[int, str | None], tuple[object, Network]] = {}
+        self._chosen: dict[int, tuple[Program, Settings]] = {}
         self._logical = LogicalSensing()
 
     def __repr__(self) -> str:
         kind = f"{self.fault}" + (f", {self.resistance_ohm:g} ohm" if self.resistance_ohm else "")
-        return f"ElectricalSensing({len(self.settings.items)} elements, {kind})"
+        elements = "settings by rule" if self.settings is None else f"{len(self.settings.items)} elements"
+        return f"ElectricalSensing({elements}, {kind})"
 
     def __getstate__(self) -> dict[str, object]:
-        """Without the equations: they are made anew where it is unpickled."""
-        return {**self.__dict__, "_networks": {}}
+        """Without the equations and what was chosen by rule: they are made anew where it is unpickled."""
+        return {**self.__dict__, "_networks": {}, "_chosen": {}}
+
+    def settings_of(self, program: Program) -> Settings:
+        """The settings a program is measured with; those chosen by rule are kept for the last few programs.
+
+        Raises
+        ------
+        InputError
+            If they are chosen by rule and the plant lacks an impedance or a VT.
+        """
+        if self.settings is not None:
+            return self.settings
+        found = self._chosen.get(id(program))
+        if found is None:
+            chosen = settings_for(program.plant, program.scheme, network=self._network_of)
+            while len(self._chosen) >= _KEPT:
+                del self._chosen[next(iter(self._chosen))]
+            found = self._chosen[id(program)] = program, chosen
+        return found[1]
 
     def network(self, program: Program, dispatch: str | None) -> Network:
         """The network equations of a program's plant, made once for each dispatch state."""
@@ -111,7 +136,8 @@ class ElectricalSensing:
         """See :class:`schemesim.engine.sensing.Sensing`."""
         if isinstance(event, NoFault):
             return self._logical.candidates(program, event, dispatch)
-        blocks, ways = _set_blocks(program, self.settings), _both_ways(program, self.settings)
+        settings = self.settings_of(program)
+        blocks, ways = _set_blocks(program, settings), _both_ways(program, settings)
         counted = [(i, b) for i, b, s in blocks if s.counts(event.section)]
         if self.everywhere:
             return [i for i, _ in counted]
@@ -130,7 +156,7 @@ class ElectricalSensing:
                 for t in c.terminals
                 for side in (program.plant.device[t.ct].a, program.plant.device[t.ct].b)
             )
-            missing = self.settings.of[b.name].missing
+            missing = settings.of[b.name].missing
             if within_reach or ways[i].multiple(quantities.without(missing)) >= _NEAR:
                 found.append(i)
         return found
@@ -164,11 +190,12 @@ class ElectricalSensing:
         """As ``bind``, for sense blocks: each is measured by its own setting."""
         if isinstance(event, NoFault):
             return self._logical.bind(program, event, dispatch, [b.condition for b in senses], openable)
-        _set_blocks(program, self.settings)
+        of = self.settings_of(program).of
+        _set_blocks(program, self.settings_of(program))
         errors = ErrorList()
         for b in senses:
-            if b.name not in self.settings.of and not isinstance(b.condition, Always | External | NoFaultTrip):
-                tip = nearest(b.name, self.settings.of)
+            if b.name not in of and not isinstance(b.condition, Always | External | NoFaultTrip):
+                tip = nearest(b.name, of)
                 errors.add("settings", b.name, "an element for every block that measures", tip=tip)
         errors.raise_if_any()
         return _Computed(self, program, event, dispatch, tuple(senses), tuple(openable))
@@ -196,7 +223,7 @@ class _Computed:
         self.openable = openable
         self.idle = _idle(program, event)
         self.faulted = sensing.network(program, dispatch).at(sensing._shunt(event))
-        of = sensing.settings.of
+        of = sensing.settings_of(program).of
         self.elements: tuple[Element | bool, ...] = tuple(
             of[b.name].element
             if b.name in of and of[b.name].counts(event.section)

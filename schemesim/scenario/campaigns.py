@@ -70,7 +70,7 @@ def campaign_scenario(
         failures=sets,
         limit_us={e: scenario.limit_us(e) for e in events if not _unknown(scenario, e)} or 0,
         observe=frozenset(observe),
-        sensing={name: scenario.sensing(name) for name in names},
+        sensing={name: scenario.sensing() for name in names},
         dispatch=scenario.study.dispatch,
         horizon_us=scenario.study.horizon_us,
     )
@@ -111,7 +111,7 @@ def campaign_in(store: str) -> tuple[Scenario, Campaign]:
         failures=tuple(map(tuple, about["failures"])),
         limit_us={e: scenario.limit_us(e) for e in events},
         observe=frozenset(about["observe"]),
-        sensing={name: scenario.sensing(name) for name in names},
+        sensing={name: scenario.sensing() for name in names},
         dispatch=about["dispatch"],
         horizon_us=about["horizon_us"],
     )

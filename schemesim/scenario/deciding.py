@@ -116,8 +116,9 @@ def explorer_of(
         rates, left = stand_in(scenario.plant, scenario.frequencies, locations)
     s = scenario.study
     explorer = Explorer(
-        rates, scenario.limit_us, dispatch=s.dispatch, epsilon=epsilon, no_fault=no_fault, horizon_us=s.horizon_us
-    )
+        rates, scenario.limit_us, sensing=scenario.sensing(), dispatch=s.dispatch, epsilon=epsilon,
+        no_fault=no_fault, horizon_us=s.horizon_us,
+    )  # fmt: skip
     return explorer, left
 
 

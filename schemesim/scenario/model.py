@@ -301,20 +301,13 @@ class Scenario:
         from schemesim.engine.case import bind
 
         state = dispatch if dispatch is not None else self.study.dispatch
-        return bind(self.program(policy, out_of_service), event, self.sensing(policy), dispatch=state)
+        return bind(self.program(policy, out_of_service), event, self.sensing(), dispatch=state)
 
-    def sensing(self, policy: str | None = None) -> Sensing:
-        """What decides which elements see a fault, for the scheme of a policy; made once.
-
-        Raises
-        ------
-        InputError
-            If electrical sensing is asked for and the plant lacks an impedance or a VT.
-        """
-        key = ("sensing", policy or self.policy)
-        if key not in self._made:
-            self._made[key] = sensing_of(self, policy)
-        return self._made[key]  # type: ignore[return-value]  # what was put there above
+    def sensing(self) -> Sensing:
+        """What decides which elements see a fault, the same object for every policy."""
+        if "sensing" not in self._made:
+            self._made["sensing"] = sensing_of(self)
+        return self._made["sensing"]  # type: ignore[return-value]  # what was put there above
 
     def listed(self, name: str) -> ListedRun:
         """A listed run by its name.

@@ -19,21 +19,13 @@ class SensingKind(StrEnum):
     """By computed currents and voltages, and settings chosen by rule."""
 
 
-def sensing_of(scenario: Scenario, policy: str | None = None) -> Sensing:
-    """A sensing for the scheme of a policy; settings are chosen for it by rule.
-
-    Raises
-    ------
-    InputError
-        If the plant lacks an impedance or a VT that electrical sensing needs.
-    """
+def sensing_of(scenario: Scenario) -> Sensing:
+    """A sensing for every scheme of a scenario; electrical settings are chosen for each by rule."""
     s = scenario.study
     if s.sensing is SensingKind.LOGICAL:
         from schemesim.engine.sensing import LogicalSensing
 
         return LogicalSensing()
     from schemesim.engine.electrical import ElectricalSensing
-    from schemesim.scheme.settings_rules import settings_for
 
-    settings = settings_for(scenario.plant, scenario.scheme(policy))
-    return ElectricalSensing(settings, fault=s.fault, resistance_ohm=s.fault_ohm)
+    return ElectricalSensing(fault=s.fault, resistance_ohm=s.fault_ohm)

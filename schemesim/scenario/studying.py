@@ -78,13 +78,13 @@ def study_scenario(
     try:
         for limit_us, group in sorted(by_limit.items()):
             mine = replace(options, limit_us=limit_us)
-            for result in iter_locations(program, scenario.sensing(policy), group, mine, executor=executor):
+            for result in iter_locations(program, scenario.sensing(), group, mine, executor=executor):
                 found[result.location] = result
                 if progress is not None:
                     progress(len(found), len(chosen))
         if no_fault:
             apart = study_no_fault(
-                program, scenario.sensing(policy), dispatch=s.dispatch, epsilon=options.epsilon, horizon_us=s.horizon_us
+                program, scenario.sensing(), dispatch=s.dispatch, epsilon=options.epsilon, horizon_us=s.horizon_us
             )
     except KeyboardInterrupt:
         complete = False

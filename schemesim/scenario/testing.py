@@ -75,7 +75,7 @@ def intervals_scenario(
     return study_test_intervals(
         scenario.program(policy),
         scenario.data,
-        scenario.sensing(policy),
+        scenario.sensing(),
         chosen,
         kind=ComponentKind(kind),
         pattern=pattern,
@@ -114,7 +114,7 @@ def misoperations_scenario(
     chosen = _chosen(scenario, locations)
     return study_misoperations(
         scenario.program(policy),
-        scenario.sensing(policy),
+        scenario.sensing(),
         chosen,
         frequencies=_rates(scenario, chosen),
         no_fault=no_fault,

@@ -64,7 +64,7 @@ def timer_scenario(
     chosen = _chosen(scenario, locations)
     return study_timers(
         scenario.program(policy),
-        scenario.sensing(policy),
+        scenario.sensing(),
         chosen,
         limit_us=scenario.limits.backup_us if limit_us is None else limit_us,
         zone_2_limit_us=scenario.limits.zone_2_us if zone_2_limit_us is None else zone_2_limit_us,
@@ -126,6 +126,7 @@ def dial_scenario(
         out_of_service=scenario.out_of_service,
         locations=chosen,
         frequencies=_rates(scenario, chosen),
+        sensing=scenario.sensing(),
         timed=timed,
         dispatch=scenario.study.dispatch,
         epsilon=epsilon,
@@ -158,7 +159,7 @@ def importance_scenario(
     chosen = _chosen(scenario, locations)
     return study_importance(
         scenario.program(policy),
-        scenario.sensing(policy),
+        scenario.sensing(),
         chosen,
         limit_us={at: scenario.limit_us(at) for at in chosen},
         event=event,

@@ -65,7 +65,7 @@ def register_scenario(
         monitored = [m for m in scenario.maintenance.monitored if any(m.of(c.name, c.kind) for c in parts)]
     return register(
         program,
-        scenario.sensing(policy),
+        scenario.sensing(),
         chosen,
         limit_us={at: scenario.limit_us(at) for at in chosen},
         monitored=monitored,
@@ -127,7 +127,7 @@ def outages_scenario(
     rates = {at: scenario.frequencies.get(at, 0.0) for at in chosen}
     return study_outages(
         program,
-        scenario.sensing(policy),
+        scenario.sensing(),
         chosen,
         limit_us={at: scenario.limit_us(at) for at in chosen},
         outages=outages,

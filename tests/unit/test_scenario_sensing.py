@@ -13,8 +13,11 @@ from schemesim.errors import InputError
 from schemesim.plant.model import Location
 from schemesim.plant.net_case import FaultType
 from schemesim.scenario import Scenario, scenario_from_text, scenario_text
+from schemesim.scenario.deciding import explorer_of
 from schemesim.scenario.sensed import SensingKind
 from schemesim.scenario.studying import study_scenario
+from schemesim.scenario.timers import dial_scenario
+from schemesim.scheme.phasor_distance import Distance
 
 TEXT = """
 schemesim: 1
@@ -58,7 +61,10 @@ def test_a_study_and_a_case_use_it(electrical: Scenario) -> None:
     assert by_graph == by_current
     assert through_ohms["p_by_main"].contains(by_graph["p_by_main"].low)
     assert through_ohms["p_cleared"].high < by_graph["p_cleared"].low
-    element = electrical.sensing().settings.of["Ash/G/timed 1 51"].element  # type: ignore[attr-defined]  # electrical
+    sensing = electrical.sensing()
+    assert isinstance(sensing, ElectricalSensing)
+    element = sensing.settings_of(electrical.program()).of["Ash/G/timed 1 51"].element
+    assert isinstance(element, Distance)
     assert element.reach_ohm == pytest.approx(0.04j)
     assert type(electrical.case(Location("F")).sensed) is not type(logical.case(Location("F")).sensed)
 
@@ -80,4 +86,23 @@ def test_mistakes_are_told_with_their_place() -> None:
 def test_a_plant_without_impedances_is_refused_when_it_is_asked() -> None:
     bare = scenario_from_text(TEXT.replace(", impedance_pu: 0.2", ""))
     with pytest.raises(InputError, match="impedance"):
-        bare.sensing()
+        bare.case(Location("F"))
+
+
+def test_settings_are_chosen_for_each_policy_and_each_variant() -> None:
+    """One sensing serves every scheme of a scenario: policies, edits, positions of a dial."""
+    more = "policies: {mine: {base: duplicate_relay}}\nfault_frequencies: {by_kind: {feeder: 0.1}}\n"
+    two = scenario_from_text(TEXT + more)
+    sensing = two.sensing()
+    assert isinstance(sensing, ElectricalSensing)
+    counts = {name: len(sensing.settings_of(two.program(name)).items) for name in ("mine", "single_set")}
+    assert counts["mine"] > counts["single_set"]
+    explorer, _ = explorer_of(two)
+    assert explorer.sensing is sensing
+    solid = TEXT.replace("fault_ohm: 0.5", "fault_ohm: 0")
+    by_current, by_graph = (
+        dial_scenario(scenario_from_text(text), "votes", ["1oo1", "1oo2"], locations=[Location("F")])
+        for text in (solid, solid.replace("electrical", "logical"))
+    )
+    assert by_current == by_graph
+    assert by_current.positions == ("1oo1", "1oo2")
