@@ -19,6 +19,9 @@ from schemesim.plant.net_equations import Equations
 from schemesim.plant.net_matrices import Complexes
 from schemesim.plant.net_station import Split
 
+MOST_TERMINALS = 400
+"""So many terminals are kept at hand; what is asked beyond them costs a solution of the whole network."""
+
 
 @dataclass(frozen=True)
 class FaultPort:
@@ -100,6 +103,12 @@ class Ports:
         self._grow([b for b in reached if b not in self.place])
         self._reduce()
 
+    def at_hand(self, bus: int) -> bool:
+        """Whether a bus is known; it is made so while there is room."""
+        if bus not in self.known and len(self.terminals) < MOST_TERMINALS:
+            self.extend((bus,))
+        return bus in self.known
+
     def _reduce(self) -> None:
         """What of the network the terminals at hand see."""
         starts, rows, values = self.matrix.terminals
@@ -122,6 +131,7 @@ class Ports:
                     self.offset[self.terminals[t]] += weight
         else:
             drawn[self.place[self.port.bus]] = 1.0
+        self.drawn, self.at_buses = drawn, at_buses
         self.by_moved = self.z @ at_buses
         self.by_drawn = self.z @ drawn
         self.reaction = own - at_buses.T @ self.by_moved
@@ -172,3 +182,24 @@ class Ports:
         """Voltage of a bus's main piece, for one ampere into the fault."""
         n = self.place[bus]
         return complex(-self.by_drawn[n] - self.by_moved[n, : len(response.moved)] @ response.moved)
+
+    def everywhere(self, response: Response) -> Complexes:
+        """Voltages of all buses' main pieces, for one ampere into the fault: one solution of the whole network."""
+        pushed: Complexes = np.zeros(self.equations.buses, dtype=complex)
+        old = len(response.moved)
+        pushed[list(self.place)] = self.drawn + self.at_buses[:, :old] @ response.moved
+        return -self.matrix.factors.solve(pushed)
+
+    def currents_from(self, bus: int, response: Response, voltages: Complexes) -> Complexes:
+        """As :meth:`currents`, from the voltages of all buses."""
+        starts, rows, values = self.matrix.terminals
+        offset, found = dict(self.port.terminals), []
+        for t in self.equations.bus(bus).terminals:
+            part = slice(starts[t], starts[t + 1])
+            current = complex(values[part] @ voltages[self.equations.bus_at[rows[part]]]) + offset.get(t, 0.0)
+            for row, y in zip(rows[part].tolist(), values[part].tolist(), strict=True):
+                n = self.terminals.get(row, len(response.moved))
+                if n < len(response.moved):
+                    current += y * complex(response.moved[n])
+            found.append(current)
+        return np.array(found, dtype=complex)

@@ -14,7 +14,7 @@ from schemesim.plant.model import Device, DeviceKind
 from schemesim.plant.net_case import FaultType, Phasors
 from schemesim.plant.net_elements import Elements, place_of
 from schemesim.plant.net_equations import POSITIVE, ZERO, Equations
-from schemesim.plant.net_matrices import BASE_MVA
+from schemesim.plant.net_matrices import BASE_MVA, Complexes
 from schemesim.plant.net_ports import FaultPort, Ports, Response
 from schemesim.plant.net_station import Split
 from schemesim.plant.net_topology import State
@@ -69,6 +69,7 @@ class PlantSolution:
         self._driven: Mapping[int, complex] = driven.currents if driven is not None else {}
         self._flows: dict[int, list[Phasors]] = {}
         self._out: dict[int, list[Phasors]] = {}
+        self._all: dict[int, Complexes] = {}
 
     def __repr__(self) -> str:
         return f"PlantSolution({'fed' if self.fed else 'not fed'}, opened: {', '.join(sorted(self.opened)) or 'none'})"
@@ -130,9 +131,8 @@ class PlantSolution:
         u = [0j, complex(self._factor), 0j]
         for s, i in self._driven.items():
             if s in self._responses and self._states[min(s, 1)].earthed(bus, piece):
-                ports = self._ports(s, bus)
                 own = self._responses[s].above.get((bus, piece), 0j)
-                u[s] += i * (ports.voltage(bus, self._responses[s]) + own)
+                u[s] += i * (self._voltage(s, bus) + own)
         if ZERO in self._states and not self._states[ZERO].earthed(bus, piece):
             u[0] = self._displaced(bus, piece)
         return self._turned(bus, (u[0], u[1], u[2]), current=False)
@@ -148,17 +148,35 @@ class PlantSolution:
             return complex(-self._factor)
         return self._factor - self._driven[POSITIVE] * self._responses[POSITIVE].z
 
-    def _ports(self, sequence: int, bus: int) -> Ports:
+    def _voltage(self, sequence: int, bus: int) -> complex:
+        """Voltage of a bus for one ampere into the fault."""
         assert self._by is not None  # what has currents has a fault
         ports = self._by.ports[sequence]
-        ports.extend((bus,))
-        return ports
+        if ports.at_hand(bus):
+            return ports.voltage(bus, self._responses[sequence])
+        return complex(self._everywhere(sequence)[bus])
+
+    def _currents(self, sequence: int, bus: int) -> Complexes:
+        """Currents into the terminals of a bus for one ampere into the fault."""
+        assert self._by is not None  # what has currents has a fault
+        ports = self._by.ports[sequence]
+        if ports.at_hand(bus):
+            return ports.currents(bus, self._responses[sequence])
+        return ports.currents_from(bus, self._responses[sequence], self._everywhere(sequence))
+
+    def _everywhere(self, sequence: int) -> Complexes:
+        assert self._by is not None  # what has currents has a fault
+        ports = self._by.ports[sequence]
+        key = id(ports)  # one and the same for positive and negative where these are alike
+        if key not in self._all:
+            self._all[key] = ports.everywhere(self._responses[sequence])
+        return self._all[key]
 
     def _leaving(self, bus: int) -> list[Phasors]:
         """Current out of a bus into each of its terminals, in per unit."""
         if bus not in self._out:
             by = {
-                s: (i * self._ports(s, bus).currents(bus, self._responses[s])).tolist()
+                s: (i * self._currents(s, bus)).tolist()
                 for s, i in self._driven.items()
                 if s in self._responses
             }

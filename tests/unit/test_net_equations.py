@@ -150,6 +150,20 @@ def test_the_voltage_at_the_fault_is_what_its_type_says(seed: int) -> None:
         assert u[1] == pytest.approx(r * (i[1] + i[2]), abs=near)
 
 
+def test_what_is_not_at_hand_is_the_same(monkeypatch: pytest.MonkeyPatch) -> None:
+    for seed in range(12):
+        rng = random.Random(seed)
+        plant = random_plant(rng)
+        fault, names = random_fault(rng, plant), random_openings(rng, plant)
+        near = network_of(plant).at(fault).solve(names)
+        expected, volts = everything(plant, near), voltages(plant, near)
+        with monkeypatch.context() as changed:
+            changed.setattr("schemesim.plant.net_ports.MOST_TERMINALS", 0)
+            far = network_of(plant).at(fault).solve(names)
+            assert everything(plant, far) == pytest.approx(expected, abs=1e-9 * max(abs(expected).max(), 1.0))
+            assert voltages(plant, far) == pytest.approx(volts, abs=1e-9 * 110e3)
+
+
 def radial(z0: bool = True) -> Plant:
     """110 kV: a source of 8 ohm at Alder, a line of 12 ohm, a transformer YNd1 to 33 kV at Birch."""
     b = PlantBuilder()
