@@ -62,7 +62,8 @@ importance
     Birnbaum importance that any of these can have.
 
 campaign
-    ``action`` (run, show, replay). Of run and show: ``complete``, ``trials`` counted and ``wanted``, ``confidence`` and kind of
+    ``action`` (run, show, replay). Of run and show: ``complete``, ``trials`` counted and ``wanted``, ``confidence`` and
+    kind of
     ``interval``, ``rows`` (one for each place: ``p_…`` with ``_low`` and ``_high``, an interval and no bracket);
     with ``--location`` its ``endings``. Of replay: ``trial``, ``variant``, ``event``, ``failures``, ``counted``
     (whether the trial is in the store), then as in show.

@@ -306,7 +306,8 @@ class Scenario:
     def sensing(self) -> Sensing:
         """What decides which elements see a fault, the same object for every policy."""
         if "sensing" not in self._made:
-            self._made["sensing"] = sensing_of(self)
+            s = self.study
+            self._made["sensing"] = sensing_of(s.sensing, s.fault, s.fault_ohm)
         return self._made["sensing"]  # type: ignore[return-value]  # what was put there above
 
     def listed(self, name: str) -> ListedRun:

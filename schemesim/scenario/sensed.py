@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
     from schemesim.engine.sensing import Sensing
-    from schemesim.scenario.model import Scenario
+    from schemesim.plant.net_case import FaultType
 
 
 class SensingKind(StrEnum):
@@ -19,13 +19,12 @@ class SensingKind(StrEnum):
     """By computed currents and voltages, and settings chosen by rule."""
 
 
-def sensing_of(scenario: Scenario) -> Sensing:
+def sensing_of(kind: SensingKind, fault: FaultType, resistance_ohm: float) -> Sensing:
     """A sensing for every scheme of a scenario; electrical settings are chosen for each by rule."""
-    s = scenario.study
-    if s.sensing is SensingKind.LOGICAL:
+    if kind is SensingKind.LOGICAL:
         from schemesim.engine.sensing import LogicalSensing
 
         return LogicalSensing()
     from schemesim.engine.electrical import ElectricalSensing
 
-    return ElectricalSensing(fault=s.fault, resistance_ohm=s.fault_ohm)
+    return ElectricalSensing(fault=fault, resistance_ohm=resistance_ohm)
