@@ -211,7 +211,7 @@ def _put(
             raise reject(what, wanted, f"a {what} that was counted", tip=nearest(wanted, known))
     chosen = [p for p in places if one_variant in (None, p.variant) and one_event in (None, p.event)]
     rows = [p.row(confidence, method) for p in chosen]
-    watched = any(r["dependability"] is not None or r["security"] is not None for r in rows)
+    watched = any(r[f"{s}_estimate"] is not None for r in rows for s in ("dependability", "security"))
     shares = ["p_cleared", "p_within_limit", "p_by_main", "p_selective"]
     shares += ["dependability", "security"] if watched else []
     shown = [
@@ -276,10 +276,10 @@ def _interval(row: Mapping[str, object], name: str) -> str | None:
 
     Examples
     --------
-    >>> _interval({"p": 0.5, "p_low": 0.25, "p_high": 0.75}, "p")
+    >>> _interval({"p_estimate": 0.5, "p_low": 0.25, "p_high": 0.75}, "p")
     '0.5 (0.25…0.75)'
     """
-    value, low, high = (cast("float | None", row[key]) for key in (name, f"{name}_low", f"{name}_high"))
+    value, low, high = (cast("float | None", row[key]) for key in (f"{name}_estimate", f"{name}_low", f"{name}_high"))
     if value is None or low is None or high is None or value != value:
         return None
     return f"{value:.5g} ({low:.5g}…{high:.5g})"

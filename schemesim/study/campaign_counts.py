@@ -9,13 +9,19 @@ import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from statistics import NormalDist
+from typing import TYPE_CHECKING
 
 from schemesim.engine.outcome import Status
 from schemesim.errors import reject
 from schemesim.scheme.model import Role
+from schemesim.show.tables import to_html
 from schemesim.study.campaign_tallies import BIN_US, CampaignEnding, PlaceFacts, Tally, joined_ranges, merged
 from schemesim.study.intervals import clopper_pearson, wilson
 from schemesim.study.montecarlo import Mean, Method, Share
+
+if TYPE_CHECKING:
+    import pandas as pd
+    from matplotlib.axes import Axes
 
 Happened = Callable[[CampaignEnding, int | None], bool]
 """Something that happens, or not, in an ending with its clearing time in microseconds (None: not cleared)."""
@@ -190,7 +196,7 @@ class PlaceCounts:
         }
         for name, found in (*shares.items(), *means.items()):
             ends = (None, None, None) if found is None else (found.estimate, found.low, found.high)
-            row[name], row[f"{name}_low"], row[f"{name}_high"] = ends
+            row[f"{name}_estimate"], row[f"{name}_low"], row[f"{name}_high"] = ends
         for name, share in (("t_clear_ms_median", 0.5), ("t_clear_ms_p95", 0.95)):
             us = self.quantile_us(share)
             row[name] = None if us is None else us / 1000
@@ -200,6 +206,39 @@ class PlaceCounts:
     def _in_time(self, confidence: float, method: Method) -> Share | None:
         rounded = self.facts.random and self.limit_us % BIN_US
         return None if rounded else self.p_within_limit(confidence, method)
+
+    def table(self, confidence: float = 0.95, method: Method = "wilson") -> pd.DataFrame:
+        """How often the fault was cleared, in time, selectively, and each number of breakers tripped."""
+        import pandas as pd  # heavy: only when a table is asked for
+
+        shares: dict[str, Share | None] = {
+            "cleared": self.p_cleared(confidence, method),
+            "cleared within the limit": self._in_time(confidence, method),
+            "only intended breakers tripped": self.p_selective(confidence, method),
+            "a watched output that should operate did": self.dependability(confidence, method),
+            "no watched output operated that should not": self.security(confidence, method),
+        }
+        shares |= {f"{n} breakers tripped": s for n, s in self.breakers(confidence, method).items()}
+        return pd.DataFrame(
+            [
+                {"outcome": name, "trials": s.successes, "p_estimate": s.estimate, "p_low": s.low, "p_high": s.high}
+                for name, s in shares.items()
+                if s is not None
+            ]
+        )
+
+    def plot(self, confidence: float = 0.95, ax: Axes | None = None) -> Axes:
+        """The number of breakers tripped: the interval of each share as a hatched bar."""
+        from schemesim.show.bars import plot_counts  # heavy: only when a picture is asked for
+
+        counts = {n: (s.low, s.high) for n, s in self.breakers(confidence).items()}
+        words = f"below the {100 * confidence:g} % interval", f"{100 * confidence:g} % interval"
+        title = f"{self.event}, {self.variant}: breakers tripped in {self.trials} trials"
+        return plot_counts(counts, title=title, x="breakers tripped", words=words, ax=ax)
+
+    def _repr_html_(self) -> str:
+        told = f"{self.event}, {self.variant}: {self.trials} trials; 95 % intervals"
+        return to_html(self.table(), caption=told)
 
     def __repr__(self) -> str:
         return f"PlaceCounts({self.event}, {self.variant}: {self.trials} trials, {len(self.tallies)} kinds of ending)"

@@ -90,7 +90,7 @@ class CampaignResult:
 
         return pd.DataFrame(
             [
-                {"variant": p.variant, "event": p.event, "breakers": k, "trials": s.successes, "p": s.estimate,
+                {"variant": p.variant, "event": p.event, "breakers": k, "trials": s.successes, "p_estimate": s.estimate,
                  "p_low": s.low, "p_high": s.high}
                 for p in self.places
                 for k, s in p.breakers(confidence, method).items()
@@ -105,7 +105,8 @@ class CampaignResult:
         return "\n".join([*lines, f"  … and {len(self.places) - 12} more"] if len(self.places) > 12 else lines)
 
     def _repr_html_(self) -> str:
-        return to_html(self.table())
+        told = f"{self.trials} trials at {len(self.places)} places; 95 % intervals of each place alone"
+        return to_html(self.table(), caption=told)
 
 
 def run_campaign(

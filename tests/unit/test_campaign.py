@@ -14,6 +14,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+from matplotlib.figure import Figure
 
 from schemesim.engine.answers import FixedAnswers
 from schemesim.engine.case import bind
@@ -32,7 +33,20 @@ from schemesim.study.campaign_work import Chunk, Missing, run_work
 from schemesim.study.dependability import study_dependability
 from schemesim.study.injection import inject
 from schemesim.study.store import Store
-from tests.unit.campaign_cases import F1, F2, MAIN, OPENING, SEED, as_counts, electrical, outcomes, program, roles, small, variants
+from tests.unit.campaign_cases import (
+    F1,
+    F2,
+    MAIN,
+    OPENING,
+    SEED,
+    as_counts,
+    electrical,
+    outcomes,
+    program,
+    roles,
+    small,
+    variants,
+)
 
 
 @pytest.fixture
@@ -120,7 +134,7 @@ def test_dependability_and_security_of_outputs_watched(path: str) -> None:
     assert outside.dependability() is None
     assert (s := outside.security()) is not None
     assert s.successes == 1500  # a zone differential sees nothing there
-    assert found.table().loc[0, "dependability"] == share.estimate
+    assert found.table().loc[0, "dependability_estimate"] == share.estimate
 
 
 def test_trips_with_no_fault_are_events_too(path: str) -> None:
@@ -437,4 +451,9 @@ def test_results_show_themselves(path: str, plain: Any) -> None:
         result.where("as it was", "F1")
     with pytest.raises(InputError, match=r"(?s)variant.*location"):
         small().number("other", "F9")
+    assert "within the limit" in plain[0]._repr_html_()
+    shown = plain[0].table(0.9, "clopper_pearson")
+    assert shown["trials"].tolist()[3:] == [s.successes for s in plain[0].breakers().values()]
+    drawn = plain[0].plot(ax=Figure().add_subplot())
+    assert drawn.get_title(loc="left") == "F1, as it is: breakers tripped in 120 trials"
     assert plain[0].p_by_role(Role.MAIN).successes > 100

@@ -108,8 +108,8 @@ def test_show(store: Path, tmp_path: Path) -> None:
     wide = json.loads(good("show", store, "--json", "--interval", "clopper_pearson", "--confidence", "0.9"))
     for row, other in zip(data["rows"], wide["rows"], strict=True):
         assert row["trials"] == 40
-        assert other["p_cleared_low"] < row["p_cleared_low"] <= row["p_cleared"] <= row["p_cleared_high"]
-        assert row["dependability"] is not None or row["security"] is not None
+        assert other["p_cleared_low"] < row["p_cleared_low"] <= row["p_cleared_estimate"] <= row["p_cleared_high"]
+        assert row["dependability_estimate"] is not None or row["security_estimate"] is not None
     with table.open(encoding="utf-8") as stream:
         assert [r["event"] for r in csv.DictReader(stream)] == [r["event"] for r in data["rows"]]
     one = json.loads(good("show", store, "--location", "L1@0.20", "--variant", "strong", "--json"))
