@@ -64,7 +64,7 @@ importance
 campaign
     ``action`` (run, show, replay). Of run and show: ``complete``, ``trials`` counted and ``wanted``, ``confidence`` and
     kind of
-    ``interval``, ``rows`` (one for each place: ``…_estimate``, and ``_low`` and ``_high`` of an interval, which is no bracket);
+    ``interval``, ``rows`` (one for each place: ``…_estimate``, and ``_low`` and ``_high`` of an interval, no bracket);
     with ``--location`` its ``endings``. Of replay: ``trial``, ``variant``, ``event``, ``failures``, ``counted``
     (whether the trial is in the store), then as in show.
 
