@@ -17,7 +17,7 @@ from tests.benchmarks import plain_simpy
 from tests.benchmarks.plain_simpy import Trial, failure_data, run
 from tests.benchmarks.reference import BREAKERS, reference_case
 
-TRIALS = 3_000
+TRIALS = 2_000
 CONFIDENCE = 0.999
 """Of all comparisons of odds together."""
 
