@@ -11,7 +11,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
 from schemesim.errors import ErrorList
-from schemesim.plant.model import Plant, Section, SectionKind
+from schemesim.plant.model import Plant, Section
 from schemesim.plant.net_data import LineImpedance, TransformerImpedance
 from schemesim.plant.terminals import ProtectedObject, Terminal
 from schemesim.scheme.conditions import Current, Direction, InZone, OutOfZone, Reach, Undervoltage
@@ -142,7 +142,7 @@ class _Chooser:
                 return self._zone(block.name, sections, cts)
             case OutOfZone(sections=sections, ct=ct):
                 pick_up, why = self._differential_pick_up((self._terminal(ct),))
-                element = self._overcurrent(self._terminal(ct), pick_up)
+                element = self._overcurrent((self._terminal(ct),), pick_up)
                 return Setting(block.name, element, never=sections, choices=(Choice("pick_up_a", pick_up, why),))
             case Reach() as reach:
                 return self._reach(block.name, reach)
@@ -155,8 +155,8 @@ class _Chooser:
         device = self.data.plant.device.get(name)
         return Terminal(name, device.b if device is not None else self.data.plant.source[name].section)
 
-    def _overcurrent(self, terminal: Terminal, pick_up_a: float) -> Overcurrent:
-        return Overcurrent(terminals=(terminal,), pick_up_a=pick_up_a, drop_out=self.rules.drop_out)
+    def _overcurrent(self, terminals: tuple[Terminal, ...], pick_up_a: float) -> Overcurrent:
+        return Overcurrent(terminals=terminals, pick_up_a=pick_up_a, drop_out=self.rules.drop_out)
 
     # --- current ----------------------------------------------------------------------------
 
@@ -172,7 +172,7 @@ class _Chooser:
             if least is not None and pick_up > self.rules.under_fault * least[0]:
                 pick_up = self.rules.under_fault * least[0]
                 why = f"{self.rules.under_fault:g} of the smallest fault current, {least[0]:.0f} A at {least[1]}"
-            elements.append(self._overcurrent(self._terminal(name), pick_up))
+            elements.append(self._overcurrent((self._terminal(name),), pick_up))
             choices.append(Choice("pick_up_a", pick_up, why))
         element = elements[0] if len(elements) == 1 else Either(tuple(elements))
         return Setting(block, element, choices=tuple(choices))
@@ -199,22 +199,19 @@ class _Chooser:
             whole = self._unbalanced(block, sections)
             if whole is not None:
                 return whole
-        terminals = tuple(self._terminal(ct) for ct in cts)
-        if o is not None and (" sees " in block or self.data.plant.section[o.element].kind is not SectionKind.FEEDER):
-            mine = {t.ct: t for t in o.terminals}
-            if len(cts) == 1 and " sees " in block:
-                return self._differential(block, o, cts[0])
-            terminals = tuple(mine.get(t.ct, t) for t in terminals)
-        if o is not None:
-            pick_up, why = self._between(o.element, terminals)
-            elements: list[Element] = [self._overcurrent(t, pick_up) for t in terminals]
-            only: frozenset[str] | None = sections
-        else:
+        if o is None:
+            terminals = tuple(self._terminal(ct) for ct in cts)
             pick_up, why = self._differential_pick_up(terminals)
-            elements = [self._overcurrent(t, pick_up) for t in terminals]
-            only = sections
-        element = elements[0] if len(elements) == 1 else Either(tuple(elements))
-        return Setting(block, element, only, choices=(Choice("pick_up_a", pick_up, why),))
+            elements = tuple(self._overcurrent((t,), pick_up) for t in terminals)
+            element = elements[0] if len(elements) == 1 else Either(elements)
+            return Setting(block, element, sections, choices=(Choice("pick_up_a", pick_up, why),))
+        if len(cts) == 1 and " sees " in block:
+            return self._differential(block, o, cts[0])
+        mine = {t.ct: t for t in o.terminals}
+        terminals = tuple(mine.get(ct) or self._terminal(ct) for ct in cts)
+        pick_up, why = self._between(o.element, terminals)
+        overcurrent = self._overcurrent(terminals, pick_up)
+        return Setting(block, overcurrent, sections, choices=(Choice("pick_up_a", pick_up, why),))
 
     def _unbalanced(self, block: str, nearby: frozenset[str]) -> Setting | None:
         """A differential without the core of one CT, as the scheme asks of it for faults near by."""

@@ -210,7 +210,10 @@ def audit_elements(
         out = ["", *(name for name in away if name in running and len(running) > 1)]
         for place in places:
             single = _meant(program, place, dispatch, chosen)
-            said = {name: [single[b] for b in group if b in single] for name, group in groups.items()}
+            said = {
+                name: [single[b] for b in group if b in single and settings.of[b].counts(place.section)]
+                for name, group in groups.items()
+            }
             meant = {name: any(each) for name, each in said.items() if each}
             for kind in kinds:
                 faulted = grid.at(ShuntFault(place, kind, resistance_ohm))

@@ -8,15 +8,18 @@ from dataclasses import replace
 import pytest
 
 from schemesim.errors import InputError
-from schemesim.plant.layouts import Bay, generator, line, single_bus, transformer
-from schemesim.plant.model import Dispatch, PlantBuilder
+from schemesim.plant.layouts import Bay, breaker_and_a_half, feeder, generator, line, single_bus, transformer
+from schemesim.plant.model import Dispatch, Location, PlantBuilder
+from schemesim.plant.net_case import ShuntFault
 from schemesim.plant.net_data import TransformerImpedance
+from schemesim.plant.net_faults import network_of
 from schemesim.plant.terminals import Terminal
 from schemesim.scheme.conditions import OutOfZone, Undervoltage
 from schemesim.scheme.dress import dress
 from schemesim.scheme.model import Scheme, Sense
 from schemesim.scheme.phasor_distance import Distance, Shape
 from schemesim.scheme.phasor_elements import Biased, Overcurrent, Voltage
+from schemesim.scheme.phasor_quantities import Quantities
 from schemesim.scheme.policy import LocalBackup, duplicate_chain, single_set
 from schemesim.scheme.settings import Choice, Setting, Settings
 from schemesim.scheme.settings_rules import SettingRules, settings_for
@@ -195,3 +198,26 @@ def test_a_transformer_backup_looks_through_it() -> None:
 def test_settings_stand_by_the_names_of_their_blocks() -> None:
     element = Overcurrent(terminals=(Terminal("CT", "L"),), pick_up_a=1.0)
     assert [s.block for s in Settings((Setting("b", element), Setting("a", element))).items] == ["a", "b"]
+
+
+def test_a_feeder_between_two_breakers_measures_the_sum_of_its_cts() -> None:
+    """Breaker and a half: a fault on bus 1 draws current through both CTs past the feeder; one on it, into both."""
+    b = PlantBuilder()
+    for unit in ("G1", "G2"):
+        generator(b, unit, station="Alder")
+    feeder(b, "F1", station="Alder", load_mw=30.0)
+    breaker_and_a_half(b, "Alder", [Bay("F1", "F1"), Bay("G1", "G1"), Bay("G2", "G2")])
+    plant = with_impedances(b.build())
+    element = settings_for(plant, dress(plant, single_set())).of["Alder/F1/1 50"].element
+    assert isinstance(element, Overcurrent)
+    assert len(element.terminals) == 2
+    network = network_of(plant)
+    seen = {}
+    for place in ("Alder.B1", "F1"):
+        solved = network.at(ShuntFault(Location(place))).solve(frozenset())
+        q = Quantities(plant, solved, network.prefault())
+        single = max(replace(element, terminals=(t,)).multiple(q) for t in element.terminals)
+        seen[place] = single, element.multiple(q)
+    assert seen["Alder.B1"][0] > 1
+    assert seen["Alder.B1"][1] == pytest.approx(0.0, abs=1e-6)
+    assert seen["F1"][1] >= seen["F1"][0] > 1
