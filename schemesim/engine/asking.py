@@ -2,17 +2,34 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from typing import Protocol
 
 from schemesim.engine.program import Kind
 from schemesim.engine.values import FALSE, OPEN, TRUE, UNKNOWN
-from schemesim.engine.wiring import NO_ROLE
-
-if TYPE_CHECKING:
-    from schemesim.engine.moment import Moment
+from schemesim.engine.wiring import NO_ROLE, Wiring
 
 
-def next_gate(m: Moment) -> int:
+class Signals(Protocol):
+    """What the questions are asked of: a moment."""
+
+    w: Wiring
+    value: bytearray
+    role: bytearray
+    live: int
+    opens: set[int]
+    touched: set[int]
+
+    def coils(self, b: int) -> list[int]:
+        """Signals that energise a coil of a breaker."""
+
+    def read_by(self, b: int) -> list[int]:
+        """The inputs a sink depends on now."""
+
+    def is_live(self, b: int) -> bool:
+        """Whether a sink may still influence something."""
+
+
+def next_gate(m: Signals) -> int:
     """The gate whose question comes next: the first in order that a live sink waits for, or -1."""
     w, live = m.w, m.live
     waiting = [g for g in m.opens if live & w.reach_mask[g]]
@@ -22,7 +39,7 @@ def next_gate(m: Moment) -> int:
     return -1
 
 
-def awaited(m: Moment, g: int) -> bool:
+def awaited(m: Signals, g: int) -> bool:
     w, seen, stack = m.w, {g}, [g]
     while stack:
         signal = stack.pop()
@@ -39,7 +56,7 @@ def awaited(m: Moment, g: int) -> bool:
     return False
 
 
-def open_behind(m: Moment, signal: int) -> list[int]:
+def open_behind(m: Signals, signal: int) -> list[int]:
     """Gates that want an answer behind an unknown signal."""
     found, seen, stack = [], set(), [signal]
     while stack:
@@ -54,7 +71,7 @@ def open_behind(m: Moment, signal: int) -> list[int]:
     return found
 
 
-def better(m: Moment, b: int) -> int:
+def better(m: Signals, b: int) -> int:
     """The next gate to ask that could still trip an energised breaker in a better role now, or -1."""
     w, value = m.w, m.value
     coils = m.coils(b)
@@ -80,7 +97,7 @@ def better(m: Moment, b: int) -> int:
     return min(found, key=w.order.__getitem__, default=-1)
 
 
-def best_role(m: Moment, g: int, memo: dict[int, int]) -> int:
+def best_role(m: Signals, g: int, memo: dict[int, int]) -> int:
     """Best role a signal has if everything unknown turns out true."""
     if g in memo:
         return memo[g]
@@ -100,7 +117,7 @@ def best_role(m: Moment, g: int, memo: dict[int, int]) -> int:
     return found
 
 
-def via(m: Moment, signal: int) -> int:
+def via(m: Signals, signal: int) -> int:
     """The trip output behind an energised coil, of the best role."""
     w, value = m.w, m.value
     while not w.is_contact[signal] and w.kind[signal] is Kind.GATE:

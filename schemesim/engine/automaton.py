@@ -18,8 +18,8 @@ from schemesim.engine.case import Case
 from schemesim.engine.moment import Moment
 from schemesim.engine.rules import MAX_PASSES
 from schemesim.engine.succession import Asks, Step, follow, freeze, rest
-from schemesim.engine.values import State
-from schemesim.engine.wiring import Doomed, Start, doomed
+from schemesim.engine.values import CLOSING, OPENING, State
+from schemesim.engine.wiring import Doomed, Start, doomed, wiring_of
 from schemesim.errors import RunError
 
 if TYPE_CHECKING:
@@ -51,6 +51,8 @@ class Automaton:
     ----------
     question : ndarray of int32, shape (nodes,)
         Question a node asks, -1 at the end of a step.
+    asks, state_of : lists of int
+        ``question`` and ``state`` once more, for one run at a time.
     child : ndarray of int32, shape (nodes, 2)
         Where a no and a yes lead.
     state : ndarray of int32, shape (nodes,)
@@ -64,15 +66,15 @@ class Automaton:
     clears : ndarray of bool, shape (nodes,)
     operated : ndarray of int64, shape (nodes,)
         Outputs observed that operate in a step, as a mask.
-    moving : ndarray of bool, shape (states,)
-        Whether something pending matters at the horizon.
     """
 
     def __init__(self, case: Case) -> None:
         self.case = case
-        self.w = case.wiring
+        self.w = wiring_of(case)
         self.capacity = 16
         self.steps: dict[int, Step] = {}
+        self.asks: list[int] = []
+        self.state_of: list[int] = []
         self.states: list[State] = []
         self._number: dict[State, int] = {}
         self._waiting: dict[int, Question] = {}
@@ -88,7 +90,6 @@ class Automaton:
         self.operated = np.zeros(size, dtype=np.int64)
         self.changes, self.commits = Table(size, 8), Table(size, 2)
         self.follows = np.full((256, self.capacity), NOT_YET, dtype=np.int32)
-        self.moving = np.zeros(256, dtype=np.bool_)
         self.may_be_zero = tuple(delay.at(0.0) == 0 for _, delay in self.w.delays)
         starting = sorted(b for b in range(len(self.w.kind)) if self.w.on[b] != Start(0) or self.w.off[b] != Start(0))
         place = {b: i for i, b in enumerate(starting)}
@@ -177,7 +178,7 @@ class Automaton:
             step = freeze(m, gone, self.home, self.capacity)
         node = self._new_node(-1)
         self.steps[node] = step
-        self.state[node] = self._number_of(step.state, gone)
+        self.state[node] = self.state_of[node] = self._number_of(step.state)
         self.clears[node] = step.clears
         self.operated[node] = sum(1 << i for i in step.operated)
         gone_for_good = Start(GONE_US)
@@ -189,20 +190,22 @@ class Automaton:
         """A number from 1 on for how a breaker came to be committed."""
         return self.codes.setdefault((role, via, interrupts), len(self.codes) + 1)
 
-    def _number_of(self, state: State, gone: Doomed) -> int:
+    def _number_of(self, state: State) -> int:
         number = self._number.get(state)
         if number is None:
             number = self._number[state] = len(self.states)
             self.states.append(state)
             if number >= len(self.follows):
                 self.follows = _taller(self.follows, NOT_YET)
-                self.moving = np.concatenate([self.moving, np.zeros_like(self.moving)])
-            self.moving[number] = any(
-                ((p := self.w.place[b]) >= 0 and state.stage[p] in (1, 4)) or gone.matters[b]
-                for bundle in state.slots
-                for b in bundle
-            )
         return number
+
+    def moving(self, number: int) -> bool:
+        """Whether something pending in a state matters at the horizon: a breaker moves, or a signal may trip one."""
+        state = self.states[number]
+        matters = self._doomed[state.live].matters
+        blocks = [b for bundle in state.slots for b in bundle]
+        moves = [state.stage[self.w.place[b]] in (OPENING, CLOSING) for b in blocks if self.w.place[b] >= 0]
+        return any(moves) or any(matters[b] for b in blocks)
 
     def _new_node(self, question: int) -> int:
         node = self.nodes
@@ -213,6 +216,8 @@ class Automaton:
             self.changes.grow()
             self.commits.grow()
         self.question[node] = question
+        self.asks.append(question)
+        self.state_of.append(-1)
         self.nodes += 1
         return node
 
@@ -222,6 +227,14 @@ class Automaton:
             raise RunError(f"more than {MAX_SLOTS} times pending at once")
         self.follows = np.hstack([self.follows, np.full_like(self.follows, NOT_YET)])
         self.capacity *= 2
+
+
+def automaton_of(case: Case) -> Automaton:
+    """The automaton of a case, with the states met so far."""
+    known = case.shelf.get("automaton")
+    if not isinstance(known, Automaton):
+        known = case.shelf["automaton"] = Automaton(case)
+    return known
 
 
 class Table:

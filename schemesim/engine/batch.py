@@ -15,6 +15,7 @@ from schemesim.engine.event import DEFAULT_HORIZON_US
 from schemesim.engine.many import Batch, ManyAnswers, ManyNominalTimes, ManyTimes
 from schemesim.engine.packed import Packed
 from schemesim.engine.walk import Walk
+from schemesim.engine.wiring import wiring_of
 
 ROWS = 16_384
 """Rows walked together: their times stay near the processor."""
@@ -58,7 +59,7 @@ def run_batch(
     for first in range(0, rows, ROWS):
         part = np.arange(first, min(first + ROWS, rows))
         if packed:
-            run = Packed(case.wiring, part, answers, many, horizon_us)
+            run = Packed(wiring_of(case), part, answers, many, horizon_us)
             run.finish()
             pieces.append(run.columns())
         else:

@@ -11,7 +11,7 @@ from collections import deque
 from collections.abc import Mapping, Set
 from dataclasses import dataclass, field
 from functools import cached_property
-from typing import TYPE_CHECKING, NamedTuple
+from typing import Any, NamedTuple
 
 import networkx as nx
 
@@ -39,10 +39,6 @@ from schemesim.plant.zones import Duty, duty
 from schemesim.scheme.curves import Curve
 from schemesim.scheme.delays import Delay
 from schemesim.scheme.model import Breaker, Contact, Gate, Sense
-
-if TYPE_CHECKING:
-    from schemesim.engine.automaton import Automaton
-    from schemesim.engine.wiring import Wiring
 
 
 @dataclass(frozen=True, slots=True)
@@ -98,6 +94,8 @@ class Case:
     reach_mask : tuple of int
         For each block the breakers (bit = place in ``breakers``) and observed outputs (the
         bits above) that its output may still influence.
+    shelf : dict
+        What an engine keeps with the case to find it faster another time; never part of the case.
     inverse : mapping of int to Curve
         Sense blocks whose operate time is inverse; their ``on`` delay is nothing.
     """
@@ -137,6 +135,7 @@ class Case:
     index: Mapping[str, int]
     inverse: Mapping[int, Curve] = field(default_factory=dict)
     at_rest: list[AtRest] = field(default_factory=list)
+    shelf: dict[str, Any] = field(default_factory=dict)
     _topologies: dict[int, Topology] = field(default_factory=dict)
     _changes: dict[tuple[int, int], tuple[tuple[int, bool], ...]] = field(default_factory=dict)
 
@@ -145,7 +144,7 @@ class Case:
 
     def __getstate__(self) -> dict[str, object]:
         """What goes to another process: not the states met so far, which are found again."""
-        return {k: v for k, v in self.__dict__.items() if k not in ("automaton", "wiring")}
+        return {**self.__dict__, "shelf": {}}
 
     @property
     def questions(self) -> tuple[Question, ...]:
@@ -220,20 +219,6 @@ class Case:
         groups: nx.DiGraph[int] = nx.condensation(graph)
         members = {n: tuple(sorted(groups.nodes[n]["members"])) for n in groups}
         return tuple(members[n] for n in nx.lexicographical_topological_sort(groups, key=lambda n: members[n]))
-
-    @cached_property
-    def automaton(self) -> Automaton:
-        """The states of this case that the batch engine has met so far."""
-        from schemesim.engine.automaton import Automaton
-
-        return Automaton(self)
-
-    @cached_property
-    def wiring(self) -> Wiring:
-        """The case as the batch engine reads it."""
-        from schemesim.engine.wiring import wiring_of
-
-        return wiring_of(self)
 
     @property
     def topologies_met(self) -> int:

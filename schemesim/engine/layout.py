@@ -200,7 +200,14 @@ def row_within(planes: dict[int, dict[int, int]], worst: Sequence[int], signal: 
 
 
 def layout_of(w: Wiring) -> Layout:
-    """The layout of a wiring."""
+    """The layout of a wiring, made once for its case."""
+    known = w.case.shelf.get("layout")
+    if not isinstance(known, Layout):
+        known = w.case.shelf["layout"] = _layout(w)
+    return known
+
+
+def _layout(w: Wiring) -> Layout:
     n = len(w.kind)
     sinks = sum(1 for kind in w.kind if kind is not Kind.GATE)
     roles = _roles(w)

@@ -88,7 +88,11 @@ class Moment:
             self.decided, self.interrupting = state.decided, state.interrupting
             self.open_mask, self.live, self.cleared = state.open_mask, state.live, state.cleared
             self.slots = list(state.slots)
-        self.opens = {g for g, v in enumerate(self.value) if v == OPEN}
+        self.opens: set[int] = set()
+        g = self.value.find(OPEN)
+        while g >= 0:
+            self.opens.add(g)
+            g = self.value.find(OPEN, g + 1)
         self._dirty: list[int] = []
         self._queued = bytearray(n)
         self.touched: set[int] = set()

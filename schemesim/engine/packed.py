@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from schemesim.engine.columns import Columns
+from schemesim.engine.layout import layout_of
 from schemesim.engine.many import NEVER_US, ManyAnswers, ManyTimes
 from schemesim.engine.rules import MAX_PASSES
 from schemesim.engine.succession import Asks, rest
@@ -39,7 +40,7 @@ class Packed:
     """
 
     def __init__(self, w: Wiring, rows: Rows, answers: ManyAnswers, times: ManyTimes, horizon_us: int) -> None:
-        self.w, self.lay, self.rows = w, w.layout, rows
+        self.w, self.lay, self.rows = w, layout_of(w), rows
         self._times, self.horizon_us = times, horizon_us
         self.count = rows.size
         self.n = -(-rows.size // 64) * 64

@@ -179,7 +179,7 @@ def freeze(m: Moment, gone: Doomed, home: tuple[int, ...], capacity: int) -> Ste
     _leave_out(m, gone)
     old = m.slots
     slots: list[tuple[int, ...]] = [tuple(b for b in bundle if m.pending[b] and b not in m.started) for bundle in old]
-    slots.extend(() for _ in range(capacity - len(slots)))
+    slots += [()] * (capacity - len(slots))
     together: dict[Start, list[int]] = {}
     apart: list[tuple[int, Start]] = []
     for b, start in sorted(m.started.items()):
@@ -216,38 +216,53 @@ def freeze(m: Moment, gone: Doomed, home: tuple[int, ...], capacity: int) -> Ste
 def _leave_out(m: Moment, gone: Doomed) -> None:
     """Forget what cannot matter: signals, pending blocks, answers, and how a breaker came to be where it is."""
     w = m.w
-    for b in gone.blocks:
-        place = w.place[b]
-        m.value[b] = m.role[b] = 0
-        if place < 0 or (m.stage[place] == AUXILIARY and not w.closable[place]):
-            m.drop(b)
-            if place >= 0:
-                m.stage[place] = AWAY
-    for b, role in enumerate(m.role):
-        if role and m.value[b] != TRUE and not m.pending[b]:
-            m.role[b] = 0
+    for b in [b for b in m.started if not gone.matters[b] and w.place[b] < 0]:
+        del m.started[b]
     for place, stage in enumerate(m.stage):
         if stage != OPENING:
             m.interrupting &= ~(1 << place)
-        if stage == AWAY and not w.closable[place]:
-            m.stage[place] = CLOSED
-    for a in gone.asks:
-        m.verdict[a] = UNKNOWN
+        if stage in (AUXILIARY, AWAY) and not w.closable[place]:
+            b = w.breakers[place]
+            if not gone.matters[b]:
+                m.drop(b)
+                stage = AWAY
+            if stage == AWAY:
+                m.stage[place] = CLOSED
+    n = len(m.value)
+    value = int.from_bytes(m.value, "little") & gone.signals
+    m.value = bytearray(value.to_bytes(n, "little"))
+    m.pending = bytearray((int.from_bytes(m.pending, "little") & gone.moves).to_bytes(n, "little"))
+    if any(m.role):
+        in_use = int.from_bytes(m.value.translate(_IF_TRUE), "little")
+        in_use |= int.from_bytes(m.pending.translate(_IF_ANY), "little")
+        m.role = bytearray((int.from_bytes(m.role, "little") & gone.signals & in_use).to_bytes(n, "little"))
+    verdict = int.from_bytes(m.verdict, "little") & gone.verdicts | gone.unknown
+    m.verdict = bytearray(verdict.to_bytes(len(m.verdict), "little"))
     _forget(m, gone)
 
 
 def _forget(m: Moment, gone: Doomed) -> None:
     """Keep only answers that some question still to come may rest on."""
-    w, irrelevant = m.w, set(gone.asks)
-    keep: set[int] = set()
-    for a, group in enumerate(w.asks):
-        if a not in irrelevant and m.verdict[a] == UNKNOWN:
-            keep.update(group)
-    for place, modes in enumerate(w.breaker_modes):
-        if w.closable[place] or not m.decided >> place & 1:
-            keep.update(q for _, group, _ in modes for q in group)
-    ahead = [q for q in keep if m.known[q] == NOT_KNOWN]
-    keep.update(j for q in ahead for j in w.siblings[q])
-    for q, known in enumerate(m.known):
-        if known != NOT_KNOWN and q not in keep:
-            m.known[q] = NOT_KNOWN
+    w = m.w
+    key = bytes(m.verdict), m.decided
+    found = gone.kept.get(key)
+    if found is None:
+        keep: set[int] = set()
+        for a, verdict in enumerate(m.verdict):
+            if verdict == UNKNOWN and gone.verdicts >> 8 * a & 1:
+                keep.update(w.asks[a])
+        for place, modes in enumerate(w.breaker_modes):
+            if w.closable[place] or not m.decided >> place & 1:
+                keep.update(q for _, group, _ in modes for q in group)
+        shared = tuple(q for q in sorted(keep) if w.siblings[q])
+        found = gone.kept[key] = sum(0xFF << 8 * q for q in keep), shared
+    mask, shared = found
+    for q in shared:
+        if m.known[q] == NOT_KNOWN:
+            for j in w.siblings[q]:
+                mask |= 0xFF << 8 * j
+    m.known = bytearray((int.from_bytes(m.known, "little") & mask).to_bytes(len(m.known), "little"))
+
+
+_IF_TRUE = bytes(0xFF if v == TRUE else 0 for v in range(256))
+_IF_ANY = bytes(0xFF if v else 0 for v in range(256))

@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from schemesim.engine.layout import layout_of
 from schemesim.engine.many import ManyAnswers
 from schemesim.engine.wiring import Wiring
 from schemesim.engine.words import ONES, WORD, pack
@@ -32,8 +33,8 @@ class Verdicts:
         verdict = np.zeros((len(w.asks), self.words), dtype=WORD)
         for a, group in enumerate(w.asks):
             verdict[a] = self._any_yes(group) if w.certain[a] > 1 else (ONES if w.certain[a] else 0)
-        self.allowed = np.full((len(w.layout.guarded), self.words), ONES, dtype=WORD)
-        for i, g in enumerate(w.layout.guarded):
+        self.allowed = np.full((len(layout_of(w).guarded), self.words), ONES, dtype=WORD)
+        for i, g in enumerate(layout_of(w).guarded):
             for a in w.unless[g]:
                 self.allowed[i] &= ~verdict[a]
             if w.given[g]:

@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from schemesim.engine.automaton import GONE_US, NOT_YET, SLOT_BITS, Automaton, Table
+from schemesim.engine.automaton import GONE_US, NOT_YET, SLOT_BITS, Table, automaton_of
 from schemesim.engine.case import Case
 from schemesim.engine.columns import Columns
 from schemesim.engine.many import NEVER_US, ManyAnswers, ManyTimes
@@ -28,7 +28,7 @@ class Walk:
     """Some rows on their way; arrays of results have one entry for each row, whatever is still walking."""
 
     def __init__(self, case: Case, rows: NDArray[np.intp], answers: ManyAnswers, times: ManyTimes) -> None:
-        self.automaton: Automaton = case.automaton
+        self.automaton = automaton_of(case)
         self.rows, self._answers, self._times = rows, answers, times
         n, w = rows.size, self.automaton.w
         self.delays = np.zeros((len(w.delays) + 1, n), dtype=np.int64)
@@ -66,7 +66,8 @@ class Walk:
             if ended.any():
                 gone = np.flatnonzero(ended)
                 self.last_state[at[gone]] = state[gone]
-                self.at_horizon[at[gone]] = (t[gone] < GONE_US) & auto.moving[state[gone]]
+                waiting = gone[t[gone] < GONE_US]
+                self.at_horizon[at[waiting]] = [auto.moving(s) for s in state[waiting].tolist()]
                 stay = np.flatnonzero(~ended)
                 at, t, state, first, due = at[stay], t[stay], state[stay], first[stay], due[:, stay]
                 if not at.size:

@@ -7,16 +7,12 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from functools import cached_property
-from typing import TYPE_CHECKING, NamedTuple
+from typing import NamedTuple
 
 from schemesim.engine.case import Case
 from schemesim.engine.program import Kind
 from schemesim.scheme.delays import Delay
 from schemesim.scheme.model import Breaker, FailureMode, Role
-
-if TYPE_CHECKING:
-    from schemesim.engine.layout import Layout
 
 NO_ROLE = len(Role)
 """Behind every role."""
@@ -35,12 +31,28 @@ class Start(NamedTuple):
     second: int = -1
 
 
-class Doomed(NamedTuple):
-    """What cannot matter while these breakers and outputs are live: blocks, asks and breakers' places."""
+@dataclass(frozen=True, slots=True)
+class Doomed:
+    """What cannot matter while only these breakers and outputs are live; masks have a byte for each thing.
 
-    blocks: tuple[int, ...]
-    asks: tuple[int, ...]
+    Attributes
+    ----------
+    matters : bytes
+        Which blocks may still influence something.
+    signals, moves : int
+        Blocks whose value, and whose pending time, is kept.
+    verdicts, unknown : int
+        Asks whose verdict is kept, and what is put in place of the others.
+    kept : dict
+        Questions that may still be rested on, by verdicts and breakers decided: found once.
+    """
+
     matters: bytes
+    signals: int
+    moves: int
+    verdicts: int
+    unknown: int
+    kept: dict[tuple[bytes, int], tuple[int, tuple[int, ...]]]
 
 
 @dataclass(frozen=True, eq=False, repr=False)
@@ -93,13 +105,6 @@ class Wiring:
     late: tuple[Start, ...]
     closing: tuple[Start, ...]
 
-    @cached_property
-    def layout(self) -> Layout:
-        """Where the packed engine keeps what."""
-        from schemesim.engine.layout import layout_of
-
-        return layout_of(self)
-
     def opening(self, place: int, late: bool) -> Start:
         """What a breaker takes from energised coil to interruption."""
         start = self.on[self.breakers[place]]
@@ -111,7 +116,14 @@ class Wiring:
 
 
 def wiring_of(case: Case) -> Wiring:
-    """The wiring of a case."""
+    """The wiring of a case, made once."""
+    known = case.shelf.get("wiring")
+    if not isinstance(known, Wiring):
+        known = case.shelf["wiring"] = _wiring(case)
+    return known
+
+
+def _wiring(case: Case) -> Wiring:
     of_asks = {q for group in case.asks for q in group}
     of_breakers = {q for modes in case.breaker_asks for _, questions, _ in modes for q in questions}
     direct = of_asks | of_breakers
@@ -177,9 +189,15 @@ def wiring_of(case: Case) -> Wiring:
 def doomed(w: Wiring, live: int) -> Doomed:
     """What cannot matter any more while only these breakers and outputs may still change."""
     matters = bytes(bool(live & mask) for mask in w.reach_mask)
-    blocks = tuple(b for b, m in enumerate(matters) if not m)
-    asks = tuple(a for a, gates in enumerate(w.gates_asking) if not any(matters[g] for g in gates))
-    return Doomed(blocks, asks, matters)
+    asks = [any(matters[g] for g in gates) for gates in w.gates_asking]
+    return Doomed(
+        matters=matters,
+        signals=sum(0xFF << 8 * b for b, m in enumerate(matters) if m),
+        moves=sum(0xFF << 8 * b for b, m in enumerate(matters) if m or w.place[b] >= 0),
+        verdicts=sum(0xFF << 8 * a for a, kept in enumerate(asks) if kept),
+        unknown=sum(UNKNOWN << 8 * a for a, kept in enumerate(asks) if not kept),
+        kept={},
+    )
 
 
 def first_free(taken: Sequence[object], at: int) -> int:

@@ -28,6 +28,7 @@ from typing import Protocol
 from schemesim.engine.answers import Answers, ForcedAnswers
 from schemesim.engine.case import Case
 from schemesim.engine.event import DEFAULT_HORIZON_US, run_event
+from schemesim.engine.forks import Forks, Paused
 from schemesim.engine.outcome import Outcome, Run
 from schemesim.engine.program import Program, Question
 from schemesim.errors import ErrorList, RunError, reject
@@ -209,7 +210,7 @@ def explore(
     stop: Callable[[Tree], bool] | None = None,
     given: Mapping[int | str, bool] | None = None,
     complete: int = 0,
-    run: Engine = run_event,
+    run: Engine | None = None,
 ) -> Tree:
     """Explore the event tree of a case, most probable branch first.
 
@@ -231,8 +232,9 @@ def explore(
         Condition on these answers.
     complete : int
         Explore every combination of up to so many failures, however improbable.
-    run : Engine
-        What runs a case.
+    run : Engine or None
+        What runs a case, each time from the start. By default a run goes on from where it parts from
+        one that ran before, where that can be had (no inverse time), and the event engine runs it where not.
 
     Returns
     -------
@@ -244,11 +246,13 @@ def explore(
         For bad numbers and for conditions that are unknown or exclude each other.
     """
     bound = _checked(epsilon, max_runs, complete, stop is not None)
-    growing = _Growing(case.program, conditions(case.program, given or {}), complete)
+    known = conditions(case.program, given or {})
+    forks = Forks(case, known, horizon_us) if run is None and not case.inverse else None
+    growing = _Growing(case.program, known, complete, forks)
     check_at = 8
     stopped = "budget"
     while growing.runs < max_runs:
-        growing.open_next(case, run, horizon_us)
+        growing.open_next(case, run or run_event, horizon_us)
         if growing.done(bound):
             stopped = "epsilon"
             break
@@ -284,6 +288,7 @@ class _Growing:
     program: Program
     given: dict[int, bool]
     complete: int
+    forks: Forks | None = None
     runs: int = 0
     depth: int = 0
     tiny: int = 0
@@ -292,8 +297,9 @@ class _Growing:
 
     def __post_init__(self) -> None:
         self.odds = Odds(self.program, self.given)
-        self.heap: list[tuple[Probability, Asked, int]] = []
-        self.first: list[tuple[Probability, Asked, int]] = [(-self.odds.one, (), 0)]
+        root = self.forks.start() if self.forks else None
+        self.heap: list[tuple[Probability, Asked, int, Paused | None]] = []
+        self.first: list[tuple[Probability, Asked, int, Paused | None]] = [(-self.odds.one, (), 0, root)]
         self.left: Probability = self.odds.one
 
     @property
@@ -303,15 +309,23 @@ class _Growing:
 
     def open_next(self, case: Case, run: Engine, horizon_us: int) -> None:
         """Run the next prefix: it becomes a leaf and opens children."""
-        negative, prefix, factors = heapq.heappop(self.first or self.heap)
-        ran = run(case, ForcedAnswers({**self.given, **dict(prefix)}), horizon_us=horizon_us)
+        negative, prefix, factors, paused = heapq.heappop(self.first or self.heap)
+        pauses: tuple[Paused, ...] = ()
+        if self.forks and paused:
+            forked = self.forks.run(paused, self.given.get(prefix[-1][0], prefix[-1][1]) if prefix else None)
+            outcome, final_mask, pauses = forked.outcome, forked.final_mask, forked.pauses
+            asked = (*prefix[:-1], *forked.asked)
+        else:
+            ran = run(case, ForcedAnswers({**self.given, **dict(prefix)}), horizon_us=horizon_us)
+            outcome, final_mask, asked = ran.outcome, ran.final_mask, ran.asked
+            if asked[: len(prefix)] != prefix:
+                raise RunError(f"the run under {prefix} asked {asked}: its questions depend on more than its answers")
         self.runs += 1
-        if ran.asked[: len(prefix)] != prefix:
-            raise RunError(f"the run under {prefix} asked {ran.asked}: its questions depend on more than its answers")
+        skipped = len(asked) - len(pauses)
         rest, opened, possible = -negative, [negative], True
         known = dict(prefix)
-        for place in range(len(prefix), len(ran.asked)):
-            q, _ = ran.asked[place]
+        for place in range(len(prefix), len(asked)):
+            q, _ = asked[place]
             if q in self.given:
                 known[q] = self.given[q]
                 continue
@@ -320,7 +334,7 @@ class _Growing:
             factors += 1
             if yes:
                 child = rest * yes
-                self._push(child, (*ran.asked[:place], (q, True)), factors)
+                self._push(child, (*asked[:place], (q, True)), factors, pauses[place - skipped] if pauses else None)
                 opened.append(child)
             rest = rest * no
             if not no:  # one of its modes is certain: no such leaf, and nothing beyond it
@@ -329,18 +343,18 @@ class _Growing:
         self.depth = max(self.depth, factors)
         if possible:
             self._note(rest)
-            end = self.ends.setdefault(End(ran.outcome, ran.final_mask), len(self.ends))
-            self.leaves.append(Leaf(ran.asked, rest, end))
+            end = self.ends.setdefault(End(outcome, final_mask), len(self.ends))
+            self.leaves.append(Leaf(asked, rest, end))
         self.left = self.left + add(opened)
 
     def _note(self, mass: Probability) -> None:
         if isinstance(mass, float) and mass < _TINY:
             self.tiny += 1
 
-    def _push(self, mass: Probability, prefix: Asked, factors: int) -> None:
+    def _push(self, mass: Probability, prefix: Asked, factors: int, paused: Paused | None) -> None:
         self._note(mass)
         failures = sum(1 for q, answer in prefix if answer and q not in self.given)
-        heapq.heappush(self.first if failures <= self.complete else self.heap, (-mass, prefix, factors))
+        heapq.heappush(self.first if failures <= self.complete else self.heap, (-mass, prefix, factors, paused))
 
     def done(self, epsilon: Probability) -> bool:
         """Whether so little is unexplored that the tree may stop."""
