@@ -100,6 +100,11 @@ class Equations:
         return inside | {name: int(self.bus_at[t]) for name, t in e.terminal_of.items()}
 
     @cached_property
+    def station_of_vt(self) -> Mapping[tuple[str, str], str]:
+        """Station of each VT, by its name and section."""
+        return {(v.name, v.section): v.station for v in self.elements.plant.vts}
+
+    @cached_property
     def links(self) -> tuple[Ints, Ints]:
         """Buses joined by elements, in zero and in positive sequence."""
         return (self.bus_at[self.elements.links[0]], self.bus_at[self.elements.links[1]])

@@ -12,7 +12,7 @@ import numpy as np
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Device, DeviceKind
 from schemesim.plant.net_case import FaultType, Phasors
-from schemesim.plant.net_elements import Elements, place_of
+from schemesim.plant.net_elements import place_of
 from schemesim.plant.net_equations import POSITIVE, ZERO, Equations
 from schemesim.plant.net_matrices import BASE_MVA, Complexes
 from schemesim.plant.net_ports import FaultPort, Ports, Response
@@ -122,7 +122,7 @@ class PlantSolution:
         InputError
             For an unknown section, or a line or transformer without saying at which end.
         """
-        node = _node_at(self.equations.elements, section, at)
+        node = _node_at(self.equations, section, at)
         bus = int(self.equations.elements.bus_of[node])
         split = self._splits.get(bus)
         piece = 0 if split is None else split.piece_of[split.bus.nodes[node]]
@@ -218,15 +218,16 @@ def _negative(x: Phasors) -> Phasors:
     return -x[0], -x[1], -x[2]
 
 
-def _node_at(elements: Elements, section: str, at: str) -> int:
+def _node_at(equations: Equations, section: str, at: str) -> int:
+    elements = equations.elements
     plant = elements.plant
     if section in elements.node_of:
         return elements.node_of[section]
     if section not in elements.ends_of:
         raise reject("section", section, "the name of a section", tip=nearest(section, plant.section))
     ends = dict(elements.ends_of[section])
-    vt = next((v for v in plant.vts if v.name == at and v.section == section), None)
-    beside = [d for d in plant.at_section[section] if d.name == at or (vt is not None and d.station == vt.station)]
+    station = equations.station_of_vt.get((at, section))
+    beside = [d for d in plant.at_section[section] if d.name == at or (station is not None and d.station == station)]
     if not beside:
         attached = [d.name for d in plant.at_section[section] if d.kind is not DeviceKind.JOINT]
         raise reject(f"end of {section!r}", at or "none", f"a device or VT there, e.g. {', '.join(attached)}")
