@@ -31,29 +31,14 @@ class Signals(Protocol):
 
 def next_gate(m: Signals) -> int:
     """The gate whose question comes next: the first in order that a live sink waits for, or -1."""
-    w, live = m.w, m.live
-    waiting = [g for g in m.opens if live & w.reach_mask[g]]
-    for g in sorted(waiting, key=w.order.__getitem__):
-        if awaited(m, g):
-            return g
-    return -1
-
-
-def awaited(m: Signals, g: int) -> bool:
-    w, seen, stack = m.w, {g}, [g]
-    while stack:
-        signal = stack.pop()
-        bit = w.watch_bit[signal]
-        if bit and m.live & bit:
-            return True
-        for c in w.sink_readers[signal]:
-            if c in m.touched and m.is_live(c) and signal in m.read_by(c):
-                return True
-        for c in w.gate_readers[signal]:
-            if m.value[c] == UNKNOWN and c not in seen:
-                seen.add(c)
-                stack.append(c)
-    return False
+    if not m.opens:
+        return -1
+    w, value = m.w, m.value
+    waited = [g for i, g in enumerate(w.observed) if m.live >> (len(w.breakers) + i) & 1]
+    waited += [j for c in m.touched if m.is_live(c) for j in m.read_by(c)]
+    unknown = {j for j in waited if value[j] >= UNKNOWN}
+    found = {g for j in unknown for g in open_behind(m, j) if m.live & w.reach_mask[g]}
+    return min(found, key=w.order.__getitem__, default=-1)
 
 
 def open_behind(m: Signals, signal: int) -> list[int]:
