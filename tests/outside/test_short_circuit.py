@@ -181,20 +181,20 @@ def test_a_fault_along_a_line_by_hand() -> None:
 def test_iec_tr_60909_4_network() -> None:
     """IEC TR 60909-4, the 380/110/30/10 kV test network: initial three-phase currents of faults at buses 1 to 8.
 
-    Network data from memory of the report; its factors c = 1.1, KT, KG, KS and KSO are that standard's own and are worked
-    out here. That all eight published currents come out to their last figure is the check of the data too.
+    Network data from memory of the report; its factors c = 1.1, KT, KG, KS and KSO are that standard's own and are
+    worked out here. That all eight published currents come out to their last figure is the check of the data too.
     """
     b = PlantBuilder()
     bays: dict[int, list[Bay]] = {n: [] for n in range(1, 9)}
     kv = {1: 380.0, 2: 110.0, 3: 110.0, 4: 110.0, 5: 110.0, 6: 10.0, 7: 10.0, 8: 30.0}
-    for name, x, y, km, r, reactance in (
+    for name, start, end, km, r, reactance in (
         ("L1", 2, 3, 20, 0.12, 0.39), ("L2", 3, 4, 10, 0.12, 0.39), ("L3a", 2, 5, 5, 0.12, 0.39),
         ("L3b", 2, 5, 5, 0.12, 0.39), ("L4", 5, 3, 10, 0.096, 0.388), ("L5", 5, 4, 15, 0.12, 0.386),
         ("L6", 6, 7, 1, 0.082, 0.086),
     ):  # fmt: skip
-        line(b, name, km, kv=kv[x], impedance=LineImpedance(r_ohm=r * km, x_ohm=reactance * km))
-        bays[x].append(Bay(name, name))
-        bays[y].append(Bay(name, name, 1.0))
+        line(b, name, km, kv=kv[start], impedance=LineImpedance(r_ohm=r * km, x_ohm=reactance * km))
+        bays[start].append(Bay(name, name))
+        bays[end].append(Bay(name, name, 1.0))
 
     def leak(percent: float, resistive: float) -> complex:
         z = complex(resistive, math.sqrt(percent**2 - resistive**2)) / 100
@@ -241,8 +241,8 @@ def test_iec_tr_60909_4_network() -> None:
     feed("S2", 3, kso * (ratio**2 * machine + unit))
     kg = generator_factor(10.0, 10.5, 0.1, 0.8)
     feed("G3", 6, kg * complex(0.018, 0.1 * 10.5**2 / 10))
-    for name, mw, cosine, efficiency, start, count in (("M1", 5, 0.88, 0.975, 5, 1), ("M2", 2, 0.89, 0.968, 5.2, 2)):
-        z = 10**2 * cosine * efficiency / mw / start / count
+    for name, mw, cosine, efficiency, times, count in (("M1", 5, 0.88, 0.975, 5, 1), ("M2", 2, 0.89, 0.968, 5.2, 2)):
+        z = 10**2 * cosine * efficiency / mw / times / count
         x = z / math.sqrt(1.01)
         feed(name, 7, complex(0.1 * x, x))
     for bus, mine in bays.items():
