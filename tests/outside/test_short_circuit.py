@@ -251,3 +251,26 @@ def test_iec_tr_60909_4_network() -> None:
     found = [abs(network.at(ShuntFault(Location(f"Bus{n}.B1"))).solve().fault[1]) / 1e3 for n in range(1, 9)]
     published = [40.6447, 31.7831, 19.6730, 16.2277, 33.1894, 37.5629, 25.5895, 13.5778]
     assert found == pytest.approx(published, abs=6e-5)
+
+
+def test_a_delta_tertiary_earths_the_star_windings() -> None:
+    """YNyn0d1 with 0.1, 0.2, 0.2 between its windings: star 0.05, 0.05, 0.15 (textbook star equivalent), so the first
+    winding's zero sequence is 0.05 + 0.15, with the second open. The source of 0.3 is not earthed. With the second at
+    a source earthed through 0.1, that is in parallel with the delta: 0.05 + 0.15 beside 0.15."""
+    for second, z1, z0 in ((False, 0.3, 0.2), (True, 1 / (1 / 0.3 + 1 / 0.3), 0.05 + 1 / (1 / 0.15 + 1 / 0.15))):
+        b = PlantBuilder()
+        t = TransformerImpedance(
+            mva=100, kv=(KV, 33, 10), r_pu=(0.0,) * 3, x_pu=(0.1, 0.2, 0.2), group="YNyn0d1"
+        )
+        transformer(b, "T", impedance=t)
+        infeed(b, "N", "One.B1", impedance=grid(0.3))
+        single_bus(b, "One", [Bay("T", "T")], kv=KV)
+        single_bus(b, "Two", [Bay("T", "T", 0.5)], kv=33)
+        single_bus(b, "Six", [Bay("T", "T", 1.0)], kv=10)
+        if second:
+            ohm = 33**2 / 100
+            z = SourceImpedance(r_ohm=0, x_ohm=0.2 * ohm, r0_ohm=0, x0_ohm=0.1 * ohm)
+            infeed(b, "M", "Two.B1", impedance=z)
+        solution = network_of(b.build()).at(ShuntFault(Location("One.B1"), FaultType.LG)).solve()
+        assert abs(solution.fault[0]) / AMPERE == pytest.approx(1 / (2 * z1 + z0))
+        assert solution.voltage("Six.B1")[0] == pytest.approx(0, abs=1e-6)
