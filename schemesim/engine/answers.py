@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 
-from schemesim.engine.draws import uniform, uniforms
+from schemesim.engine.draws import Numbers, uniform, uniforms
 from schemesim.engine.program import Program
 from schemesim.errors import ErrorList, nearest
 from schemesim.scheme.model import Probability
@@ -87,6 +87,8 @@ class DrawnAnswers:
 
     def __init__(self, program: Program, seed: int, trial: int) -> None:
         self.program, self.seed, self.trial = program, seed, trial
+        uniform(seed, "", trial)  # refuses what is no seed or trial
+        self._numbers = Numbers()
         self._drawn: dict[str, float] = {}
 
     def answer(self, question: int, probability: Probability) -> bool:  # noqa: ARG002
@@ -95,7 +97,7 @@ class DrawnAnswers:
         key = f"state of {q.component}" if q.component else q.name
         u = self._drawn.get(key)
         if u is None:
-            u = self._drawn[key] = uniform(self.seed, key, self.trial)
+            u = self._drawn[key] = self._numbers.of(self.seed, key, self.trial)
         siblings = self.program.siblings[question]
         below = float(sum(self.program.questions[j].probability for j in siblings if j < question))
         return below <= u < below + float(q.probability)

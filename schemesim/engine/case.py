@@ -254,10 +254,16 @@ def bind(
         if not isinstance(program.scheme.block.get(name), Gate):
             known = [b.name for b in program.scheme.blocks if isinstance(b, Gate)]
             raise reject("observed output", name, "the name of a gate", tip=nearest(name, known))
+    if not isinstance(program, Program):
+        raise reject("program", program, "a Program, as compile_scheme makes it")
     if not isinstance(event, Location | NoFault):
-        raise reject("event", event, "a Location or a NoFault")
+        tip = f"Location({event!r}) is a fault there" if isinstance(event, str) else ""
+        raise reject("event", event, "a Location or a NoFault", tip=tip)
     if isinstance(event, Location) and not 0.0 <= event.position <= 1.0:
-        raise reject(f"position on {event.section!r}", event.position, "a number from 0 to 1")
+        tip = looks_like_percent(event.position)
+        raise reject(f"position on {event.section!r}", event.position, "a number from 0 to 1", tip=tip)
+    if isinstance(sensing, type):
+        raise reject("sensing", sensing, "a sensing, such as LogicalSensing() makes", tip="the brackets are missing")
     if isinstance(event, Location) and event.section not in program.plant.section:
         raise reject("section", event.section, "a section", tip=nearest(event.section, program.plant.section))
     if isinstance(event, NoFault) and event.component not in program.scheme.component:

@@ -41,6 +41,7 @@ MAX_TRIAL = 2**63 - 1
 """Largest number of a trial."""
 
 _WORDS_PER_STEP = 4
+_LOW = (1 << 64) - 1
 _PERSON = b"schemesim/draws1"
 
 
@@ -71,7 +72,32 @@ def uniform(seed: int, name: str, trial: int) -> float:
     >>> uniform(7, "north.CB1", 3) == uniforms(7, "north.CB1", 0, 10).tolist()[3]
     True
     """
-    return float(uniforms(seed, name, trial, 1)[0])
+    seed, trial = _checked(seed, name, trial, 1)[:2]
+    return Numbers().at(_key(seed, name), trial)
+
+
+class Numbers:
+    """Looks up single numbers with one bit generator; the same as :func:`uniform`, sooner."""
+
+    def __init__(self) -> None:
+        self._source = np.random.Philox(key=0)
+        self._state: dict[str, Any] = dict(self._source.state)
+        self._inner: dict[str, Any] = {"counter": np.zeros(4, np.uint64), "key": np.zeros(2, np.uint64)}
+        self._state |= {"state": self._inner, "buffer_pos": _WORDS_PER_STEP}
+
+    def of(self, seed: int, name: str, trial: int) -> float:
+        """The uniform number of a name in a trial; the arguments are taken as they are."""
+        return self.at(_key(seed, name), trial)
+
+    def at(self, key: int, trial: int) -> float:
+        """The uniform number of a key in a trial."""
+        steps, skip = divmod(trial, _WORDS_PER_STEP)
+        inner = self._inner
+        inner["counter"][0] = steps
+        inner["key"][0], inner["key"][1] = key & _LOW, key >> 64
+        self._source.state = self._state  # type: ignore[assignment]  # NumPy types it a closed dictionary
+        word = int(self._source.random_raw(skip + 1)[skip]) if skip else int(self._source.random_raw())
+        return (word >> 11) * 2.0**-53
 
 
 def uniforms(seed: int, name: str, start: int, count: int) -> NDArray[np.float64]:
@@ -106,6 +132,15 @@ def uniforms(seed: int, name: str, start: int, count: int) -> NDArray[np.float64
     >>> bool((whole[6:] == uniforms(7, "north.CB1", 6, 4)).all())
     True
     """
+    seed, start, count = _checked(seed, name, start, count)
+    steps, skip = divmod(start, _WORDS_PER_STEP)
+    source = np.random.Philox(key=_key(seed, name))
+    source.advance(steps)
+    words = source.random_raw(skip + count)[skip:]
+    return (words >> np.uint64(11)).astype(np.float64) * np.float64(2.0**-53)
+
+
+def _checked(seed: int, name: str, start: int, count: int) -> tuple[int, int, int]:
     errors = ErrorList()
     seed = _natural(errors, "seed", seed, None)
     start = _natural(errors, "trial", start, MAX_TRIAL)
@@ -113,11 +148,7 @@ def uniforms(seed: int, name: str, start: int, count: int) -> NDArray[np.float64
     if not isinstance(name, str):
         errors.add("name of a draw", name, "text")
     errors.raise_if_any()
-    steps, skip = divmod(start, _WORDS_PER_STEP)
-    source = np.random.Philox(key=_key(seed, name))
-    source.advance(steps)
-    words = source.random_raw(skip + count)[skip:]
-    return (words >> np.uint64(11)).astype(np.float64) * np.float64(2.0**-53)
+    return seed, start, count
 
 
 def _key(seed: int, name: str) -> int:

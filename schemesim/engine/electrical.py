@@ -15,7 +15,7 @@ from schemesim.engine.sensing import Event, LogicalSensing, NoFault, Sensed
 from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.current import Neighbourhood
 from schemesim.plant.model import Location
-from schemesim.plant.net_case import FaultType, Network, ShuntFault, Solution
+from schemesim.plant.net_case import FaultedNetwork, FaultType, Network, ShuntFault, Solution
 from schemesim.plant.paths import within
 from schemesim.scheme.conditions import (
     Always,
@@ -144,6 +144,7 @@ class ElectricalSensing:
         longest = max((_reach_of(b.condition) for _, b in counted), default=0.0) * _LONGER
         near = program.paths.distances(event, frozenset(), longest)
         faulted = self.network(program, dispatch).at(self._shunt(event))
+        prepare(faulted, settings.cts)
         quantities = self._quantities(program, dispatch, faulted.solve(_idle(program, event)))
         found = []
         for i, b in counted:
@@ -268,6 +269,13 @@ class _Computed:
                 self.program.plant, self.event.section, self.openable, self.dispatch, idle
             )
         return self._around.lost(opened)
+
+
+def prepare(faulted: FaultedNetwork, devices: frozenset[str]) -> None:
+    """Have a network make known at once what some devices will be asked for, where it can: a saving of time only."""
+    known = getattr(faulted, "prepare", None)
+    if known is not None:
+        known(devices)
 
 
 def _idle(program: Program, event: Location) -> frozenset[str]:

@@ -13,8 +13,10 @@ from typing import NamedTuple
 from schemesim.engine.automaton import GONE_US, SLOT_BITS, automaton_of
 from schemesim.engine.case import Case
 from schemesim.engine.outcome import Opening, Outcome, Status
+from schemesim.engine.rules import MAX_PASSES
 from schemesim.engine.sensing import NoFault
 from schemesim.engine.wiring import Start, wiring_of
+from schemesim.errors import RunError
 from schemesim.scheme.model import Role
 
 _MASK = (1 << SLOT_BITS) - 1
@@ -61,7 +63,7 @@ class Forks:
         node, t, due, t_clear, openings, operated = paused
         asked: list[tuple[int, bool]] = []
         pauses: list[Paused] = []
-        told = yes
+        told, passes = yes, 0
         while True:
             while (q := auto.asks[node]) >= 0:
                 question = questions[q]
@@ -98,6 +100,9 @@ class Forks:
                 )
             slots = [d & _MASK for d in due if d >> SLOT_BITS == first]
             due = tuple([d for d in due if d >> SLOT_BITS != first])
+            passes = passes + 1 if first == t else 0  # random times that are zero at their nominal value
+            if passes > MAX_PASSES:
+                raise RunError(f"an instant does not settle; still going after {MAX_PASSES} passes")
             t = first
             node = auto.after(state, tuple(sorted(slots)))
 

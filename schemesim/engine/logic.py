@@ -293,31 +293,21 @@ class Logic:
         return None
 
     def _next_gate(self) -> int | None:
-        """The gate whose question comes next: the first in order that a live sink waits for."""
-        live, mask = self._live, self.case.reach_mask
-        hopeful = [g for g in self._open if live & mask[g]]
-        for g in sorted(hopeful, key=self.case.order.__getitem__):
-            if self._is_awaited(g):
-                return g
-        return None
-
-    def _is_awaited(self, g: int) -> bool:
-        """Whether a live sink reads this unknown signal, directly or through gates it leaves unknown."""
-        case = self.case
-        seen = {g}
-        stack = [g]
-        while stack:
-            signal = stack.pop()
-            if signal in self._watch and self._live & self._watch[signal]:
-                return True
-            for c in case.sink_readers[signal]:
-                if c in self._touched and self._is_live(c) and signal in self._read_by(c):
-                    return True
-            for c in case.gate_readers[signal]:
-                if self.value[c] == UNKNOWN and c not in self._open and c not in seen:
-                    seen.add(c)
-                    stack.append(c)
-        return False
+        """The gate whose question comes next: the first in order that a live sink, or an output observed, waits for."""
+        if not self._open:
+            return None
+        case, value, live = self.case, self.value, self._live
+        waited = {g for g, bit in self._watch.items() if live & bit}
+        for c in self._touched:
+            if self._is_live(c):
+                waited.update(self._read_by(c))
+        best, first = None, len(case.program.order)
+        for signal in waited:
+            if value[signal] == UNKNOWN:
+                for g in open_behind(case, value, self._open, signal):
+                    if case.order[g] < first and live & case.reach_mask[g]:
+                        best, first = g, case.order[g]
+        return best
 
     def _read_by(self, block: int) -> list[int]:
         """The inputs a sink depends on now: a latch at rest reads no reset until it is being set."""

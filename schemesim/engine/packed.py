@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from schemesim.engine.columns import Columns
+from schemesim.engine.disc_columns import NEVER_DUE, DiscColumns
 from schemesim.engine.layout import layout_of
 from schemesim.engine.many import NEVER_US, ManyAnswers, ManyTimes
 from schemesim.engine.rules import MAX_PASSES
@@ -64,6 +65,7 @@ class Packed:
         self.t = np.zeros(n, dtype=time)
         self.passes = np.zeros(n, dtype=np.int16)
         self.beyond = np.zeros(n, dtype=np.bool_)
+        self.discs = DiscColumns([curve.overtravel_us for curve in w.case.inverse.values()], n)
         self.t_clear = np.full(self.count, NEVER_US, dtype=np.int64)
         self.t_open = np.full((len(w.breakers), self.count), NEVER_US, dtype=np.int64)
         self.t_trip = np.full((len(w.breakers), self.count), NEVER_US, dtype=np.int64)
@@ -111,6 +113,7 @@ class Packed:
         self.held = pack(self.holds)
         self.running = np.zeros(self.n, dtype=np.bool_)
         self.running[: self.count] = True
+        self._turn(np.arange(self.count))
 
     def finish(self) -> None:
         """Walk every row to its end (rule R20)."""
@@ -172,6 +175,7 @@ class Packed:
         self.due, self.holds = np.take(self.due, pick, axis=-1), np.take(self.holds, pick, axis=-1)
         for name in ("at", "topology", "t", "passes", "running", "beyond"):
             setattr(self, name, getattr(self, name)[pick])
+        self.discs.pick(pick)
         return picked(expired, pick)
 
     def _matters(self) -> Words:
@@ -204,6 +208,10 @@ class Packed:
         value &= ~(x & self.to_false)
         self.to_true &= ~x
         self.to_false &= ~x
+        for i, s in enumerate(self.w.case.inverse):
+            rows = rows_of(x[s])
+            if rows.size:
+                self.discs.turn(i, rows, self.t[rows].astype(np.int64), self.discs.rate[i, rows], overtravel=False)
         due = x[lay.breakers]
         if not due.any():
             return
@@ -234,11 +242,37 @@ class Packed:
                 self.topology[here] = found.switched(self.topology[here], place, opens)
         now = self.topology[rows]
         for s in self.lay.senses.tolist():
-            self.holds[s, rows] = found.holds[now, s]
+            stays = found.stays[now, s]
+            self.holds[s, rows] = np.where(stays, self.holds[s, rows], found.holds[now, s]) if stays.any() else (
+                found.holds[now, s]
+            )
+        self._turn(rows)
         self.held[self.lay.senses] = pack(self.holds[self.lay.senses])
         cleared = rows[before & ~found.fed[now]]
         new = cleared[self.t_clear[self.at[cleared]] == NEVER_US]
         self.t_clear[self.at[new]] = self.t[new]
+
+    def _turn(self, rows: Rows) -> None:
+        """Inverse-time blocks take the speeds that go with the topology (R10)."""
+        for i in range(len(self.w.case.inverse)):
+            rate = self.lay.topologies.rates[self.topology[rows], i]
+            turned = np.flatnonzero(rate != self.discs.rate[i, rows])
+            if turned.size:
+                some = rows[turned]
+                self.discs.turn(i, some, self.t[some].astype(np.int64), rate[turned], overtravel=True)
+
+    def _follow_discs(self, value: Words, want: Words) -> None:
+        """Inverse-time blocks that have not operated are due as their travel says."""
+        for i, s in enumerate(self.w.case.inverse):
+            rows = np.flatnonzero(self.discs.touched[i] & ~unpack(value[s]) & self.running)
+            self.discs.touched[i] = False
+            if rows.size:
+                due = self.discs.due(i, rows)
+                going = unpack(self.to_true[s]).copy()
+                going[rows] = due < NEVER_DUE
+                self.to_true[s] = pack(going)
+                self.due[s, rows] = np.where(due < NEVER_DUE, np.minimum(due, self.horizon_us + 1), self._never)
+            want[s] = (value[s] & want[s]) | (~value[s] & self.to_true[s])
 
     def _gates(self) -> None:
         """Settle the gates, in order; then the planes that tell in which role they are true."""
@@ -310,6 +344,7 @@ class Packed:
         want: Words = sig[lay.source] ^ lay.inverted
         want[lay.senses] = self.held[lay.senses]
         want[lay.idle] = value[lay.idle]
+        self._follow_discs(value, want)
         if lay.latches.size:
             now = (value[lay.latches] & ~self.to_false[lay.latches]) | self.to_true[lay.latches]
             reset = (sig[lay.reset] ^ lay.reset_inverted) & lay.has_reset

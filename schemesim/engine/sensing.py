@@ -270,7 +270,7 @@ def _reaches(
     if condition.direction is Direction.BOTH or not within(near, condition.reach):
         return within(near, condition.reach)
     ahead = inner < outer
-    if outer < inner:
+    if outer <= inner:
         ways = (paths[p] + w for p, w in program.paths.ahead(condition.terminals) if p in paths)
         ahead = any(lengths(way) == lengths(outer) for way in ways)
     return ahead if condition.direction is Direction.FORWARD else not ahead and outer < inner

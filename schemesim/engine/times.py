@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from schemesim.engine.draws import uniform
+from schemesim.engine.draws import Numbers, uniform
 from schemesim.scheme.delays import Delay
 
 
@@ -15,11 +15,13 @@ class DelayTimes:
 
     def __init__(self, seed: int, trial: int) -> None:
         self.seed, self.trial = seed, trial
+        uniform(seed, "", trial)  # refuses what is no seed or trial
+        self._numbers = Numbers()
         self._drawn: dict[str, int] = {}
 
     def of(self, name: str, delay: Delay) -> int:
         """The time in microseconds of a named delay in this trial."""
         known = self._drawn.get(name)
         if known is None:
-            known = self._drawn[name] = delay.at(uniform(self.seed, name, self.trial))
+            known = self._drawn[name] = delay.at(self._numbers.of(self.seed, name, self.trial))
         return known

@@ -21,6 +21,10 @@ class Topologies:
         Breakers of the case that are open.
     holds : ndarray of bool, shape (room, sinks)
         Which conditions hold; rows beyond those numbered are room to grow.
+    stays : ndarray of bool, shape (room, sinks)
+        Conditions that stay as they were: the quantity lies between drop-out and pick-up.
+    rates : ndarray of int64, shape (room, inverse-time blocks)
+        Their speeds (rule R10).
     fed : ndarray of bool, shape (room,)
     """
 
@@ -30,6 +34,9 @@ class Topologies:
         self._number: dict[int, int] = {}
         self._after: dict[tuple[int, int, bool], int] = {}
         self.holds = np.zeros((8, sinks), dtype=np.bool_)
+        self.stays = np.zeros((8, sinks), dtype=np.bool_)
+        self.inverse = {s: i for i, s in enumerate(case.inverse)}
+        self.rates = np.zeros((8, len(self.inverse)), dtype=np.int64)
         self.fed = np.zeros(8, dtype=np.bool_)
         self.number(0)
 
@@ -40,11 +47,15 @@ class Topologies:
             known = self._number[mask] = len(self.masks)
             self.masks.append(mask)
             if known >= len(self.fed):
-                self.holds = np.concatenate([self.holds, np.zeros_like(self.holds)])
-                self.fed = np.concatenate([self.fed, np.zeros_like(self.fed)])
+                for name in ("holds", "stays", "rates", "fed"):
+                    old = getattr(self, name)
+                    setattr(self, name, np.concatenate([old, np.zeros_like(old)]))
             found = self.case.topology(mask)
+            self.stays[known, list(self.case.senses)] = True
             for s, truth in found.holds:
-                self.holds[known, s] = truth
+                self.holds[known, s], self.stays[known, s] = truth, False
+            for s, rate in found.rates:
+                self.rates[known, self.inverse[s]] = rate
             self.fed[known] = found.fed
         return known
 

@@ -16,6 +16,8 @@ from schemesim.engine.automaton import GONE_US, NOT_YET, SLOT_BITS, Table, autom
 from schemesim.engine.case import Case
 from schemesim.engine.columns import Columns
 from schemesim.engine.many import NEVER_US, ManyAnswers, ManyTimes
+from schemesim.engine.rules import MAX_PASSES
+from schemesim.errors import RunError
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -53,6 +55,7 @@ class Walk:
         t = np.zeros(n, dtype=np.int64)
         node = np.full(n, auto.root, dtype=np.int32)
         due = np.full((auto.capacity, n), _EMPTY, dtype=np.int64)
+        passes = np.zeros(n, dtype=np.int16)
         while at.size:
             self.steps += 1
             node = self._answer(node, at)
@@ -61,7 +64,10 @@ class Walk:
             self._change(node, at, t, due)
             state = auto.state[node]
             first = due.min(axis=0)
-            t = first >> SLOT_BITS
+            t, before = first >> SLOT_BITS, t
+            passes = np.where(t == before, passes + 1, 0)  # random times that happen to be zero
+            if passes.max() > MAX_PASSES:
+                raise RunError(f"an instant does not settle; still going after {MAX_PASSES} passes")
             ended = t > horizon_us
             if ended.any():
                 gone = np.flatnonzero(ended)
@@ -70,6 +76,7 @@ class Walk:
                 self.at_horizon[at[waiting]] = [auto.moving(s) for s in state[waiting].tolist()]
                 stay = np.flatnonzero(~ended)
                 at, t, state, first, due = at[stay], t[stay], state[stay], first[stay], due[:, stay]
+                passes = passes[stay]
                 if not at.size:
                     break
             node = self._due(state, first, t, due)
