@@ -109,6 +109,11 @@ class Settings:
         """Settings by block."""
         return {s.block: s for s in self.items}
 
+    @cached_property
+    def cts(self) -> frozenset[str]:
+        """Every CT (and source) that any element stands on."""
+        return frozenset(ct for s in self.items for ct in s.element.looks_at[0])
+
     def changed(self, block: str, **values: Any) -> Settings:
         """The same with other values of one element.
 

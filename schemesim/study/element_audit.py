@@ -11,6 +11,7 @@ from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
+from schemesim.engine.electrical import prepare
 from schemesim.engine.program import Kind, Program
 from schemesim.engine.sensing import LogicalSensing
 from schemesim.errors import nearest, reject
@@ -217,6 +218,7 @@ def audit_elements(
             meant = {name: any(each) for name, each in said.items() if each}
             for kind in kinds:
                 faulted = grid.at(ShuntFault(place, kind, resistance_ohm))
+                prepare(faulted, settings.cts)
                 for name in out:
                     state = ", ".join(x for x in (dispatch or "all in service", f"{name} out" if name else "") if x)
                     solved = faulted.solve(frozenset({name} if name else ()))
