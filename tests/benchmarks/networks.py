@@ -12,6 +12,7 @@ import math
 import random
 import resource
 import time
+import warnings
 from collections.abc import Iterator, Mapping, Sequence
 from typing import Any
 
@@ -76,8 +77,10 @@ def published(name: str) -> Plant:
 
     from schemesim.plant.net_import import plant_of_pandapower
 
-    net = getattr(pandapower.networks, name)()
-    pandapower.toolbox.replace_gen_by_ext_grid(net)
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")  # that library's own, in plenty
+        net = getattr(pandapower.networks, name)()
+        pandapower.toolbox.replace_gen_by_ext_grid(net)
     net.ext_grid["s_sc_max_mva"] = np.random.default_rng(1).uniform(500, 5000, len(net.ext_grid))
     net.ext_grid["rx_max"] = 0.1
     return plant_of_pandapower(net, zero_ratio=3.0, loads=False)
