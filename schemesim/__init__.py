@@ -331,7 +331,10 @@ _HOME = {name: module for module, names in _HOMES.items() for name in names.spli
 def __getattr__(name: str) -> object:
     """Load a public name from its home when it is first used."""
     if name not in _HOME:
-        raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
+        from schemesim.errors import nearest  # no import at all before a name is asked for
+
+        tip = "" if name.startswith("_") else nearest(name, __all__)
+        raise AttributeError(f"module {__name__!r} has no attribute {name!r}{tip and f' ({tip})'}")
     value: object = getattr(import_module(_HOME[name]), name)
     globals()[name] = value
     return value

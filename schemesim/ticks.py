@@ -64,6 +64,17 @@ def looks_like_seconds(value_ms: float, least_ms: float = 1.0) -> str:
     return f"is it in seconds? {value_ms:g} s is {1000 * value_ms:g} ms" if 0 < value_ms < least_ms else ""
 
 
+def looks_like_percent(share: float) -> str:
+    """A hint where a share from 0 to 1 can only be meant in percent, or an empty text.
+
+    Examples
+    --------
+    >>> looks_like_percent(50), looks_like_percent(0.5)
+    ('is it in percent? 50 % is 0.5', '')
+    """
+    return f"is it in percent? {share:g} % is {share / 100:g}" if 1 < share <= 100 else ""
+
+
 def limit_mistake(limit_us: object) -> tuple[str, str] | None:
     """What is wrong with a limit of the clearing time in microseconds: what was expected, and a hint; or None.
 

@@ -39,6 +39,7 @@ from schemesim.plant.zones import Duty, duty
 from schemesim.scheme.curves import Curve
 from schemesim.scheme.delays import Delay
 from schemesim.scheme.model import Breaker, Contact, Gate, Sense
+from schemesim.ticks import looks_like_percent
 
 
 @dataclass(frozen=True, slots=True)

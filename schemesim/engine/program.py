@@ -124,8 +124,9 @@ def compile_scheme(plant: Plant, scheme: Scheme) -> Program:
         source with a trip, a coil is fed by an auxiliary contact with no gate between, or an
         element looks at a device or section that is not in the plant.
     """
-    if not isinstance(plant, Plant) or not isinstance(scheme, Scheme):
-        raise reject("compile_scheme", (plant, scheme), "a Plant and a Scheme, in this order")
+    given: tuple[object, object] = (plant, scheme)
+    if not isinstance(given[0], Plant) or not isinstance(given[1], Scheme):
+        raise reject("compile_scheme", given, "a Plant and a Scheme, in this order")
     errors = ErrorList()
     _check_breakers(errors, plant, scheme)
     _check_conditions(errors, plant, scheme)

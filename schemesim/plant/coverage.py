@@ -12,7 +12,7 @@ from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-from schemesim.errors import ErrorList, nearest
+from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Plant, SectionKind
 from schemesim.plant.terminals import ProtectedObject, protected_object
 from schemesim.plant.zones import Duty, duty, isolation_zones, merged_elements
@@ -106,11 +106,17 @@ class CoverageAudit:
         return tuple(r for r in self.rows if r.dead_zone)
 
     def __getitem__(self, section: str) -> Coverage:
-        """The row of a section."""
+        """The row of a section.
+
+        Raises
+        ------
+        InputError
+            If there is no such section.
+        """
         for row in self.rows:
             if row.section == section:
                 return row
-        raise KeyError(section)
+        raise reject("section", section, "the name of a section", tip=nearest(section, [r.section for r in self.rows]))
 
     def table(self) -> pd.DataFrame:
         """One row per section; names that are several stand in one cell, separated by commas."""

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 from schemesim.errors import ErrorList, reject
 from schemesim.plant.model import Plant
 from schemesim.plant.zones import Zones, isolation_zones
-from schemesim.scheme.delays import Delay, Fixed
+from schemesim.scheme.delays import Delay, Fixed, check_delays
 from schemesim.scheme.failure_data import FailureData
 from schemesim.scheme.model import (
     MODES,
@@ -46,6 +46,9 @@ class BreakerTimes:
     interrupting: Delay = Fixed(50_000)
     auxiliary: Delay = Fixed(5_000)
     late_by: Delay = Fixed(100_000)
+
+    def __post_init__(self) -> None:
+        check_delays(self)
 
 
 class SchemeBuilder:

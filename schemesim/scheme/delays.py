@@ -13,8 +13,8 @@ kinds stand in `schemesim.scheme.distributions`.
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
-from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from dataclasses import dataclass, fields
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -161,6 +161,24 @@ class Fixed(Delay):
 
     def _span(self) -> tuple[int, int]:
         return self.us, self.us
+
+
+def check_delays(owner: Any) -> None:
+    """Refuse a dataclass whose fields of type ``Delay`` hold something else, with every such field.
+
+    Raises
+    ------
+    InputError
+    """
+    errors = ErrorList()
+    for f in fields(owner):
+        value = getattr(owner, f.name)
+        if not str(f.type).startswith("Delay") or isinstance(value, Delay) or (value is None and "None" in f.type):
+            continue
+        number = isinstance(value, (int, float)) and not isinstance(value, bool)
+        tip = f"fixed_ms({value:g}) is {value:g} ms" if number else ""
+        errors.add(f"{f.name} of {type(owner).__name__}", value, "a Delay", tip=tip)
+    errors.raise_if_any()
 
 
 def as_delay(value: int | Delay) -> Delay:

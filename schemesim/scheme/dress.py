@@ -65,6 +65,8 @@ def dress(
     >>> scheme.contacts["Alder/F1/1 50 trip"].function
     '50'
     """
+    if not isinstance(plant, Plant):
+        raise reject("plant", plant, "a Plant, as PlantBuilder.build() makes it; the policy comes second")
     for name, item in {"policy": policy, **(exceptions or {})}.items():
         if not isinstance(item, Policy):
             raise reject(f"policy for {name!r}", item, "a Policy, such as duplicate_chain() makes")

@@ -12,7 +12,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from fnmatch import fnmatchcase
 
-from schemesim.errors import reject
+from schemesim.errors import ErrorList, nearest, reject
 from schemesim.scheme.model import (
     MODES,
     Ask,
@@ -66,6 +66,14 @@ class Override:
     pattern: str
     modes: Modes = field(default_factory=dict)
     no_fault_per_yr: float | None = None
+
+    def __post_init__(self) -> None:
+        errors, known = ErrorList(), [str(m) for m in FailureMode]
+        for mode in self.modes:
+            if mode not in known:
+                tip = nearest(mode, known)
+                errors.add(f"failure mode of {self.pattern!r}", str(mode), f"one of {known}", tip=tip)
+        errors.raise_if_any()
 
 
 @dataclass(frozen=True)

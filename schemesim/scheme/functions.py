@@ -15,7 +15,7 @@ from dataclasses import dataclass
 from schemesim.plant.terminals import Terminal
 from schemesim.scheme.build import Host, SchemeBuilder
 from schemesim.scheme.conditions import Condition, Current, Direction, InZone, NoFaultTrip, Reach
-from schemesim.scheme.delays import Delay, Fixed
+from schemesim.scheme.delays import Delay, Fixed, check_delays
 from schemesim.scheme.model import Ask, Contact, FailureMode, Gate, Input, Latch, Not, Role, Sense, Timer
 
 AT_ONCE = Fixed(0)
@@ -28,6 +28,9 @@ class ElementTimes:
     operate: Delay = Fixed(20_000)
     reset: Delay = Fixed(15_000)
     delayed_by: Delay = Fixed(200_000)
+
+    def __post_init__(self) -> None:
+        check_delays(self)
 
 
 def sense(b: SchemeBuilder, name: str, condition: Condition, times: ElementTimes) -> str:
@@ -305,6 +308,9 @@ class BreakerFailureTimes:
     detector_operate: Delay = Fixed(5_000)
     detector_reset: Delay = Fixed(20_000)
     dwell: Delay = Fixed(100_000)
+
+    def __post_init__(self) -> None:
+        check_delays(self)
 
 
 def breaker_failure(

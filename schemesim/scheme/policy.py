@@ -7,12 +7,12 @@ stands behind them, and how breaker failure is done. It is inert; ``dress`` appl
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, fields, replace
 from enum import StrEnum
 
-from schemesim.errors import ErrorList
+from schemesim.errors import ErrorList, nearest
 from schemesim.scheme.build import BreakerTimes
-from schemesim.scheme.delays import Delay, Fixed
+from schemesim.scheme.delays import Delay, Fixed, check_delays
 from schemesim.scheme.functions import BreakerFailureTimes, ElementTimes
 
 
@@ -83,6 +83,9 @@ class LocalBackup:
     bus_delay: Delay = Fixed(270_000)
     unit_delay: Delay = Fixed(150_000)
 
+    def __post_init__(self) -> None:
+        check_delays(self)
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class BreakerFailurePolicy:
@@ -121,6 +124,9 @@ class Reaches:
     transformer_backup_delay: Delay = Fixed(1_200_000)
     over_reach: float = 1.3
 
+    def __post_init__(self) -> None:
+        check_delays(self)
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class PolicyTimes:
@@ -136,6 +142,9 @@ class PolicyTimes:
     coordinating: Delay = Fixed(30_000)
     echo_pulse: Delay = Fixed(150_000)
     end_fault: Delay = Fixed(40_000)
+
+    def __post_init__(self) -> None:
+        check_delays(self)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -262,6 +271,9 @@ def duplicate_chain(**changes: object) -> Policy:
 
 
 def _with(policy: Policy, changes: dict[str, object]) -> Policy:
-    from dataclasses import replace
-
-    return replace(policy, **changes) if changes else policy  # type: ignore[arg-type]  # checked by replace itself
+    errors, known = ErrorList(), [f.name for f in fields(policy)]
+    for name in changes:
+        if name not in known:
+            errors.add("part of a policy", name, "the name of one", tip=nearest(name, known))
+    errors.raise_if_any()
+    return replace(policy, **changes) if changes else policy  # type: ignore[arg-type]  # values are the caller's

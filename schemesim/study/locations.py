@@ -355,7 +355,10 @@ def _check(
     errors = ErrorList()
     known = program.plant.section
     for at in locations:
-        if at.section not in known:
+        item: object = at
+        if not isinstance(item, Location):
+            errors.add("location", item, "a Location", tip=_as_location(item))
+        elif at.section not in known:
             errors.add("section", at.section, "a section", tip=nearest(at.section, known))
     mistake = limit_mistake(limit_us)
     if mistake is not None:
@@ -364,8 +367,13 @@ def _check(
         if not 0 <= rate < float("inf"):
             errors.add(f"faults per year at {at}", rate, "a finite number of zero or more")
         if at not in locations:
-            errors.add("location of a fault frequency", str(at), "one of the locations studied")
+            tip = _as_location(at)
+            errors.add("location of a fault frequency", str(at), "one of the locations studied", tip=tip)
     errors.raise_if_any()
+
+
+def _as_location(item: object) -> str:
+    return f"Location({item!r}) is a fault there" if isinstance(item, str) else ""
 
 
 def _by_role(role: Role) -> Callable[[LocationResult], Bracket]:

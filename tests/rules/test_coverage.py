@@ -398,5 +398,5 @@ def test_table_and_text() -> None:
         "             tripped needlessly Alder.F1.CB, Alder.G1.CB",
     ]
     assert audit._repr_html_().count("<tr") == 1 + len(audit.rows)
-    with pytest.raises(KeyError):
+    with pytest.raises(InputError, match="no such section"):
         audit["no such section"]
