@@ -15,6 +15,9 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
 CELL_IN = 0.2
+LETTER_IN = 0.085
+HEADING_IN = 0.17
+"""Of the stations' names: room for a bold letter, and the height of a line."""
 CLASSES = (
     (0.5, 9.0, "1/2 or more"),
     (1e-2, 6.8, "10⁻² or more"),
@@ -57,13 +60,20 @@ def plot_map(
     ordered = sorted(rows, key=lambda r: r.at(column))
     longest = max((len(r.name) for r in rows), default=0)
     wide = max((len(_short(b, s)) for s, some in groups.items() for b in some), default=0)
-    left, top = 0.3 + longest * 0.062, 0.75 + wide * 0.058
+    headings = _headings(groups, column)
+    raised = max((level for *_, level in headings), default=0)
+    left, top = 0.3 + longest * 0.062, 0.75 + wide * 0.058 + raised * HEADING_IN
     width = left + 0.3 + max(len(names), 12) * CELL_IN
     height = max(len(rows), 1) * CELL_IN
     ax = new_axes(ax, height, width_in=width, left_in=left, right_in=0.3, top_in=top, bottom_in=0.75)
     ax.set_xlim(-0.5, max(len(names), 12) - 0.5)
     ax.set_ylim(len(rows) - 0.5, -0.5)
     _bands(ax, groups, column, len(rows))
+    for station, middle, level in headings:
+        ax.annotate(
+            station, (middle, 1), (0, 8 + wide * 4.4 + level * HEADING_IN * 72), xycoords=("data", "axes fraction"),
+            textcoords="offset points", ha="center", va="bottom", fontsize=FONT_PT, fontweight="bold",
+        )  # fmt: skip
     for y, row in enumerate(ordered):
         for b in sorted(row.intended & set(column)):
             _frame(ax, column[b], y, f"intended: {row.name}: {b}")
@@ -94,19 +104,28 @@ def _short(name: str, group: str) -> str:
     return name.removeprefix(f"{group}.") if group else name
 
 
+def _headings(groups: Mapping[str, Sequence[str]], column: Mapping[str, int]) -> list[tuple[str, float, int]]:
+    """Name, middle and level of each group's heading: one that would run into its neighbour is raised."""
+    found: list[tuple[str, float, int]] = []
+    ends: list[float] = []
+    for station, some in groups.items():
+        if some:
+            words = station or "others"
+            middle, half = (column[some[0]] + column[some[-1]]) / 2, len(words) * LETTER_IN / CELL_IN / 2
+            level = next((n for n, end in enumerate(ends) if middle - half >= end), len(ends))
+            ends[level : level + 1] = [middle + half]
+            found.append((words, middle, level))
+    return found
+
+
 def _bands(ax: Axes, groups: Mapping[str, Sequence[str]], column: Mapping[str, int], rows: int) -> None:
-    """A grey ground under every other station, its name above, and hair lines between rows."""
-    longest = max((len(_short(b, station)) for station, some in groups.items() for b in some), default=0)
-    for n, (station, some) in enumerate(groups.items()):
+    """A grey ground under every other station, and hair lines between rows."""
+    for n, some in enumerate(groups.values()):
         if not some:
             continue
         first, last = column[some[0]], column[some[-1]]
         if n % 2 == 0:
             ax.axvspan(first - 0.5, last + 0.5, facecolor="#F1F1F1", edgecolor="none", zorder=0)
-        ax.annotate(
-            station or "others", ((first + last) / 2, 1), (0, 8 + longest * 4.4), xycoords=("data", "axes fraction"),
-            textcoords="offset points", ha="center", va="bottom", fontsize=FONT_PT, fontweight="bold",
-        )  # fmt: skip
     for y in range(rows + 1):
         ax.axhline(y - 0.5, color="#E2E2E2", linewidth=0.4, zorder=1)
 

@@ -303,6 +303,18 @@ def test_the_map_is_sorted_and_tells_intended_from_beyond() -> None:
     assert sizes[0] > sizes[1]
 
 
+def test_headings_of_narrow_stations_in_the_map_do_not_run_together() -> None:
+    names = {"Heron Mill": ["Heron Mill.1", "Heron Mill.2"], "Quarry Bank": ["Quarry Bank.1"], "": ["G1.unit"]}
+    ax = plot_map([PlaceRow("F1", frozenset({"Heron Mill.1"}), {"Heron Mill.1": 1.0})], names, title="what opens")
+    figure = ax.figure
+    assert isinstance(figure, Figure)
+    figure.savefig(io.BytesIO(), format="png")
+    headings = [t for t in ax.texts if t.get_text() in ("Heron Mill", "Quarry Bank", "others")]
+    boxes = [t.get_window_extent() for t in (*headings, ax.title, ax._left_title)]  # type: ignore[attr-defined]
+    assert len(headings) == 3
+    assert not any(a.overlaps(b) for n, a in enumerate(boxes[:3]) for b in (*boxes[:n], boxes[4]))
+
+
 def test_dependability_and_security_turn_by_turn() -> None:
     figures = [
         Figures("1oo1", "station", "Alder", Bracket(0.99, 0.992), Bracket(0.999, 0.9992), Bracket(0, 0)),
