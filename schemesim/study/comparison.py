@@ -105,26 +105,35 @@ class Comparison:
         return to_html(self.table())
 
 
-def compare(studies: Mapping[str, LocationStudy]) -> Comparison:
+def compare(studies: Mapping[str, LocationStudy], *, own_places: bool = False) -> Comparison:
     """Put the studies of several variants side by side; the first is the base.
 
     Parameters
     ----------
     studies : mapping of variant name to LocationStudy
         Of the same locations, with the same limit and frequencies.
+    own_places : bool
+        The variants are plants of their own (other positions of CTs, another layout), so that their
+        sections differ: each study has its own locations, weighted by its own frequencies.
 
     Raises
     ------
     InputError
-        With fewer than one study, or studies of different locations, limits or frequencies.
+        With fewer than one study; studies of different limits; with ``own_places``, a study without frequencies;
+        without, studies of different locations or frequencies.
     """
     if not studies:
         raise reject("studies", "none", "at least one")
     base_name, base = next(iter(studies.items()))
     for name, study in studies.items():
+        if own_places and study.frequencies is None:
+            raise reject(f"study {name!r}", "no frequencies", "faults per year, as locations differ in number")
         same_places = [r.location for r in study.results] == [r.location for r in base.results]
-        if not same_places or study.options.limit_us != base.options.limit_us or study.frequencies != base.frequencies:
-            raise reject(f"study {name!r}", "another", f"the locations, limit and frequencies of {base_name!r}")
+        same = own_places or (same_places and study.frequencies == base.frequencies)
+        if not same or study.options.limit_us != base.options.limit_us:
+            expected = f"the {'' if own_places else 'locations, frequencies and '}limit of {base_name!r}"
+            tip = "" if own_places else "own_places=True compares plants that differ"
+            raise reject(f"study {name!r}", "another", expected, tip=tip)
     figures = {name: _figures(study) for name, study in studies.items()}
     rows = []
     for measure, before in figures[base_name].items():

@@ -157,7 +157,7 @@ def _row(r: Difference) -> dict[str, object]:
 
 
 def study_variants(
-    explorer: Explorer,
+    explorer: Explorer | Mapping[str, Explorer],
     programs: Mapping[str, Program],
     values: Values | None = None,
     *,
@@ -169,8 +169,9 @@ def study_variants(
 
     Parameters
     ----------
-    explorer : Explorer
-        The fault set, and how far trees go.
+    explorer : Explorer or mapping of variant name to Explorer
+        The fault set, and how far trees go. One for each variant where the plants differ (other positions of
+        CTs, another layout), so that each has faults at its own sections.
     programs : mapping of variant name to Program
         The first is the base.
     values : Values or None
@@ -184,7 +185,8 @@ def study_variants(
     Raises
     ------
     InputError
-        Without a variant, or for numbers that are not as stated.
+        Without a variant or its explorer, with one explorer for plants that differ, or for numbers that are not as
+        stated.
     """
     errors = ErrorList()
     if not programs:
@@ -197,14 +199,26 @@ def study_variants(
         errors.add("trials", trials, "0, or two or more for an interval")
     if not 0 < confidence < 1:
         errors.add("confidence", confidence, "a number between 0 and 1, e.g. 0.95")
+    explorers = explorer if isinstance(explorer, Mapping) else dict.fromkeys(programs, explorer)
+    for name in programs:
+        if name not in explorers:
+            errors.add("explorer", "none", f"one for each variant; {name!r} has none", tip=nearest(name, explorers))
+    plants = {name: program.plant for name, program in programs.items()}
+    for name, plant in plants.items():
+        other = next((n for n in plants if explorers.get(n) is explorers.get(name) and plants[n] != plant), None)
+        if name in explorers and other is not None:
+            errors.add("explorer", f"one for {other!r} and {name!r}", "an explorer for each, as their plants differ")
+            break
     errors.raise_if_any()
     priced = Values() if values is None else values
-    ledgers = {name: explorer.ledger(program) for name, program in programs.items()}
+    ledgers = {name: explorers[name].ledger(program) for name, program in programs.items()}
     base_name, base = next(iter(ledgers.items()))
     drawn: dict[str, Mapping[str, Floats]] = {}
     if trials:
-        horizon = explorer.horizon_us
-        drawn = {n: trial_figures(x, MEASURES, priced, trials, seed, horizon_us=horizon) for n, x in ledgers.items()}
+        drawn = {
+            n: trial_figures(x, MEASURES, priced, trials, seed, horizon_us=explorers[n].horizon_us)
+            for n, x in ledgers.items()
+        }
     rows: list[Difference] = []
     for measure, f in MEASURES.items():
         for name, ledger in ledgers.items():

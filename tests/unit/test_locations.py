@@ -200,7 +200,7 @@ def test_only_like_is_compared() -> None:
         study(feeder_scheme(), locations=[F1], limit_us=1000),
         study(feeder_scheme(), locations=[F1], frequencies={F1: 1.0}),
     ):
-        with pytest.raises(InputError, match="locations, limit and frequencies"):
+        with pytest.raises(InputError, match="locations, frequencies and limit"):
             compare({"a": one, "b": other})
     with pytest.raises(InputError, match="at least one"):
         compare({})

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from itertools import product
 
 import numpy as np
@@ -10,16 +11,21 @@ import pytest
 
 from schemesim.engine.answers import FixedAnswers
 from schemesim.engine.event import run_event
+from schemesim.engine.program import Program, compile_scheme
+from schemesim.engine.sensing import LogicalSensing
 from schemesim.errors import InputError
-from schemesim.plant.layouts import Bay, feeder, generator, line, single_bus
+from schemesim.plant.layouts import Bay, CtPlacement, feeder, generator, line, single_bus
 from schemesim.plant.model import Location, Plant, PlantBuilder
 from schemesim.scheme.delays import Fixed
 from schemesim.scheme.distributions import Uniform
+from schemesim.scheme.dress import dress
 from schemesim.scheme.failure_data import FailureData, Override
 from schemesim.scheme.model import ComponentKind, FailureMode
 from schemesim.scheme.policy import single_set
 from schemesim.study.brackets import Bracket
+from schemesim.study.comparison import compare
 from schemesim.study.edits import ADDITIONS, Edit, Recipe, addition
+from schemesim.study.locations import study_locations
 from schemesim.study.measures import excess
 from schemesim.study.money import Values
 from schemesim.study.risk import MEASURES, Explorer, event_cost
@@ -280,3 +286,69 @@ def test_the_figures_of_the_demo_agree_and_need_a_fifth_of_the_trials_at_most() 
         half = (pair.high - pair.estimate) / 1.96 * 4.5  # by chance in one of 10^5
         assert row.difference.low - half <= pair.estimate <= row.difference.high + half, measure
         assert row.difference.high < 0, measure  # better, for certain
+
+
+NO_FAILURES = FailureData(modes={}, no_fault_per_yr={})
+SHORT = 0.01
+"""Faults per year on each short conductor at Birch's line breaker."""
+
+
+def standing(ct: CtPlacement) -> tuple[Program, dict[Location, float]]:
+    """Two stations with the CTs of Birch's line breaker as told, and the faults at this breaker."""
+    b = PlantBuilder(length_unit="km")
+    line(b, "L1", length=40, kv=132)
+    generator(b, "G1", station="Alder")
+    generator(b, "G2", station="Birch")
+    feeder(b, "F2", station="Birch", load_mw=20)
+    single_bus(b, "Alder", [Bay("G1", "G1"), Bay("L1", "L1", at=0)], kv=132)
+    single_bus(b, "Birch", [Bay("L1", "L1", at=1, ct=ct), Bay("G2", "G2"), Bay("F2", "F2")], kv=132)
+    built = b.build()
+    shorts = [Location(s.name) for s in built.sections if s.name in ("Birch.L1.b", "Birch.L1.c")]
+    faults = {Location("L1", 0.5): 0.4, **dict.fromkeys(shorts, SHORT)}
+    return compile_scheme(built, dress(built, single_set(), NO_FAILURES)), faults
+
+
+def test_variants_may_be_plants_of_their_own_each_with_its_explorer() -> None:
+    places = {"both": standing(CtPlacement.BOTH), "circuit": standing(CtPlacement.CIRCUIT_SIDE)}
+    explorers = {n: Explorer(f, lambda _: 150_000, no_fault=False) for n, (_, f) in places.items()}
+    programs = {n: p for n, (p, _) in places.items()}
+    found = study_variants(explorers, programs, VALUES)
+    late = found.of("late_or_uncleared_per_yr", "circuit")
+    assert float(late.value.low) == pytest.approx(SHORT)  # every fault in the dead zone, nothing else
+    assert late.verdict == "worse"
+    assert found.of("late_or_uncleared_per_yr", "both").value.high == pytest.approx(0, abs=1e-9)
+    drawn = study_variants(explorers, programs, VALUES, trials=20, seed=1).of("late_or_uncleared_per_yr", "circuit")
+    assert drawn.paired is not None
+    assert drawn.paired.estimate == pytest.approx(SHORT)
+
+
+def test_plants_that_differ_need_an_explorer_each() -> None:
+    places = {"both": standing(CtPlacement.BOTH), "circuit": standing(CtPlacement.CIRCUIT_SIDE)}
+    programs = {n: p for n, (p, _) in places.items()}
+    one = Explorer({Location("L1", 0.5): 0.4}, lambda _: 150_000)
+    with pytest.raises(InputError, match="an explorer for each, as their plants differ"):
+        study_variants(one, programs)
+    with pytest.raises(InputError, match="did you mean 'circuits'"):
+        study_variants({"both": one, "circuits": one}, programs)
+
+
+def test_studies_of_plants_that_differ_are_compared_on_their_own_places() -> None:
+    studies = {}
+    for name, ct in (("both", CtPlacement.BOTH), ("circuit", CtPlacement.CIRCUIT_SIDE)):
+        program, faults = standing(ct)
+        studies[name] = study_locations(program, LogicalSensing(), list(faults), limit_us=150_000, frequencies=faults)
+    with pytest.raises(InputError, match="own_places=True"):
+        compare(studies)
+    found = compare(studies, own_places=True)
+    assert found.of("faults_per_yr", "both").value.low == pytest.approx(0.4 + 2 * SHORT)
+    assert found.of("faults_per_yr", "circuit").value.low == pytest.approx(0.4 + SHORT)
+    row = found.of("late_or_uncleared_per_yr", "circuit")
+    assert row.verdict == "worse"
+    assert float(row.difference.low) == pytest.approx(SHORT)
+    assert found.of("p_within_limit", "circuit").value.low == pytest.approx(0.4 / 0.41)
+    bare = replace(studies["circuit"], frequencies=None)
+    with pytest.raises(InputError, match="faults per year"):
+        compare({"both": studies["both"], "circuit": bare}, own_places=True)
+    early = replace(studies["circuit"], options=replace(studies["circuit"].options, limit_us=100_000))
+    with pytest.raises(InputError, match="expected the limit of 'both'"):
+        compare({"both": studies["both"], "circuit": early}, own_places=True)
