@@ -70,6 +70,29 @@ def cover(paths: list[str], into: Path) -> None:
     into.write_text(json.dumps(found_all), encoding="utf-8")
 
 
+def merged(old: dict[str, Any], new: dict[str, Any]) -> dict[str, Any]:
+    """A map of the tests of both; of a test in both, as the newer has it."""
+    names = [*(t for t in old["tests"] if t not in set(new["tests"])), *new["tests"]]
+    number = {name: n for n, name in enumerate(names)}
+    seconds = dict(zip([*old["tests"], *new["tests"]], [*old["seconds"], *new["seconds"]], strict=True))
+    fresh = set(new["tests"])
+    lines: dict[str, dict[str, set[int]]] = {}
+    for found in (old, new):
+        sets = [
+            {number[t] for t in map(found["tests"].__getitem__, here) if found is new or t not in fresh}
+            for here in found["sets"]
+        ]
+        for file, by_line in found["lines"].items():
+            for line, which in by_line.items():
+                lines.setdefault(file, {}).setdefault(line, set()).update(sets[which])
+    kept: dict[tuple[int, ...], int] = {}
+    told = {
+        file: {line: kept.setdefault(tuple(sorted(here)), len(kept)) for line, here in by_line.items()}
+        for file, by_line in lines.items()
+    }
+    return {"tests": names, "seconds": [seconds[n] for n in names], "sets": list(kept), "lines": told}
+
+
 def spread(tests: list[str], seconds: Mapping[str, float]) -> list[str]:
     """The shortest test of every file, then the second of every file, and so on."""
     taken: Counter[str] = Counter()

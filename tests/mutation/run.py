@@ -1,19 +1,24 @@
 """Mutation run: how many small mistakes in the engine, the studies and the zone logic do the tests tell?
 
-    python tests/mutation/run.py map [TESTS ...]       once: which tests run which lines (needs ``coverage``)
-    python tests/mutation/run.py sample --count 400    a seeded random sample of mutants, each tried
-    python tests/mutation/run.py report                score and survivors so far
+    python tests/mutation/run.py map [TESTS ...]        which tests run which lines (needs ``coverage``)
+    python tests/mutation/run.py map --add TESTS ...    more tests, or tests written anew, over the same sources
+    python tests/mutation/run.py sample --count 400     a seeded random sample of mutants, each tried
+    python tests/mutation/run.py again                  those that survived and are not explained, once more
+    python tests/mutation/run.py verify                 the tests that told mutants, with no change: they have to pass
+    python tests/mutation/run.py report                 score and survivors so far
 
 Work goes on in a copy of the committed tree in ``--into`` (by default a folder for temporary files), never in the
 working tree. ``map`` takes that copy; ``sample`` mutates it, one file at a time, and runs the tests that cover the
-changed lines, short ones of every file first, until one fails. Results are kept a line each, so a sample that was
-broken off goes on where it stopped. A mutant whose tests do not end counts as told, and so does one that cannot be
-imported.
+changed lines, short ones of every file first, until one fails. Results are kept a line each, the last of a mutant
+counts, so a sample that was broken off goes on where it stopped. A mutant whose tests do not end counts as told, and
+so does one that cannot be imported. Survivors that no test can tell, or that change nothing a user sees, stand in
+``survivors.toml``, each with its reason; the score is given with them and without.
 """
 
 from __future__ import annotations
 
 import argparse
+import contextlib
 import json
 import os
 import random
@@ -22,11 +27,10 @@ import subprocess
 import sys
 import tempfile
 import time
+import tomllib
 from collections import Counter
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import asdict
 from pathlib import Path
-from queue import Queue
 from typing import Any
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -34,9 +38,11 @@ if __name__ == "__main__":
     sys.path[0] = str(ROOT)
 
 from schemesim.study.intervals import wilson  # noqa: E402  # only now can it be found
-from tests.mutation.covering import choose  # noqa: E402
+from tests.mutation.covering import choose, merged  # noqa: E402
+from tests.mutation.forking import ended, environment, preload, start, wait  # noqa: E402
 from tests.mutation.mutants import Mutant, mutants_of, mutated  # noqa: E402
 
+EXPLAINED = Path(__file__).with_name("survivors.toml")
 TARGETS = (
     "schemesim/engine", "schemesim/study", "schemesim/plant/zones.py", "schemesim/plant/coverage.py",
     "schemesim/plant/current.py", "schemesim/plant/paths.py", "schemesim/plant/grid.py",
@@ -53,25 +59,30 @@ def files(tree: Path) -> list[str]:
     return [str(p.relative_to(tree)) for p in found if p.stat().st_size]
 
 
-def environment(tree: Path) -> dict[str, str]:
-    """Of a run in a copy: its own package, no byte code, one thread."""
-    env = {k: v for k, v in os.environ.items() if k not in ("PYTEST_ADDOPTS", "PYTHONPATH")}
-    return env | {"PYTHONPATH": str(tree), "PYTHONDONTWRITEBYTECODE": "1", "OMP_NUM_THREADS": "1", "MPLBACKEND": "Agg"}
+def archived(paths: list[str], tree: Path) -> None:
+    """Take files as committed."""
+    archive = subprocess.run(["git", "-C", str(ROOT), "archive", "HEAD", *paths], check=True, capture_output=True)
+    subprocess.run(["tar", "-x", "-C", str(tree)], input=archive.stdout, check=True)
 
 
-def make_map(into: Path, tests: list[str]) -> None:
-    """Copy the committed tree and map tests to lines."""
-    tree = into / "tree"
-    shutil.rmtree(into, ignore_errors=True)
-    tree.mkdir(parents=True)
-    archive = subprocess.run(["git", "-C", str(ROOT), "archive", "HEAD"], check=True, capture_output=True).stdout
-    subprocess.run(["tar", "-x", "-C", str(tree)], input=archive, check=True)
+def make_map(into: Path, tests: list[str], add: bool) -> None:
+    """Copy the committed tree, or the tests to be added, and map tests to lines."""
+    tree, target = into / "tree", into / ("more.json" if add else "map.json")
+    if not add:
+        shutil.rmtree(into, ignore_errors=True)
+        tree.mkdir(parents=True)
+    archived(tests if add else [], tree)
+    run_here = [t for t in tests if not t.endswith(".py") or Path(t).name.startswith("test_")] if add else tests
     script = str(Path(__file__).with_name("covering.py"))
-    command = [sys.executable, script, str(into / "map.json"), *(tests or ["tests", "schemesim"])]
+    command = [sys.executable, script, str(target), *(run_here or ["tests", "schemesim"])]
     started = time.monotonic()
-    subprocess.run(command, cwd=tree, env=environment(tree), check=True)
-    found = json.loads((into / "map.json").read_text(encoding="utf-8"))
+    env = environment(tree) | {"PYTHONDONTWRITEBYTECODE": "1"}
+    subprocess.run(command, cwd=tree, env=env, check=True)
+    found = json.loads(target.read_text(encoding="utf-8"))
     print(f"{len(found['tests'])} tests mapped in {time.monotonic() - started:.0f} s")
+    if add:
+        whole = merged(json.loads((into / "map.json").read_text(encoding="utf-8")), found)
+        (into / "map.json").write_text(json.dumps(whole), encoding="utf-8")
 
 
 def sample(into: Path, count: int, seed: int) -> list[Mutant]:
@@ -83,118 +94,187 @@ def sample(into: Path, count: int, seed: int) -> list[Mutant]:
     return every[:count]
 
 
-def try_one(tree: Path, mutant: Mutant, found: dict[str, Any], budget_s: float) -> dict[str, Any]:
-    """Make the change in a copy, run the tests that cover it, take it back."""
-    tests = choose(found, mutant.file, mutant.first, mutant.last, budget_s)
-    row = asdict(mutant) | {"tests": len(tests)}
-    if not tests:
-        return row | {"end": UNCOVERED, "seconds": 0.0}
-    path = tree / mutant.file
-    right = path.read_text(encoding="utf-8")
-    started = time.monotonic()
-    number = {name: n for n, name in enumerate(found["tests"])}
-    nominal = sum(found["seconds"][number[t]] for t in tests)
-    command = [sys.executable, "-m", "pytest", "-x", "-q", "-p", "no:cacheprovider", "-n0", "--no-header", *tests]
-    try:
-        path.write_text(mutated(right, mutant), encoding="utf-8")
-        done = subprocess.run(
-            command, cwd=tree, env=environment(tree), capture_output=True, text=True, timeout=60 + 10 * nominal
-        )
-        end = SURVIVED if done.returncode == 0 else KILLED
-        by = next((x for x in done.stdout.splitlines() if x.startswith(("FAILED", "ERROR"))), "")
-    except subprocess.TimeoutExpired:
-        end, by = TIMEOUT, ""
-    finally:
-        path.write_text(right, encoding="utf-8")
-    return row | {"end": end, "by": by[:160], "seconds": round(time.monotonic() - started, 2)}
+class Trial:
+    """A mutant being tried in a copy of the tree."""
+
+    def __init__(self, tree: Path, mutant: Mutant, tests: list[str], nominal_s: float, number: int) -> None:
+        self.tree, self.mutant, self.tests = tree, mutant, tests
+        self.limit_s = 60 + 10 * nominal_s
+        self.path, self.log = tree / mutant.file, tree.with_suffix(".log")
+        self.right, self.times = self.path.read_text(encoding="utf-8"), self.path.stat()
+        self.path.write_text(mutated(self.right, mutant), encoding="utf-8")
+        os.utime(self.path, (number, number))  # a time of its own, so that no byte code of another is taken for it
+        self.started = time.monotonic()
+        self.pid = start(tree, tests, self.log)
+
+    def end(self) -> dict[str, Any] | None:
+        """The result, and the source as it was; None while tests run."""
+        code = ended(self.pid, self.started, self.limit_s)
+        if code is None:
+            return None
+        self.path.write_text(self.right, encoding="utf-8")
+        os.utime(self.path, ns=(self.times.st_atime_ns, self.times.st_mtime_ns))
+        said = self.log.read_text(encoding="utf-8", errors="replace").splitlines()
+        by = next((x for x in said if x.startswith(("FAILED", "ERROR"))), "") if code > 0 else ""
+        end = TIMEOUT if code == -1 else KILLED if code else SURVIVED
+        spent = round(time.monotonic() - self.started, 2)
+        return asdict(self.mutant) | {"tests": len(self.tests), "end": end, "by": by[:200], "seconds": spent}
 
 
 def check_unmutated(tree: Path, found: dict[str, Any]) -> None:
     """The tests have to run in the copy, on the copy's own package."""
-    code = "import schemesim, sys; sys.exit(not schemesim.__file__.startswith(sys.argv[1]))"
-    subprocess.run([sys.executable, "-c", code, str(tree)], cwd=tree, env=environment(tree), check=True)
     few = [found["tests"][n] for n in sorted(range(len(found["tests"])), key=lambda n: found["seconds"][n])[:20]]
-    command = [sys.executable, "-m", "pytest", "-x", "-q", "-p", "no:cacheprovider", "-n0", *few]
-    subprocess.run(command, cwd=tree, env=environment(tree), check=True, stdout=subprocess.DEVNULL)
+    code = wait(start(tree, few, tree.with_suffix(".log")))
+    if code:
+        raise SystemExit(f"tests fail with no change: {tree.with_suffix('.log').read_text(encoding='utf-8')[-3000:]}")
 
 
-def run(into: Path, count: int, seed: int, workers: int, budget_s: float) -> None:
-    """Try a sample; what was tried before is not tried again."""
+def run(into: Path, todo: list[Mutant], seed: int, workers: int, budget_s: float) -> None:
+    """Try mutants and keep the results."""
     found = json.loads((into / "map.json").read_text(encoding="utf-8"))
-    chosen = sample(into, count, seed)
-    results = into / f"results-{seed}.jsonl"
-    known = {(r["file"], r["node"], r["kind"]) for r in rows(results)}
-    todo = [m for m in chosen if (m.file, m.node, m.kind) not in known]
-    print(f"{len(chosen) - len(todo)} tried before, {len(todo)} to try")
-    if not todo:
-        return
-    trees: Queue[Path] = Queue()
-    with tempfile.TemporaryDirectory(prefix="mutation-") as place:
-        for n in range(workers):
-            copy = Path(place) / str(n)
+    number = {name: n for n, name in enumerate(found["tests"])}
+    waiting, running, done = list(reversed(todo)), list[Trial](), 0
+    with tempfile.TemporaryDirectory(prefix="mutation-") as place, results_of(into, seed).open("a") as out:
+        free = [Path(place) / str(n) for n in range(workers)]
+        for copy in free:
             shutil.copytree(into / "tree", copy)
-            trees.put(copy)
-        check_unmutated(copy, found)
-
-        def work(mutant: Mutant) -> dict[str, Any]:
-            tree = trees.get()
-            try:
-                return try_one(tree, mutant, found, budget_s)
-            finally:
-                trees.put(tree)
-
-        with ThreadPoolExecutor(workers) as pool, results.open("a", encoding="utf-8") as out:
-            for n, (mutant, row) in enumerate(zip(todo, pool.map(work, todo), strict=True), 1):
+        preload(free[0])
+        check_unmutated(free[0], found)
+        while waiting or running:
+            ready: list[dict[str, Any]] = []
+            while waiting and free:
+                mutant = waiting.pop()
+                tests = choose(found, mutant.file, mutant.first, mutant.last, budget_s)
+                if not tests:
+                    ready.append(asdict(mutant) | {"tests": 0, "end": UNCOVERED, "by": "", "seconds": 0.0})
+                    continue
+                nominal = sum(found["seconds"][number[t]] for t in tests)
+                running.append(Trial(free.pop(), mutant, tests, nominal, 1_000_000_000 + 2 * len(waiting)))
+            for trial in list(running):
+                row = trial.end()
+                if row is not None:
+                    running.remove(trial)
+                    free.append(trial.tree)
+                    ready.append(row)
+            for row in ready:
+                done += 1
                 out.write(json.dumps(row, ensure_ascii=False) + "\n")
                 out.flush()
-                print(f"{n}/{len(todo)} {row['end']:9} {row['seconds']:6.1f} s  {mutant.name}", flush=True)
+                where = f"{row['file']}:{row['first']}: {row['what']}"
+                print(f"{done}/{len(todo)} {row['end']:9} {row['seconds']:6.1f} s  {where}", flush=True)
+            time.sleep(0.05)
+
+
+def verify(into: Path, found: list[dict[str, Any]]) -> int:
+    """Run with no change each test that told a mutant; how many fail."""
+    told = [r["by"].split(" - ")[0].partition(" ")[2] for r in found if r["end"] == KILLED and "::" in r["by"]]
+    with tempfile.TemporaryDirectory(prefix="mutation-") as place:
+        shutil.copytree(into / "tree", tree := Path(place) / "0")
+        preload(tree)
+        code = wait(start(tree, sorted(set(told)), log := tree.with_suffix(".log"), ()), 3600)
+        print(log.read_text(encoding="utf-8")[-2000:])
+    print(f"{len(set(told))} tests told {len(told)} mutants; with no change they {'fail' if code else 'pass'}")
+    return code
+
+
+def results_of(into: Path, seed: int) -> Path:
+    """The file that results are kept in."""
+    return into / f"results-{seed}.jsonl"
+
+
+def key(row: dict[str, Any]) -> tuple[str, int, int]:
+    """Which mutant a row is of."""
+    return row["file"], row["node"], row["kind"]
 
 
 def rows(results: Path) -> list[dict[str, Any]]:
-    """Results so far; a last line that was cut off is left out."""
-    if not results.exists():
-        return []
-    out = []
-    for text in results.read_text(encoding="utf-8").splitlines():
-        try:
-            out.append(json.loads(text))
-        except json.JSONDecodeError:
-            continue
-    return out
+    """The last result of each mutant; a last line that was cut off is left out."""
+    out: dict[tuple[str, int, int], dict[str, Any]] = {}
+    for text in results.read_text(encoding="utf-8").splitlines() if results.exists() else ():
+        with contextlib.suppress(json.JSONDecodeError):
+            row = json.loads(text)
+            out[key(row)] = row
+    return list(out.values())
 
 
-def report(found: list[dict[str, Any]]) -> str:
-    """The score with its interval, and what survived."""
+def explained(path: Path = EXPLAINED) -> dict[tuple[str, str, str], str]:
+    """Survivors read: file, line of source and change, and which kind of harmless each is."""
+    if not path.exists():
+        return {}
+    entries = tomllib.loads(path.read_text(encoding="utf-8"))["survivor"]
+    return {(e["file"], e["line"], e["what"]): e["kind"] for e in entries}
+
+
+def with_line(found: list[dict[str, Any]], tree: Path) -> list[dict[str, Any]]:
+    """Rows with the line of source they change, by which an explanation is found though lines move."""
+    text = {f: (tree / f).read_text(encoding="utf-8").splitlines() for f in {r["file"] for r in found}}
+    return [r | {"line": text[r["file"]][r["first"] - 1].strip()} for r in found]
+
+
+def scored(told: int, of: int) -> str:
+    """A score with its interval."""
+    low, high = wilson(told, of)
+    return f"{told}/{of} = {told / of:.1%} (95 % Wilson {low:.1%} to {high:.1%})"
+
+
+def report(found: list[dict[str, Any]], why: dict[tuple[str, str, str], str]) -> str:
+    """The score with its interval, raw and without what is explained, and what survived."""
     if not found:
         return "nothing tried yet"
     ends = Counter(r["end"] for r in found)
     told = ends[KILLED] + ends[TIMEOUT]
-    low, high = wilson(told, len(found))
-    seconds = sum(r["seconds"] for r in found)
+    alive = [r for r in found if r["end"] in (SURVIVED, UNCOVERED)]
+    kinds = Counter(why[k] for r in alive if (k := (r["file"], r["line"], r["what"])) in why)
+    lines = [
+        f"{r['end']}{f' ({kind})' if (kind := why.get((r['file'], r['line'], r['what']))) else ''}: "
+        f"{r['file']}:{r['first']}: {r['what']} ({r['tests']} tests)"
+        for r in alive
+    ]
     counts = ", ".join(f"{n} {end}" for end, n in sorted(ends.items()))
-    alive = (r for r in found if r["end"] in (SURVIVED, UNCOVERED))
-    lines = [f"{r['end']}: {r['file']}:{r['first']}: {r['what']} ({r['tests']} tests)" for r in alive]
-    score = f"score {told}/{len(found)} = {told / len(found):.1%} (95 % Wilson {low:.1%} to {high:.1%}): {counts}"
-    return "\n".join([*sorted(lines), f"{score}; {seconds / len(found):.1f} s a mutant"])
+    seconds = sum(r["seconds"] for r in found) / len(found)
+    lines = [*sorted(lines), f"score {scored(told, len(found))}: {counts}; {seconds:.1f} s a mutant"]
+    if kinds:
+        said = ", ".join(f"{n} {kind}" for kind, n in sorted(kinds.items()))
+        net = len(found) - kinds["equivalent"]
+        lines.append(f"explained: {said}")
+        lines.append(f"score without the equivalent {scored(told, net)}")
+        lines.append(f"score without the harmless either {scored(told, net - kinds['harmless'])}")
+    return "\n".join(lines)
 
 
 def main(arguments: list[str]) -> int:
     """See the top of the file."""
     parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
-    parser.add_argument("command", choices=("map", "sample", "report"))
+    parser.add_argument("command", choices=("map", "sample", "again", "verify", "report"))
     parser.add_argument("tests", nargs="*", help="of map: files or folders of tests (all of them by default)")
+    parser.add_argument("--add", action="store_true", help="of map: to the map there is, over the same sources")
     parser.add_argument("--into", type=Path, default=Path(tempfile.gettempdir()) / "schemesim-mutation")
     parser.add_argument("--count", type=int, default=400)
     parser.add_argument("--seed", type=int, default=1)
     parser.add_argument("--workers", type=int, default=1)
     parser.add_argument("--budget", type=float, default=30.0, help="seconds of tests for a mutant, unmutated")
+    parser.add_argument("--without", nargs="*", default=[], help="of sample: names of files left for another time")
     asked = parser.parse_intermixed_args(arguments)
     if asked.command == "map":
-        make_map(asked.into, asked.tests)
+        make_map(asked.into, asked.tests, asked.add)
         return 0
+    tree, results = asked.into / "tree", results_of(asked.into, asked.seed)
+    found, why = with_line(rows(results), tree), explained()
+    if asked.command == "verify":
+        return verify(asked.into, found)
+    todo: list[Mutant] = []
     if asked.command == "sample":
-        run(asked.into, asked.count, asked.seed, asked.workers, asked.budget)
-    print(report(rows(asked.into / f"results-{asked.seed}.jsonl")))
+        known = {key(r) for r in found}
+        chosen = [m for m in sample(asked.into, asked.count, asked.seed) if Path(m.file).name not in asked.without]
+        todo = [m for m in chosen if (m.file, m.node, m.kind) not in known]
+        print(f"{len(chosen) - len(todo)} tried before, {len(todo)} to try")
+    elif asked.command == "again":
+        alive = [r for r in found if r["end"] in (SURVIVED, UNCOVERED)]
+        fields = Mutant.__dataclass_fields__
+        todo = [Mutant(**{f: r[f] for f in fields}) for r in alive if (r["file"], r["line"], r["what"]) not in why]
+    if todo:
+        run(asked.into, todo, asked.seed, asked.workers, asked.budget)
+    print(report(with_line(rows(results), tree), why))
     return 0
 
 

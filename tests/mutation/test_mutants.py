@@ -3,12 +3,29 @@
 from __future__ import annotations
 
 import ast
+import json
+import tomllib
+from pathlib import Path
 
 import pytest
 
-from tests.mutation.covering import choose, spread
+from tests.mutation.covering import choose, merged, spread
+from tests.mutation.forking import start, wait
 from tests.mutation.mutants import mutants_of, mutated
-from tests.mutation.run import KILLED, ROOT, SURVIVED, TARGETS, UNCOVERED, files, report, sample
+from tests.mutation.run import (
+    EXPLAINED,
+    KILLED,
+    ROOT,
+    SURVIVED,
+    TARGETS,
+    TIMEOUT,
+    UNCOVERED,
+    explained,
+    files,
+    report,
+    rows,
+    sample,
+)
 
 SOURCE = '''"""A text of 7 words, not to be changed."""
 
@@ -85,9 +102,65 @@ def test_a_longer_sample_begins_with_a_shorter(tmp_path: object, monkeypatch: py
 
 
 def test_the_report_gives_the_score_and_the_survivors() -> None:
-    row = {"file": "f.py", "first": 3, "what": "1 → 2", "tests": 4, "seconds": 2.0}
-    rows = [row | {"end": end} for end in (KILLED, KILLED, SURVIVED, UNCOVERED)]
-    text = report(rows)
+    row = {"file": "f.py", "first": 3, "what": "1 → 2", "tests": 4, "seconds": 2.0, "line": "x = 1"}
+    text = report([row | {"end": end} for end in (KILLED, KILLED, SURVIVED, UNCOVERED)], {})
     assert "survived: f.py:3: 1 → 2 (4 tests)" in text
     assert "score 2/4 = 50.0% (95 % Wilson 15.0% to 85.0%)" in text
-    assert report([]) == "nothing tried yet"
+    assert report([], {}) == "nothing tried yet"
+
+
+def test_the_score_without_what_is_explained_counts_only_what_is_explained() -> None:
+    row = {"file": "f.py", "first": 3, "what": "1 → 2", "tests": 4, "seconds": 2.0, "line": "x = 1"}
+    ends = [KILLED, KILLED, TIMEOUT, SURVIVED, SURVIVED, SURVIVED]
+    found = [row | {"end": end, "what": f"{n}"} for n, end in enumerate(ends)]
+    why = {
+        ("f.py", "x = 1", "3"): "equivalent",
+        ("f.py", "x = 1", "4"): "harmless",
+        ("f.py", "x = 1", "0"): "equivalent",
+    }
+    lines = report(found, why).splitlines()
+    assert lines[0] == "survived (equivalent): f.py:3: 3 (4 tests)"
+    assert [x.partition(" (95")[0] for x in lines[3:]] == [
+        "score 3/6 = 50.0%",
+        "explained: 1 equivalent, 1 harmless",
+        "score without the equivalent 3/5 = 60.0%",
+        "score without the harmless either 3/4 = 75.0%",
+    ]
+
+
+def test_the_last_result_of_a_mutant_counts(tmp_path: Path) -> None:
+    row = {"file": "f.py", "node": 3, "kind": 0}
+    kept = [row | {"end": SURVIVED}, row | {"node": 4, "end": KILLED}, row | {"end": KILLED}]
+    (tmp_path / "r").write_text("\n".join(map(json.dumps, kept)) + '\n{"file": "cut o')
+    assert [r["end"] for r in rows(tmp_path / "r")] == [KILLED, KILLED]
+    assert rows(tmp_path / "none") == []
+
+
+def test_maps_are_joined_and_a_test_written_anew_counts_as_it_is_now() -> None:
+    old = {"tests": ["a", "b"], "seconds": [1, 2], "sets": [[0, 1], [0]], "lines": {"f": {"1": 0, "2": 1}}}
+    new = {"tests": ["c", "b"], "seconds": [3, 4], "sets": [[0, 1], [0]], "lines": {"f": {"2": 0}, "g": {"7": 1}}}
+    found = merged(old, new)
+    assert dict(zip(found["tests"], found["seconds"], strict=True)) == {"a": 1, "b": 4, "c": 3}
+    of = {f"{f}{line}": choose(found, f, int(line), int(line), 99) for f, by in found["lines"].items() for line in by}
+    assert of == {"f1": ["a"], "f2": ["a", "c", "b"], "g7": ["c"]}
+
+
+def test_every_survivor_explained_is_a_mutant_with_a_kind_and_a_reason() -> None:
+    entries = tomllib.loads(EXPLAINED.read_text(encoding="utf-8"))["survivor"]
+    assert len({(e["file"], e["line"], e["what"]) for e in entries}) == len(entries) == len(explained())
+    assert {e["kind"] for e in entries} <= {"equivalent", "harmless"}
+    assert all(len(e["why"]) > 20 for e in entries)
+    assert all(e["file"].startswith(TARGETS) for e in entries)
+
+
+def test_a_child_runs_the_tests_of_the_copy_and_not_ours(tmp_path: Path) -> None:
+    """In the copy the version is another: the test in it passes there."""
+    (tmp_path / "schemesim").mkdir()
+    (tmp_path / "schemesim/__init__.py").write_text("WHERE = 'copy'\n")
+    (tmp_path / "tests").mkdir()
+    for name, wanted in (("good", "copy"), ("bad", "ours")):
+        text = f"from schemesim import WHERE\n\ndef test_it():\n    assert WHERE == {wanted!r}\n"
+        (tmp_path / f"tests/test_{name}.py").write_text(text)
+    codes = [wait(start(tmp_path, [f"tests/test_{name}.py"], tmp_path / "log")) for name in ("good", "bad")]
+    assert codes == [0, 1], (tmp_path / "log").read_text()
+    assert wait(start(tmp_path, ["tests/test_good.py"], tmp_path / "log"), limit_s=0.0) == -1

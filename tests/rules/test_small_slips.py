@@ -1,0 +1,50 @@
+"""What the rules say at their edges: where one more or less, or the other of two, would go unseen elsewhere."""
+
+from __future__ import annotations
+
+import pytest
+
+from schemesim.engine.inverse import AT_ONCE, FULL, Motion, speed_for
+from schemesim.scheme.model import Block, Latch
+from tests.rules.hand import FAILS, asked, breaker, case, fails, gate, openings, play, radial, relay, sense, trip
+
+
+@pytest.mark.parametrize(
+    ("failed", "wanted", "opens"),
+    [
+        ((), ["R1", "R2"], {}),  # set, then whether it is reset: it is, and reset wins
+        (("R1",), ["R1"], {}),  # never set: nobody asks for its reset
+        (("R2",), ["R1", "R2"], {"F1.CB": (20, 70)}),
+    ],
+)
+def test_r04_a_latch_at_rest_asks_for_its_set_input_first(
+    failed: tuple[str, ...], wanted: list[str], opens: dict[str, tuple[float, float]]
+) -> None:
+    blocks: list[Block] = [
+        sense("oc", "F1.CT"),
+        gate("set", "oc", unless=fails("R1")),
+        gate("reset", "oc", unless=fails("R2")),
+        Latch(name="l", set="set", reset="reset"),
+        trip("t", "l"),
+        gate("coil", "t"),
+        breaker("F1.CB", "coil"),
+    ]
+    bound = case(radial(), blocks, [relay("R1"), relay("R2")])
+    run = play(bound, *(f"{name}: {FAILS}" for name in failed))
+    assert asked(bound, run) == [f"{name}: {FAILS}" for name in wanted]
+    assert openings(run) == opens
+
+
+def test_r10_an_element_without_overtravel_has_no_travel_left_the_instant_it_resets() -> None:
+    moving = Motion().turn(0, speed_for(1000))
+    assert moving.at(999) < FULL
+    stopped = moving.turn(999, AT_ONCE)
+    assert (stopped.at(999), stopped.at(1000), stopped.due()) == (0, 0, None)
+
+
+def test_r10_a_disc_that_runs_on_gets_there_in_the_last_microsecond_of_its_overtravel() -> None:
+    moving = Motion().turn(0, speed_for(1000))
+    assert moving.turn(990, AT_ONCE, 10).due() == 1000
+    assert moving.turn(990, AT_ONCE, 9).due() is None
+    assert moving.turn(990, AT_ONCE, 9).at(999) == 999 * speed_for(1000)
+    assert moving.turn(990, AT_ONCE, 9).at(1000) == 0
