@@ -242,16 +242,16 @@ class EventRun:
 
     def _instant(self, _: simpy.Event) -> None:
         """One pass (rule R2)."""
-        self._called = False
-        now = int(self.env.now)
+        self._called, now = False, int(self.env.now)
         self._pass = self._pass + 1 if now == self._pass_time else 0
         self._pass_time = now
         expired = sorted(self._expired)
         self._expired.clear()
         self._events += len(expired)
         if self._pass > MAX_PASSES:
-            names = [self.case.names[b] for b in expired]
-            raise RunError(f"the instant at {now} us does not settle; still going after {MAX_PASSES} passes: {names}")
+            expired = [b for b in expired if b in self._stage or self.logic.matters(b)]  # the others stand still
+            if who := [self.case.names[b] for b in expired]:
+                raise RunError(f"the instant at {now} us does not settle; still going after {MAX_PASSES} passes: {who}")
         self.record.at(now, self._pass)
         changed = self._pass == 0 and now == 0
         if changed:

@@ -11,7 +11,8 @@ logic cannot go on without its answer*.
 - R2 An instant is a sequence of passes. In each: everything due expires; the topology is
   brought up to date; sensing is evaluated; the logic settles; blocks whose input rose
   start, those whose input fell cancel or start their drop-out. Zero-delay consequences
-  make a further pass. Gates form no loop; passes are bounded by ``MAX_PASSES``.
+  make a further pass. Gates form no loop; passes are bounded by ``MAX_PASSES``, and what
+  goes on beyond them stands still if it can influence nothing.
 - R3 A timer that runs out at the very instant its input falls has operated. Nothing
   depends on the order of declaration.
 - R4 Signals are true, false or unknown. A gate whose inputs make it true is unknown until

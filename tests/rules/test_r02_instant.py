@@ -92,7 +92,7 @@ def test_r02_a_loop_through_a_latch_that_never_settles_is_an_error_that_names_it
         [
             sense("oc", "F1.CT"),
             Latch(name="flutter", set="oc", reset="flutter"),
-            trip("t", "flutter", "oc", k=2),
+            trip("t", "flutter", Not("oc"), k=2),
             gate("coil", "t"),
             breaker("F1.CB", "coil"),
         ],
