@@ -16,14 +16,19 @@ import numpy as np
 
 from schemesim.engine.program import Kind
 from schemesim.engine.topologies import Topologies
-from schemesim.engine.wiring import Wiring
-from schemesim.engine.words import ONES, bit_at
+from schemesim.engine.wiring import Start, Wiring
+from schemesim.engine.words import ONES, unpack
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     Words = NDArray[np.uint64]
     Numbers = NDArray[np.intp]
+
+_BITS = 62
+"""Signals kept in one number."""
+
+_POWERS = 2 ** np.arange(_BITS, dtype=np.int64)
 
 
 def at_least(sig: Words, inputs: Sequence[tuple[int, bool]], k: int, out: Words) -> None:
@@ -92,26 +97,26 @@ class Ways:
         self._known: dict[tuple[int, ...], int] = {}
         self.found: list[tuple[int, int]] = [(0, 0)]
 
-    def codes(self, sig: Words, rows: Numbers) -> NDArray[np.int32]:
-        """A number from 1 on for each of these rows; see ``found``."""
-        keys = []
-        for a in range(0, len(self.read), 62):
-            key = np.zeros(rows.size, dtype=np.int64)
-            for i, r in enumerate(self.read[a : a + 62]):
-                key |= bit_at(sig, r, rows) << i
-            keys.append(key)
-        if len(keys) == 1:
-            values, place = np.unique(keys[0], return_inverse=True)
-            rows_of = [(v,) for v in values.tolist()]
-        else:
-            table, place = np.unique(np.stack(keys, axis=1), axis=0, return_inverse=True)
-            rows_of = [tuple(v) for v in table.tolist()]
-        return np.array([self._number(v) for v in rows_of], dtype=np.int32)[place.ravel()]
+    @property
+    def width(self) -> int:
+        """Numbers needed to keep the signals read."""
+        return -(-len(self.read) // _BITS)
+
+    def read_at(self, sig: Words, rows: Numbers, keys: NDArray[np.int64], at: Numbers) -> None:
+        """Keep the signals behind the coils in these rows, in the columns ``at`` of the keys."""
+        for k in range(self.width):
+            lines = list(self.read[k * _BITS : (k + 1) * _BITS])
+            keys[k, at] = _POWERS[: len(lines)] @ unpack(sig[lines])[:, rows]
+
+    def codes(self, keys: NDArray[np.int64]) -> NDArray[np.int32]:
+        """A number from 1 on for each column of keys; see ``found``."""
+        table, place = np.unique(keys, axis=1, return_inverse=True) if self.width > 1 else _unique(keys)
+        return np.array([self._number(tuple(v)) for v in table.T.tolist()], dtype=np.int32)[place.ravel()]
 
     def _number(self, key: tuple[int, ...]) -> int:
         number = self._known.get(key)
         if number is None:
-            bits = {r: bool(key[i // 62] >> (i % 62) & 1) for i, r in enumerate(self.read)}
+            bits = {r: bool(key[i // _BITS] >> (i % _BITS) & 1) for i, r in enumerate(self.read)}
             way = self._way(bits)
             if way not in self.found[1:]:
                 self.found.append(way)
@@ -146,6 +151,11 @@ class Ways:
         return role(coil), via
 
 
+def _unique(keys: NDArray[np.int64]) -> tuple[NDArray[np.int64], NDArray[np.intp]]:
+    values, place = np.unique(keys[0], return_inverse=True)
+    return values[np.newaxis], place
+
+
 @dataclass(frozen=True, eq=False, repr=False)
 class Layout:
     """See the module."""
@@ -173,6 +183,8 @@ class Layout:
     reaches: tuple[tuple[int, ...], ...]
     reach_of: Numbers
     true_row: int
+    up_at_once: Words
+    down_at_once: Words
     fixed_us: NDArray[np.int64]
     number: Numbers
 
@@ -263,9 +275,16 @@ def _layout(w: Wiring) -> Layout:
         reaches=tuple(tuple(i for i in range(bits) if mask >> i & 1) for mask in masks),
         reach_of=np.array([masks.index(w.reach_mask[s]) for s in range(sinks)], dtype=np.intp),
         true_row=true_row,
+        up_at_once=_lines([w.on[s] == Start(0) for s in range(sinks)]),
+        down_at_once=_lines([w.off[s] == Start(0) for s in range(sinks)]),
         fixed_us=np.array([[starts[s].fixed_us for s in range(sinks)] for starts in (w.off, w.on)], dtype=np.int64),
         number=np.array([[starts[s].first for s in range(sinks)] for starts in (w.off, w.on)], dtype=np.intp),
     )
+
+
+def _lines(which: Sequence[bool]) -> Words:
+    """Ones for the lines that are true; one column that goes with any number of words."""
+    return np.array([[ONES if yes else 0] for yes in which], dtype=np.uint64).reshape(-1, 1)
 
 
 def _gate_row(w: Wiring, g: int, guard: int, planes: dict[int, dict[int, int]], worst: Sequence[int]) -> GateRow:

@@ -38,6 +38,8 @@ class Topologies:
         self.inverse = {s: i for i, s in enumerate(case.inverse)}
         self.rates = np.zeros((8, len(self.inverse)), dtype=np.int64)
         self.fed = np.zeros(8, dtype=np.bool_)
+        self.is_sense = np.zeros(sinks, dtype=np.bool_)
+        self.is_sense[list(case.senses)] = True
         self.number(0)
 
     def number(self, mask: int) -> int:
@@ -58,6 +60,13 @@ class Topologies:
                 self.rates[known, self.inverse[s]] = rate
             self.fed[known] = found.fed
         return known
+
+    def differing(self, before: NDArray[np.int32], after: NDArray[np.int32]) -> list[int]:
+        """Sinks whose condition is not the same in all of these topologies."""
+        met = np.union1d(before, after)
+        holds, stays = self.holds[met], self.stays[met]
+        found = np.flatnonzero((holds != holds[0]).any(axis=0) | stays.any(axis=0))
+        return [s for s in found.tolist() if self.is_sense[s]]
 
     def switched(self, before: NDArray[np.int32], place: int, opens: bool) -> NDArray[np.int32]:
         """The topologies after a breaker has opened or closed."""

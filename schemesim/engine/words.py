@@ -40,9 +40,11 @@ def rows_of(words: Words) -> Rows:
 
 def places_of(words: Words) -> tuple[Rows, Rows]:
     """Line and row of every truth in lines of words."""
-    some = np.flatnonzero(words.any(axis=1))
-    line, row = np.divmod(np.flatnonzero(unpack(words[some])), 64 * words.shape[1])
-    return some[line], row
+    width = words.shape[1]
+    some = np.flatnonzero(words)
+    place = np.flatnonzero(unpack(words.ravel()[some]))
+    line, word = np.divmod(some[place >> 6], width)
+    return line, word << 6 | place & 63
 
 
 def bit_at(words: Words, line: Rows | int, row: Rows) -> NDArray[np.int64]:
