@@ -134,7 +134,7 @@ def _text(found: Decision) -> list[str]:
         text += [table_text(steps, list(steps[0]), 2), ""]
     text += [f"not possible: {name}: {why}" for name, why in found.next_best.impossible]
     if found.tornado.bars:
-        shown = ["assumption", "low", "high", "net_low", "net_base", "net_high", "order_changes"]
+        shown = ["assumption", "range_from", "range_to", "net_low", "net_base", "net_high", "order_changes"]
         text += ["net benefit of these additions against each assumption", ""]
         text += [table_text(_records(found.tornado.table()), shown), ""]
     text += ["over uncertain failure data", ""]

@@ -169,8 +169,8 @@ class Tornado:
             [
                 {
                     "assumption": b.assumption,
-                    "low": b.low,
-                    "high": b.high,
+                    "range_from": b.low,
+                    "range_to": b.high,
                     "net_low": b.net_low,
                     "net_base": b.net_base,
                     "net_high": b.net_high,

@@ -21,6 +21,7 @@ from schemesim.scenario.deciding import decide, stand_in
 from schemesim.scheme.failure_data import FailureData
 from schemesim.scheme.model import Component, ComponentKind, FailureMode, Scheme
 from schemesim.scheme.policy import single_set
+from schemesim.show.tables import readable
 from schemesim.study.brackets import Bracket
 from schemesim.study.edits import ADDITIONS, Edit, Recipe
 from schemesim.study.frontier import Weighed, Weigher, frontier
@@ -226,6 +227,8 @@ def test_tornado_orders_by_swing_and_sees_the_order_change(weigher: Weigher) -> 
     unstable = bars["p_unstable_if_late"]
     assert unstable.net_low < unstable.net_base < unstable.net_high
     assert bars["failures of relay"].net_low < bars["failures of relay"].net_high
+    shown = readable(found.table()).set_index("assumption").loc["p_unstable_if_late"]
+    assert (shown["range_from"], shown["range_to"]) == ("0.1", "0.9")  # as given, not rounded outward as a bracket
     whole = tornado(weigher, replace(MONEY, ranges=ranges[:1]), whole=True)
     assert whole.order == weigher.next_best(MONEY).order
 
