@@ -69,11 +69,11 @@ def plot_left(
     return ax
 
 
-def mark_lines(ax: Axes, lines: Sequence[Line]) -> None:
+def mark_lines(ax: Axes, lines: Sequence[Line], color: str = VERMILLION) -> None:
     """Draw marked places of the x axis, labels along the lines so that neighbours do not collide."""
     for line in lines:
         style = "--" if line.dashed else "-"
-        drawn = ax.axvline(line.x, color=VERMILLION, linestyle=style, linewidth=1.1, zorder=4)
+        drawn = ax.axvline(line.x, color=color, linestyle=style, linewidth=1.1, zorder=4)
         drawn.set_gid(f"line: {line.text}")
         ax.annotate(
             line.text, (line.x, 1), (-2, -3), xycoords=("data", "axes fraction"), textcoords="offset points",
@@ -136,7 +136,7 @@ def plot_bands(
             band.set_gid(f"bracket: {label}")
             ax.plot(at, lows, **{**look, "linewidth": 0.7})
     tidy(ax, title=title, x=x, y=y, grid="y")
-    mark_lines(ax, lines)
+    mark_lines(ax, lines, BLACK)  # no colour of a curve
     below(ax, columns=2)
     return ax
 

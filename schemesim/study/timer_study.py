@@ -171,10 +171,11 @@ class TimerResult:
             "needless trip, when it could trip so": [p.p_needless for p in self.points],
             "cleared late, when it is needed": [p.p_late for p in self.points],
         }
+        limit = "" if self.race.limit_us is None else f", limit {self.race.limit_us / 1000:g} ms"
         return plot_bands(
             [p.setting_us / 1000 for p in self.points],
             {name: [(float(b.low), float(b.high)) for b in curve] for name, curve in curves.items()},
-            title=self.race.timer, x="setting, ms", y="probability",
+            title=f"{self.race.timer}, fault on {self.race.location}{limit}", x="setting, ms", y="probability",
             lines=lines, good=None if band is None else (band[0] / 1000, band[1] / 1000),
             good_text="both keep to their targets", ax=ax,
         )  # fmt: skip

@@ -212,6 +212,8 @@ def test_bands_leave_out_what_is_not_there() -> None:
     assert gids(ax, "bracket") == ["needless"]
     assert gids(ax, "good") == ["120 to 180"]
     assert legend(ax) == ["band", "needless", "late"]
+    mark = drawn(ax, "line: set 150 ms").get_color()  # type: ignore[attr-defined]
+    assert mark not in {line.get_color() for line in ax.lines if str(line.get_gid()).startswith("curve: ")}
 
 
 def test_time_current_curves_take_any_callable() -> None:
