@@ -138,7 +138,7 @@ if TYPE_CHECKING:
     from schemesim.show.tables import readable
     from schemesim.study.brackets import Bracket
     from schemesim.study.campaign import Campaign
-    from schemesim.study.campaign_replay import replay_trial
+    from schemesim.study.campaign_replay import find_trials, replay_trial
     from schemesim.study.campaign_run import load_campaign, run_campaign
     from schemesim.study.comparison import compare
     from schemesim.study.coordination import coordination
@@ -246,7 +246,7 @@ _HOMES = {
     "schemesim.study.precision": "Precision",
     "schemesim.study.stratified": "simulate_stratified",
     "schemesim.study.campaign": "Campaign",
-    "schemesim.study.campaign_replay": "replay_trial",
+    "schemesim.study.campaign_replay": "find_trials replay_trial",
     "schemesim.study.campaign_run": "load_campaign run_campaign",
     "schemesim.scenario.campaigns": "campaign_in campaign_scenario export_campaign",
     "schemesim.study.no_fault": "study_no_fault",
@@ -309,8 +309,8 @@ __all__ = [
     "breakers_excess", "breakers_mean", "campaign_in", "campaign_scenario", "clearing_time", "clopper_pearson",
     "compare", "compare_trip_matrix", "compile_scheme", "coordination", "coverage_audit", "decide", "dial_policies",
     "dial_scenario", "double_bus", "dress", "duplicate_chain", "duplicate_relay", "duty", "equipment_list", "explore",
-    "export_campaign", "feeder", "fixed_ms", "frontier", "generator", "graded", "iec_61508_pfd", "importance",
-    "importance_scenario", "independence", "infeed", "inject", "intervals_scenario", "isolation_zones",
+    "export_campaign", "feeder", "find_trials", "fixed_ms", "frontier", "generator", "graded", "iec_61508_pfd",
+    "importance", "importance_scenario", "independence", "infeed", "inject", "intervals_scenario", "isolation_zones",
     "iter_locations", "line", "load_campaign", "load_equipment", "load_relay_schedule", "load_scenario",
     "load_starting_values", "merged_elements", "minimal_sets", "misoperation", "misoperations_scenario",
     "neighbourhood", "network_of", "next_best", "optimal_interval_yr", "outages_scenario", "outputs_of", "p_by_main",
@@ -319,9 +319,9 @@ __all__ = [
     "races", "readable", "redundant", "register", "register_scenario", "relay_schedule", "replay", "replay_trial",
     "report_scenario", "ring", "run_campaign", "run_event", "save_scenario", "sectionalised_bus", "settings_for",
     "simulate", "simulate_stratified", "single_bus", "single_points", "single_set", "standard_curve",
-    "study_dependability", "study_dial", "study_importance", "study_locations", "study_misoperations",
-    "study_no_fault", "study_outages", "study_test_intervals", "study_timers", "study_variants", "timeline",
-    "timer_scenario", "transformer", "trip_matrix", "unavailability", "uncertainty", "wilson", "zone_graph",
+    "study_dependability", "study_dial", "study_importance", "study_locations", "study_misoperations", "study_no_fault",
+    "study_outages", "study_test_intervals", "study_timers", "study_variants", "timeline", "timer_scenario",
+    "transformer", "trip_matrix", "unavailability", "uncertainty", "wilson", "zone_graph",
 ]
 # fmt: on
 

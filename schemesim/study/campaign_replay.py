@@ -7,14 +7,18 @@ from dataclasses import dataclass
 from schemesim.engine.answers import Answers, DrawnAnswers, FixedAnswers
 from schemesim.engine.case import Case
 from schemesim.engine.event import run_event
+from schemesim.engine.many import NEVER_US
 from schemesim.engine.outcome import Run
 from schemesim.engine.sensing import Event
 from schemesim.engine.times import DelayTimes
-from schemesim.errors import RunError, reject
-from schemesim.study.campaign import Campaign
+from schemesim.errors import ErrorList, RunError, reject
+from schemesim.study.campaign import Campaign, whole
+from schemesim.study.campaign_counts import Happened
 from schemesim.study.campaign_tallies import BIN_US, CampaignEnding, rounded_up
-from schemesim.study.campaign_work import case_of, ending_of
+from schemesim.study.campaign_work import batch_of, case_of, ending_of, endings
 from schemesim.study.store import Store
+
+_AT_ONCE = 10_000  # trials run before the next look at what was found
 
 
 @dataclass(frozen=True, repr=False)
@@ -109,6 +113,66 @@ def replay_trial(
         if with_store is not None:
             with_store.close()
     return Replayed(variant, at, trial, case, run, ending, failures, counted)
+
+
+def find_trials(
+    campaign: Campaign, variant: str, event: Event | str, happened: Happened, *, most: int = 10
+) -> tuple[int, ...]:
+    """The numbers of the first trials in which something happens, to be replayed.
+
+    Parameters
+    ----------
+    campaign : Campaign
+    variant : str
+    event : Event or str
+        By itself or as printed.
+    happened : callable
+        Told an ending and the clearing time in microseconds (None: not cleared), as
+        :meth:`~schemesim.study.campaign_counts.PlaceCounts.count` is.
+    most : int
+        How many trials; the search ends there.
+
+    Returns
+    -------
+    tuple of int
+        Ascending; fewer than ``most`` where no more of the campaign's trials are such.
+
+    Raises
+    ------
+    InputError
+        For a variant or event that is not part of the campaign, or ``most`` below 1.
+
+    Examples
+    --------
+    >>> import schemesim as ss
+    >>> b = ss.PlantBuilder()
+    >>> ss.generator(b, "G1", station="Alder")
+    >>> ss.feeder(b, "F1", station="Alder", load_mw=10)
+    >>> ss.single_bus(b, "Alder", [ss.Bay("G1", "G1"), ss.Bay("F1", "F1")])
+    >>> plant = b.build()
+    >>> program = ss.compile_scheme(plant, ss.dress(plant, ss.single_set()))
+    >>> campaign = Campaign({"single": program}, [ss.Location("F1")], trials=1000, seed=1)
+    >>> late = find_trials(campaign, "single", "F1", lambda _, t_us: t_us is None or t_us > 150_000)
+    >>> replay_trial(campaign, "single", "F1", late[0]).run.outcome.t_clear_us > 150_000
+    True
+    """
+    errors = ErrorList()
+    whole(errors, "most", most, 1)
+    errors.raise_if_any()
+    place = campaign.number(variant, event)
+    program, at = campaign.variants[variant], campaign.places[place][1]
+    case = case_of(program, at, campaign.sensing_of(variant), campaign.dispatch, campaign.observe)
+    bin_us = BIN_US if case.random and not campaign.failures else 1
+    found: list[int] = []
+    for first in range(0, campaign.rounds, _AT_ONCE):
+        batch = batch_of(case, campaign.work(place, first, min(first + _AT_ONCE, campaign.rounds)))
+        for ending, rows in endings(batch):
+            for row, t_us in zip(rows.tolist(), batch.t_clear_us[rows].tolist(), strict=True):
+                if happened(ending, None if t_us == NEVER_US else rounded_up(t_us, bin_us)):
+                    found.append(first + row)
+        if len(found) >= most:
+            break
+    return tuple(sorted(found)[:most])
 
 
 def _run(campaign: Campaign, case: Case, trial: int) -> Run:

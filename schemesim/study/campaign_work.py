@@ -210,18 +210,11 @@ def count(case: Case, work: Work) -> Chunk:
     """Run the trials of a piece of work and count how they end."""
     started = time.perf_counter()
     rows = work.end - work.first
-    answers: ManyAnswers
-    times: ManyTimes
-    if work.failures is None:
-        answers = ManyDrawn(case.program, work.seed, work.first, rows)
-        times = ManyDrawnTimes(work.seed, work.first, rows)
-    else:
-        answers, times = ManyGiven(case.program, work.failures), ManyNominalTimes()
-    batch = run_batch(case, rows, answers, times=times, horizon_us=work.horizon_us)
+    batch = batch_of(case, work)
     rounded = case.random and work.failures is None
     tallies: list[Tally] = []
     each: list[tuple[int, int | None]] = [(0, None)] * rows
-    for ending, mine in _endings(batch):
+    for ending, mine in endings(batch):
         t_us = batch.t_clear_us[mine]
         if work.failures is not None:
             for row, us in zip(mine.tolist(), t_us.tolist(), strict=True):
@@ -232,6 +225,19 @@ def count(case: Case, work: Work) -> Chunk:
     facts = PlaceFacts(fed, rounded, case.duty.needed, case.duty.intended, right, wrong)
     told = None if work.failures is None else tuple(each)
     return Chunk(work.place, work.first, work.end, facts, tuple(tallies), told, time.perf_counter() - started)
+
+
+def batch_of(case: Case, work: Work) -> Batch:
+    """Run the trials of a piece of work."""
+    rows = work.end - work.first
+    answers: ManyAnswers
+    times: ManyTimes
+    if work.failures is None:
+        answers = ManyDrawn(case.program, work.seed, work.first, rows)
+        times = ManyDrawnTimes(work.seed, work.first, rows)
+    else:
+        answers, times = ManyGiven(case.program, work.failures), ManyNominalTimes()
+    return run_batch(case, rows, answers, times=times, horizon_us=work.horizon_us)
 
 
 class ManyGiven:
@@ -250,7 +256,7 @@ class ManyGiven:
         return np.zeros(rows.size, dtype=bool) if column is None else column[rows]
 
 
-def _endings(batch: Batch) -> Iterator[tuple[CampaignEnding, NDArray[np.intp]]]:
+def endings(batch: Batch) -> Iterator[tuple[CampaignEnding, NDArray[np.intp]]]:
     """Each ending of a batch with its rows; those that differ only in what cleared the fault apart."""
     for number in range(len(batch.endings)):
         rows = np.flatnonzero(batch.ending == number)

@@ -141,6 +141,7 @@ PUBLIC: list[str] = [
     "explore",
     "export_campaign",
     "feeder",
+    "find_trials",
     "fixed_ms",
     "frontier",
     "generator",

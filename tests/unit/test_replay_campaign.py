@@ -16,7 +16,7 @@ from schemesim.report.timeline import timeline
 from schemesim.scenario import Scenario, load_scenario
 from schemesim.scenario.campaigns import campaign_in, campaign_scenario, source_of
 from schemesim.study.campaign import Campaign
-from schemesim.study.campaign_replay import replay_trial
+from schemesim.study.campaign_replay import find_trials, replay_trial
 from schemesim.study.campaign_run import load_campaign, run_campaign
 from schemesim.study.campaign_tallies import CampaignEnding, rounded_up
 from schemesim.study.dependability import outputs_of
@@ -136,3 +136,32 @@ def test_bad_trials_are_refused(tmp_path: Path) -> None:
     run_campaign(campaign, store)
     with pytest.raises(InputError, match="made from a scenario"):
         campaign_in(store)
+
+
+@pytest.mark.parametrize("opening", [None, OPENING], ids=["fixed", "random"])
+def test_trials_are_found_by_what_happens_in_them(opening: Any, tmp_path: Path) -> None:
+    store = str(tmp_path / "s.db")
+    campaign = small(opening, 200, observe=MAIN)
+    run_campaign(campaign, store)
+    for variant in campaign.variants:
+
+        def late(_: CampaignEnding, t_us: int | None) -> bool:
+            return t_us is None or t_us > 100_000
+
+        found = find_trials(campaign, variant, F1, late, most=200)
+        assert len(found) == load_campaign(store).where(variant, F1).count(late)
+        slow = [replay_trial(campaign, variant, F1, t, store=store).run.outcome.t_clear_us for t in range(200)]
+        assert found == tuple(t for t, us in enumerate(slow) if us is None or us > 100_000)
+        assert find_trials(campaign, variant, F1, late, most=2) == found[:2]
+
+
+def test_trials_are_found_among_given_failure_sets() -> None:
+    campaign = small(None, 1)
+    name = next(iter(campaign.variants))
+    stuck = next(q.name for q in campaign.variants[name].questions if q.name.endswith("F1.CB: does_not_open"))
+    given = replace(campaign, trials=0, failures=((), (stuck,)))
+    assert find_trials(given, name, F1, lambda e, _: stuck.partition(":")[0] not in e.open) == (1,)
+    with pytest.raises(InputError, match="most: got 0"):
+        find_trials(given, name, F1, lambda *_: True, most=0)
+    with pytest.raises(InputError, match="a variant of the campaign"):
+        find_trials(given, "none", F1, lambda *_: True)
