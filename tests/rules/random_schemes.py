@@ -6,11 +6,11 @@ breakers only.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 from fractions import Fraction
 from itertools import product
 from random import Random
-from typing import TypeVar
+from typing import Any, TypeVar
 
 from hypothesis import strategies as st
 
@@ -29,7 +29,8 @@ from schemesim.scheme.conditions import (
     Reach,
     Undervoltage,
 )
-from schemesim.scheme.delays import Fixed
+from schemesim.scheme.delays import Delay, Fixed
+from schemesim.scheme.distributions import Empirical, Triangular, Uniform
 from schemesim.scheme.model import (
     MODES,
     Ask,
@@ -284,6 +285,56 @@ def random_scheme(rng: Random, plant: Plant, size: int) -> Scheme:
     return Scheme(tuple(make.components), tuple(make.blocks), tuple(causes), out)
 
 
+def with_random_delays(s: Sample, rng: Random, share: float = 0.4) -> Sample:
+    """The same sample with a share of its delays random; some may be zero, and some tie with others."""
+
+    def change(block: Block) -> Block:
+        delays = [f.name for f in fields(block) if isinstance(getattr(block, f.name), Delay)]
+        changed: dict[str, Any] = {name: _random_delay(rng) for name in delays if rng.random() < share}
+        return replace(block, **changed)
+
+    return replace(s, scheme=replace(s.scheme, blocks=tuple(change(b) for b in s.scheme.blocks)))
+
+
+def _random_delay(rng: Random) -> Delay:
+    pick = rng.randrange(5)
+    if pick < 2:
+        return Empirical(tuple(rng.choice((0, 10_000, 20_000, 30_000, 50_000)) for _ in range(3)))
+    low = rng.choice((0, 0, 5_000, 10_000))
+    high = low + rng.choice((2, 20_000, 40_000))
+    return Triangular(low, low, high) if pick == 2 else Uniform(low, high)
+
+
+def with_seals(s: Sample, rng: Random) -> Sample:
+    """The same sample with latches and timers between trips and some coils, and instants that may never settle.
+
+    What a sealed trip does depends on the role in which it was true when the seal began.
+    """
+    coils = {c for b in s.scheme.blocks if isinstance(b, Breaker) for c in b.coils}
+    senses = [b.name for b in s.scheme.blocks if isinstance(b, Sense)]
+    blocks: list[Block] = []
+    for n, block in enumerate(s.scheme.blocks):
+        if block.name not in coils or not isinstance(block, Gate) or not block.inputs or rng.random() < 0.4:
+            blocks.append(block)
+            continue
+        joined, seal, restless = (f"{rng.choice('abcdefghij')}{kind}{n}" for kind in ("joined", "seal", "restless"))
+        if rng.random() < 0.08:
+            w, delay = f"{restless}.w", rng.choice((Fixed(0), Empirical((0, 0, 10_000))))
+            contact = Contact("f", Role.LOCAL, frozenset({s.plant.sections[0].name}), Role.LOCAL)
+            blocks += [
+                Latch(name=f"{restless}.l", set=rng.choice(senses), reset=w),
+                Timer(name=w, input=f"{restless}.l", pick_up=delay, drop_out=delay),
+                Gate(name=restless, inputs=(f"{restless}.l", w, Not(w)), k=3, contact=contact),
+            ]
+            block = replace(block, inputs=(*block.inputs, restless))
+        blocks.append(Gate(name=joined, inputs=block.inputs, k=block.k))
+        late = Timer(name=seal, input=joined, pick_up=_delay(rng), drop_out=_delay(rng))
+        blocks.append(rng.choice((late, Latch(name=seal, set=joined, reset=None))))
+        more = tuple(i for i in block.inputs if rng.random() < 0.3)
+        blocks.append(replace(block, inputs=(seal, *more), k=1))
+    return replace(s, scheme=replace(s.scheme, blocks=tuple(blocks)))
+
+
 def shuffled(s: Sample, rng: Random) -> Sample:
     """The same sample declared in another order."""
 
@@ -354,4 +405,6 @@ __all__ = [
     "samples",
     "shuffled",
     "states",
+    "with_random_delays",
+    "with_seals",
 ]
