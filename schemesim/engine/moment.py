@@ -48,6 +48,7 @@ class Moment:
         "clears",
         "commits",
         "decided",
+        "enabled",
         "interrupting",
         "known",
         "live",
@@ -61,6 +62,7 @@ class Moment:
         "slots",
         "stage",
         "started",
+        "suppressed",
         "touched",
         "value",
         "verdict",
@@ -73,6 +75,11 @@ class Moment:
         if state is None:
             self.value, self.role, self.pending = bytearray(n), bytearray(n), bytearray(n)
             self.verdict = bytearray(w.certain)
+            self.suppressed = self.enabled = 0
+            for a, verdict in enumerate(w.certain):
+                if verdict == TRUE:
+                    self.suppressed |= w.unless_mask[a]
+                    self.enabled |= w.given_mask[a]
             self.known = bytearray(len(w.questions))
             self.stage = bytearray(len(w.breakers))
             self.decided = self.interrupting = self.open_mask = 0
@@ -84,6 +91,7 @@ class Moment:
         else:
             self.value, self.role = bytearray(state.value), bytearray(state.role)
             self.verdict, self.known = bytearray(state.verdict), bytearray(state.known)
+            self.suppressed, self.enabled = state.suppressed, state.enabled
             self.pending, self.stage = bytearray(state.pending), bytearray(state.stage)
             self.decided, self.interrupting = state.decided, state.interrupting
             self.open_mask, self.live, self.cleared = state.open_mask, state.live, state.cleared
@@ -109,14 +117,15 @@ class Moment:
         """A moment of its own, to go on with another answer."""
         m = object.__new__(Moment)
         m.w = self.w
-        for name in ("value", "role", "pending", "verdict", "known", "stage", "_queued"):
-            setattr(m, name, bytearray(getattr(self, name)))
-        for name in ("decided", "interrupting", "open_mask", "live", "cleared", "_energising", "sensed", "clears"):
-            setattr(m, name, getattr(self, name))
-        m.passes = self.passes
-        m.slots, m._dirty = list(self.slots), list(self._dirty)
+        m.value, m.role, m.pending = self.value[:], self.role[:], self.pending[:]
+        m.verdict, m.known, m.stage = self.verdict[:], self.known[:], self.stage[:]
+        m.suppressed, m.enabled = self.suppressed, self.enabled
+        m.decided, m.interrupting, m.open_mask = self.decided, self.interrupting, self.open_mask
+        m.live, m.cleared, m.clears = self.live, self.cleared, self.clears
+        m._energising, m.sensed, m.passes = self._energising, self.sensed, self.passes
+        m.slots, m._dirty, m._queued = self.slots[:], self._dirty[:], self._queued[:]
         m.opens, m.touched, m._hot = set(self.opens), set(self.touched), set(self._hot)
-        m.started, m.commits, m.operated = dict(self.started), list(self.commits), list(self.operated)
+        m.started, m.commits, m.operated = dict(self.started), self.commits[:], self.operated[:]
         return m
 
     # --- what is due ---------------------------------------------------------------------
@@ -227,6 +236,8 @@ class Moment:
                 continue
             if yes:
                 verdict[a] = TRUE
+                self.suppressed |= w.unless_mask[a]
+                self.enabled |= w.given_mask[a]
             elif all(self.known[j] == NO for j in w.asks[a]):
                 verdict[a] = FALSE
             else:
@@ -267,7 +278,7 @@ class Moment:
         """Evaluate a gate; whether what others read of it changed."""
         w, value, role = self.w, self.value, self.role
         new = own = 0
-        if not self._suppressed(g):
+        if not self.suppressed >> g & 1:
             k, true, maybe, best = w.k[g], 0, 0, NO_ROLE
             for j, inverted in w.inputs[g]:
                 v = value[j]
@@ -291,24 +302,21 @@ class Moment:
             self.opens.discard(g)
         return min(new, UNKNOWN) != min(old, UNKNOWN) or (new == TRUE and own != before)
 
-    def _suppressed(self, g: int) -> bool:
-        verdict = self.verdict
-        return any(verdict[a] == TRUE for a in self.w.unless[g])
-
     def _own_answer(self, g: int) -> int:
         """What failures make of a gate whose inputs make it true."""
         w, verdict = self.w, self.verdict
         given = w.given[g]
-        enabled = not given or any(verdict[a] == TRUE for a in given)
+        enabled = not given or self.enabled >> g & 1
         if not enabled and not any(verdict[a] == UNKNOWN for a in given):
             return FALSE
-        if any(verdict[a] == UNKNOWN for a in w.unless[g]) or not enabled:
-            return OPEN
-        return TRUE
+        for a in w.unless[g]:
+            if verdict[a] == UNKNOWN:
+                return OPEN
+        return TRUE if enabled else OPEN
 
     def _possible(self, g: int) -> bool:
         given = self.w.given[g]
-        return not given or any(self.verdict[a] != FALSE for a in given)
+        return not given or bool(self.enabled >> g & 1) or any(self.verdict[a] == UNKNOWN for a in given)
 
     def _kth_role(self, g: int, k: int) -> int:
         if k <= 0:

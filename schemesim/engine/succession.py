@@ -200,6 +200,8 @@ def freeze(m: Moment, gone: Doomed, home: tuple[int, ...], capacity: int) -> Ste
         value=bytes(m.value),
         role=bytes(m.role),
         verdict=bytes(m.verdict),
+        suppressed=m.suppressed,
+        enabled=m.enabled,
         known=bytes(m.known),
         pending=bytes(m.pending),
         decided=m.decided,
@@ -236,32 +238,48 @@ def _leave_out(m: Moment, gone: Doomed) -> None:
         in_use = int.from_bytes(m.value.translate(_IF_TRUE), "little")
         in_use |= int.from_bytes(m.pending.translate(_IF_ANY), "little")
         m.role = bytearray((int.from_bytes(m.role, "little") & gone.signals & in_use).to_bytes(n, "little"))
-    verdict = int.from_bytes(m.verdict, "little") & gone.verdicts | gone.unknown
-    m.verdict = bytearray(verdict.to_bytes(len(m.verdict), "little"))
+    m.suppressed &= gone.gates
+    m.enabled &= gone.gates
     _forget(m, gone)
 
 
 def _forget(m: Moment, gone: Doomed) -> None:
-    """Keep only answers that some question still to come may rest on."""
+    """Keep only answers that some question still to come may rest on.
+
+    What a failure does to gates is kept with the gates, not with the failure: so it is the same
+    whichever of several failures did it, and what else could have done it matters no more.
+    """
     w = m.w
-    key = bytes(m.verdict), m.decided
-    found = gone.kept.get(key)
-    if found is None:
-        keep: set[int] = set()
-        for a, verdict in enumerate(m.verdict):
-            if verdict == UNKNOWN and gone.verdicts >> 8 * a & 1:
-                keep.update(w.asks[a])
-        for place, modes in enumerate(w.breaker_modes):
+    key = m.suppressed, m.enabled
+    asks = gone.asks.get(key)
+    if asks is None:
+        free = gone.gates & ~m.suppressed
+        waiting = free & ~m.enabled
+        asks = gone.asks[key] = tuple(
+            a for a in range(len(w.asks)) if w.unless_mask[a] & free or w.given_mask[a] & waiting
+        )
+    verdict = bytearray(len(w.asks))
+    for a in asks:
+        if m.verdict[a] == UNKNOWN:
+            verdict[a] = UNKNOWN
+    m.verdict = verdict
+    found = bytes(verdict), m.decided
+    mask = gone.kept.get(found)
+    if mask is None:
+        mask = 0
+        for a in asks:
+            if verdict[a] == UNKNOWN:
+                mask |= w.ask_bytes[a]
+        for place, group in enumerate(w.mode_bytes):
             if w.closable[place] or not m.decided >> place & 1:
-                keep.update(q for _, group, _ in modes for q in group)
-        shared = tuple(q for q in sorted(keep) if w.siblings[q])
-        found = gone.kept[key] = sum(0xFF << 8 * q for q in keep), shared
-    mask, shared = found
-    for q in shared:
-        if m.known[q] == NOT_KNOWN:
+                mask |= group
+        gone.kept[found] = mask
+    more = 0
+    for q in w.shared:
+        if mask >> 8 * q & 1 and m.known[q] == NOT_KNOWN:
             for j in w.siblings[q]:
-                mask |= 0xFF << 8 * j
-    m.known = bytearray((int.from_bytes(m.known, "little") & mask).to_bytes(len(m.known), "little"))
+                more |= 0xFF << 8 * j
+    m.known = bytearray((int.from_bytes(m.known, "little") & (mask | more)).to_bytes(len(m.known), "little"))
 
 
 _IF_TRUE = bytes(0xFF if v == TRUE else 0 for v in range(256))

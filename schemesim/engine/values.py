@@ -25,6 +25,8 @@ class State(NamedTuple):
     value: bytes
     role: bytes
     verdict: bytes
+    suppressed: int
+    enabled: int
     known: bytes
     pending: bytes
     decided: int

@@ -5,7 +5,7 @@ Only what the case says in another shape; nothing is decided here.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -39,20 +39,22 @@ class Doomed:
     ----------
     matters : bytes
         Which blocks may still influence something.
+    gates : int
+        Gates that matter, as a mask.
     signals, moves : int
         Blocks whose value, and whose pending time, is kept.
-    verdicts, unknown : int
-        Asks whose verdict is kept, and what is put in place of the others.
+    asks : dict
+        Asks whose verdict may still be consulted, by the gates suppressed and enabled: found once.
     kept : dict
         Questions that may still be rested on, by verdicts and breakers decided: found once.
     """
 
     matters: bytes
+    gates: int
     signals: int
     moves: int
-    verdicts: int
-    unknown: int
-    kept: dict[tuple[bytes, int], tuple[int, tuple[int, ...]]]
+    asks: dict[tuple[int, int], tuple[int, ...]]
+    kept: dict[tuple[bytes, int], int]
 
 
 @dataclass(frozen=True, eq=False, repr=False)
@@ -64,6 +66,12 @@ class Wiring:
     questions : tuple of int
         Questions of the program that bear on the case, or exclude one that does; the engine
         numbers them by their place here.
+    shared : tuple of int
+        Questions with others that exclude them.
+    unless_mask, given_mask : tuple of int
+        For each ask the gates it suppresses, or enables, as a mask.
+    ask_bytes, mode_bytes : tuple of int
+        For each ask, and each breaker, its questions as a mask with a byte for each.
     delays : tuple of (str, Delay)
         Random times, by the name they are drawn with.
     place : tuple of int
@@ -98,6 +106,11 @@ class Wiring:
     certain: bytes
     settles: tuple[tuple[int, ...], ...]
     siblings: tuple[tuple[int, ...], ...]
+    shared: tuple[int, ...]
+    unless_mask: tuple[int, ...]
+    given_mask: tuple[int, ...]
+    ask_bytes: tuple[int, ...]
+    mode_bytes: tuple[int, ...]
     breaker_modes: tuple[tuple[tuple[int, tuple[int, ...], bool | None], ...], ...]
     delays: tuple[tuple[str, Delay], ...]
     on: tuple[Start, ...]
@@ -130,6 +143,7 @@ def _wiring(case: Case) -> Wiring:
     siblings = {j for q in direct for j in case.program.siblings[q]}
     questions = tuple(sorted(direct | siblings))
     local = {q: i for i, q in enumerate(questions)}
+    siblings_of = tuple(tuple(local[j] for j in case.program.siblings[q] if j in local) for q in questions)
     delays: list[tuple[str, Delay]] = []
 
     def start(name: str, delay: Delay | None) -> Start:
@@ -173,7 +187,12 @@ def _wiring(case: Case) -> Wiring:
         asks=tuple(tuple(local[q] for q in group) for group in case.asks),
         certain=bytes(UNKNOWN if v is None else int(v) for v in case.certain),
         settles=tuple(case.settles.get(q, ()) for q in questions),
-        siblings=tuple(tuple(local[j] for j in case.program.siblings[q] if j in local) for q in questions),
+        siblings=siblings_of,
+        shared=tuple(q for q, others in enumerate(siblings_of) if others),
+        unless_mask=_gates_by_ask(case.unless, len(case.asks)),
+        given_mask=_gates_by_ask(case.given, len(case.asks)),
+        ask_bytes=tuple(_bytes_at(local[q] for q in group) for group in case.asks),
+        mode_bytes=tuple(_bytes_at(local[q] for _, group, _ in modes for q in group) for modes in case.breaker_asks),
         breaker_modes=tuple(
             tuple((MODES.index(m), tuple(local[q] for q in group), certain) for m, group, certain in modes)
             for modes in case.breaker_asks
@@ -186,16 +205,31 @@ def _wiring(case: Case) -> Wiring:
     )
 
 
+def _gates_by_ask(of_gate: Sequence[Sequence[int]], count: int) -> tuple[int, ...]:
+    masks = [0] * count
+    for g, group in enumerate(of_gate):
+        for a in group:
+            masks[a] |= 1 << g
+    return tuple(masks)
+
+
+def _bytes_at(places: Iterable[int]) -> int:
+    """A mask with a byte of ones at each of these places."""
+    mask = 0
+    for i in places:
+        mask |= 0xFF << 8 * i
+    return mask
+
+
 def doomed(w: Wiring, live: int) -> Doomed:
     """What cannot matter any more while only these breakers and outputs may still change."""
     matters = bytes(bool(live & mask) for mask in w.reach_mask)
-    asks = [any(matters[g] for g in gates) for gates in w.gates_asking]
     return Doomed(
         matters=matters,
-        signals=sum(0xFF << 8 * b for b, m in enumerate(matters) if m),
-        moves=sum(0xFF << 8 * b for b, m in enumerate(matters) if m or w.place[b] >= 0),
-        verdicts=sum(0xFF << 8 * a for a, kept in enumerate(asks) if kept),
-        unknown=sum(UNKNOWN << 8 * a for a, kept in enumerate(asks) if not kept),
+        gates=sum(1 << g for g, m in enumerate(matters) if m),
+        signals=_bytes_at(b for b, m in enumerate(matters) if m),
+        moves=_bytes_at(b for b, m in enumerate(matters) if m or w.place[b] >= 0),
+        asks={},
         kept={},
     )
 
