@@ -158,9 +158,12 @@ def test_trials_are_found_by_what_happens_in_them(opening: Any, tmp_path: Path) 
 def test_trials_are_found_among_given_failure_sets() -> None:
     campaign = small(None, 1)
     name = next(iter(campaign.variants))
-    stuck = next(q.name for q in campaign.variants[name].questions if q.name.endswith("F1.CB: does_not_open"))
-    given = replace(campaign, trials=0, failures=((), (stuck,)))
-    assert find_trials(given, name, F1, lambda e, _: stuck.partition(":")[0] not in e.open) == (1,)
+    given = replace(campaign, trials=0, failures=((), *((q.name,) for q in campaign.variants[name].questions)))
+    slow = [replay_trial(given, name, F1, n).run.outcome.t_clear_us for n in range(given.rounds)]
+    assert len(set(slow)) > 1
+    assert find_trials(given, name, F1, lambda _, us: us != slow[0], most=99) == tuple(
+        n for n, us in enumerate(slow) if us != slow[0]
+    )
     with pytest.raises(InputError, match="most: got 0"):
         find_trials(given, name, F1, lambda *_: True, most=0)
     with pytest.raises(InputError, match="a variant of the campaign"):
