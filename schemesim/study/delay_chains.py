@@ -66,7 +66,8 @@ def chain_of(run: Run, program: Program, row: int) -> Chain:
 def starts_of(program: Program, run: Run, timer: str, initiate: str) -> list[Chain]:
     """Chains of delays of everything that would start the timer before it has run out.
 
-    Any of the inputs of an OR may; of those that must come together the one that came last counts.
+    Any of the inputs of an OR may; of those that must come together the one that came last counts. An input
+    that a run left undecided, since another had come at the same time, may come first at other times: it counts.
 
     Parameters
     ----------
@@ -82,6 +83,18 @@ def starts_of(program: Program, run: Run, timer: str, initiate: str) -> list[Cha
     for r in run.log:
         if r.what in _RISES and r.t_us < out:
             rose.setdefault(r.subject, r.t_us)
+    failed = {program.questions[q].name for q, yes in run.asked if yes}
+
+    def comes(name: str) -> int | None:
+        """When a signal rises, or would if what stands in its way had been asked; None: it does not."""
+        item = block[name]
+        if name in rose or not isinstance(item, Gate) or item.given:
+            return rose.get(name)
+        if any(f"{a.component}: {a.mode}" in failed for a in item.unless):
+            return None
+        times = [comes(x) for x in item.inputs if isinstance(x, str)]
+        there = sorted(t for t in times if t is not None)
+        return there[item.k - 1] if len(there) >= item.k else None
 
     def behind(name: str, seen: frozenset[str]) -> list[Chain]:
         item = block[name]
@@ -96,9 +109,8 @@ def starts_of(program: Program, run: Run, timer: str, initiate: str) -> list[Cha
             case Latch():
                 return behind(signal_of(item.set), seen)
             case Gate():
-                inputs = [x for x in item.inputs if isinstance(x, str) and x in rose]
-                if item.k > 1:
-                    inputs = sorted(inputs, key=lambda x: rose[x])[-1:]
+                came = {x: t for x in item.inputs if isinstance(x, str) and (t := comes(x)) is not None}
+                inputs = sorted(came, key=lambda x: came[x])[-1:] if item.k > 1 else list(came)
                 return [chain for x in inputs for chain in behind(x, seen)]
             case _:
                 return []

@@ -302,3 +302,26 @@ def test_table_and_mistakes() -> None:
         Weights(late=-1)
     with pytest.raises(InputError, match="late_target"):
         Weights(late_target=2)
+
+
+def test_a_start_that_a_run_left_undecided_may_come_first_at_other_times() -> None:
+    """A bus differential sees the fault by the CTs of both generators; one is enough, so no run asks about both."""
+    b = PlantBuilder()
+    generator(b, "G1", station="Alder")
+    generator(b, "G2", station="Alder")
+    single_bus(b, "Alder", [Bay("G1", "G1"), Bay("G2", "G2")])
+    policy = timed()
+    policy = replace(policy, times=replace(policy.times, differential=ElementTimes(operate=Uniform(10_000, 50_000))))
+    plant, bus, stuck = b.build(), Location("Alder.B1"), "Alder.G1.CB: does_not_open"
+    program = compile_scheme(plant, dress(plant, policy))
+    # Sensing, lockout 10, timer 150, lockout 10, the unit's 50: late where both elements take more than 30 ms, 1/4.
+    found = study_timers(program, LogicalSensing(), [bus], limit_us=250_000, settings_us=[150_000]).of("Alder.G1.CB")
+    late = found.now.p_late
+    assert found.race.rest is not None
+    assert len(found.race.rest.shortest) == 2
+    assert float(late.low) == pytest.approx(0.25, abs=1e-3)
+    assert float(late.high) == pytest.approx(0.25, abs=1e-3)
+    case = bind(program, bus, LogicalSensing())
+    runs = [run_event(case, FixedAnswers(program, [stuck]), times=DelayTimes(3, t)).outcome for t in range(200)]
+    low, high = clopper_pearson(sum((o.t_clear_us or 0) > 250_000 for o in runs), 200, 0.999)
+    assert low <= 0.25 <= high
