@@ -92,6 +92,7 @@ if TYPE_CHECKING:
     from schemesim.scheme.delays import Fixed, fixed_ms
     from schemesim.scheme.distributions import LogNormal, Normal, Triangular, Uniform
     from schemesim.scheme.dress import dress
+    from schemesim.scheme.extend import extend
     from schemesim.scheme.failure_data import FailureData, Override
     from schemesim.scheme.functions import BreakerFailureTimes, ElementTimes
     from schemesim.scheme.independence import independence
@@ -224,6 +225,7 @@ _HOMES = {
     "schemesim.scheme.functions": "BreakerFailureTimes ElementTimes",
     "schemesim.scheme.distributions": "LogNormal Normal Triangular Uniform",
     "schemesim.scheme.dress": "dress",
+    "schemesim.scheme.extend": "extend",
     "schemesim.engine.program": "Program compile_scheme",
     "schemesim.engine.sensing": "LogicalSensing NoFault",
     "schemesim.engine.case": "Case bind",
@@ -309,16 +311,16 @@ __all__ = [
     "breakers_excess", "breakers_mean", "campaign_in", "campaign_scenario", "clearing_time", "clopper_pearson",
     "compare", "compare_trip_matrix", "compile_scheme", "coordination", "coverage_audit", "decide", "dial_policies",
     "dial_scenario", "double_bus", "dress", "duplicate_chain", "duplicate_relay", "duty", "equipment_list", "explore",
-    "export_campaign", "feeder", "find_trials", "fixed_ms", "frontier", "generator", "graded", "iec_61508_pfd",
-    "importance", "importance_scenario", "independence", "infeed", "inject", "intervals_scenario", "isolation_zones",
-    "iter_locations", "line", "load_campaign", "load_equipment", "load_relay_schedule", "load_scenario",
-    "load_starting_values", "merged_elements", "minimal_sets", "misoperation", "misoperations_scenario",
-    "neighbourhood", "network_of", "next_best", "optimal_interval_yr", "outages_scenario", "outputs_of", "p_by_main",
-    "p_by_role", "p_cleared", "p_selective", "p_within_limit", "planned_outages", "plant_of_pandapower",
-    "plant_of_tables", "plot_one_line", "plot_time_current", "plot_timeline", "plot_timelines", "protected_object",
-    "races", "readable", "redundant", "register", "register_scenario", "relay_schedule", "replay", "replay_trial",
-    "report_scenario", "ring", "run_campaign", "run_event", "save_scenario", "sectionalised_bus", "settings_for",
-    "simulate", "simulate_stratified", "single_bus", "single_points", "single_set", "standard_curve",
+    "export_campaign", "extend", "feeder", "find_trials", "fixed_ms", "frontier", "generator", "graded",
+    "iec_61508_pfd", "importance", "importance_scenario", "independence", "infeed", "inject", "intervals_scenario",
+    "isolation_zones", "iter_locations", "line", "load_campaign", "load_equipment", "load_relay_schedule",
+    "load_scenario", "load_starting_values", "merged_elements", "minimal_sets", "misoperation",
+    "misoperations_scenario", "neighbourhood", "network_of", "next_best", "optimal_interval_yr", "outages_scenario",
+    "outputs_of", "p_by_main", "p_by_role", "p_cleared", "p_selective", "p_within_limit", "planned_outages",
+    "plant_of_pandapower", "plant_of_tables", "plot_one_line", "plot_time_current", "plot_timeline", "plot_timelines",
+    "protected_object", "races", "readable", "redundant", "register", "register_scenario", "relay_schedule", "replay",
+    "replay_trial", "report_scenario", "ring", "run_campaign", "run_event", "save_scenario", "sectionalised_bus",
+    "settings_for", "simulate", "simulate_stratified", "single_bus", "single_points", "single_set", "standard_curve",
     "study_dependability", "study_dial", "study_importance", "study_locations", "study_misoperations", "study_no_fault",
     "study_outages", "study_test_intervals", "study_timers", "study_variants", "timeline", "timer_scenario",
     "transformer", "trip_matrix", "unavailability", "uncertainty", "wilson", "zone_graph",

@@ -140,6 +140,7 @@ PUBLIC: list[str] = [
     "equipment_list",
     "explore",
     "export_campaign",
+    "extend",
     "feeder",
     "find_trials",
     "fixed_ms",
