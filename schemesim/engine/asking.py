@@ -35,10 +35,24 @@ def next_gate(m: Signals) -> int:
         return -1
     w, value = m.w, m.value
     waited = [g for i, g in enumerate(w.observed) if m.live >> (len(w.breakers) + i) & 1]
-    waited += [j for c in m.touched if m.is_live(c) for j in m.read_by(c)]
-    unknown = {j for j in waited if value[j] >= UNKNOWN}
-    found = {g for j in unknown for g in open_behind(m, j) if m.live & w.reach_mask[g]}
-    return min(found, key=w.order.__getitem__, default=-1)
+    for c in m.touched:
+        if m.is_live(c):
+            waited += m.read_by(c)
+    best, first = -1, -1
+    seen: set[int] = set()
+    stack = [j for j in waited if value[j] >= UNKNOWN]
+    while stack:
+        g = stack.pop()
+        if g in seen:
+            continue
+        seen.add(g)
+        if value[g] == OPEN:
+            order = w.order[g]
+            if (best < 0 or order < first) and m.live & w.reach_mask[g]:
+                best, first = g, order
+        else:
+            stack += [j for j, _ in w.inputs[g] if value[j] >= UNKNOWN]
+    return best
 
 
 def open_behind(m: Signals, signal: int) -> list[int]:

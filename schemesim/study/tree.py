@@ -248,7 +248,7 @@ def explore(
     bound = _checked(epsilon, max_runs, complete, stop is not None)
     known = conditions(case.program, given or {})
     forks = Forks(case, known, horizon_us) if run is None and not case.inverse else None
-    growing = _Growing(case.program, known, complete, forks)
+    growing = _Growing(case.program, known, complete, forks, bound)
     check_at = 8
     stopped = "budget"
     while growing.runs < max_runs:
@@ -289,6 +289,7 @@ class _Growing:
     given: dict[int, bool]
     complete: int
     forks: Forks | None = None
+    bound: Probability = 0.0
     runs: int = 0
     depth: int = 0
     tiny: int = 0
@@ -312,7 +313,8 @@ class _Growing:
         negative, prefix, factors, paused = heapq.heappop(self.first or self.heap)
         pauses: tuple[Paused, ...] = ()
         if self.forks and paused:
-            forked = self.forks.run(paused, self.given.get(prefix[-1][0], prefix[-1][1]) if prefix else None)
+            told = self.given.get(prefix[-1][0], prefix[-1][1]) if prefix else None
+            forked = self.forks.run(paused, told, self._worth(-negative))
             outcome, final_mask, pauses = forked.outcome, forked.final_mask, forked.pauses
             asked = (*prefix[:-1], *forked.asked)
         else:
@@ -346,6 +348,12 @@ class _Growing:
             end = self.ends.setdefault(End(outcome, final_mask), len(self.ends))
             self.leaves.append(Leaf(asked, rest, end))
         self.left = self.left + add(opened)
+
+    def _worth(self, mass: Probability) -> Callable[[int], bool]:
+        """Whether a run that says yes will be opened, as far as can be told before: by its mass."""
+        least = self.bound / 100 if self.bound else mass / 1000
+        questions = self.program.questions
+        return lambda q: mass * questions[q].probability >= least
 
     def _note(self, mass: Probability) -> None:
         if isinstance(mass, float) and mass < _TINY:
