@@ -67,12 +67,12 @@ class Packed(PackedRows):
         for a in range(0, self.running.size, TILE):
             part = slice(a, a + TILE)
             due = self.due[:, part]
-            first: NDArray[Any] = np.full(due.shape[1], self.never, dtype=due.dtype)
+            first = np.full(due.shape[1], self.never, dtype=due.dtype)
             for s in lines:
                 np.minimum(first, due[s], out=first)
             self.beyond[part] = first < self.never
             same = again[part] | (first == self.t[part])
-            t: NDArray[Any] = np.where(same, self.t[part], first)
+            t = np.where(same, self.t[part], first)
             going = self.running[part] & (t <= self.horizon_us)
             self.passes[part] = (self.passes[part] + 1) * (same & going)
             t[~going] = -1
@@ -80,8 +80,8 @@ class Packed(PackedRows):
             now = np.empty((len(lines), t.size), dtype=np.bool_)
             for i, s in enumerate(lines):
                 np.equal(due[s], t, out=now[i])
-            i, rows = np.divmod(np.flatnonzero(now), t.size)
-            due[np.array(lines, dtype=np.intp)[i], rows] = self.never
+            line, rows = np.divmod(np.flatnonzero(now), t.size)
+            due[np.array(lines, dtype=np.intp)[line], rows] = self.never
             expired[lines, a // 64 : (a + TILE) // 64] |= pack(now)
         return expired
 
