@@ -10,7 +10,7 @@ the breakers newly committed, and what starts, stops, or cannot matter any more.
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 import numpy as np
 
