@@ -342,7 +342,8 @@ class EventRun:
         """Blocks whose input rose start; those whose input fell cancel or start their drop-out."""
         case, logic = self.case, self.logic
         for block in self._discs.with_moved(sensed):
-            self._follow_input(block, self._holds[block], self.record.topology_row, 0)
+            row = -1 if block in self._forced else self.record.topology_row  # a process has no row
+            self._follow_input(block, self._holds[block], row, 0)
         for block in logic.touched_sinks():
             kind = case.kind[block]
             if kind is Kind.TIMER:

@@ -88,6 +88,18 @@ def test_a_process_forces_an_external_condition_and_reads_signals() -> None:
     ]
 
 
+def test_what_a_process_forces_has_no_cause_in_the_log() -> None:
+    """Neither the fault nor an opening led to it."""
+
+    def operator(run: EventRun) -> Steps:
+        yield run.env.timeout(100_000)
+        run.force("button", True)
+
+    run = play(case(radial(), by_hand()), processes=[operator])
+    opened = next(r for r in run.log if (r.subject, r.what) == ("IN.CB", "opens"))
+    assert causes(run.log, opened.index)[-1] == ("button", "begins to measure")
+
+
 def test_a_condition_let_go_before_its_time_stops_the_element() -> None:
     def hesitant(run: EventRun) -> Steps:
         run.force("button", True)
