@@ -97,7 +97,7 @@ def test_what_a_process_forces_has_no_cause_in_the_log() -> None:
 
     run = play(case(radial(), by_hand()), processes=[operator])
     opened = next(r for r in run.log if (r.subject, r.what) == ("IN.CB", "opens"))
-    assert causes(run.log, opened.index)[-1] == ("button", "begins to measure")
+    assert causes(run.log, opened.index)[-1] == ("button", "starts")
 
 
 def test_a_condition_let_go_before_its_time_stops_the_element() -> None:
