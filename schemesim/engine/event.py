@@ -1,9 +1,9 @@
 """The event engine, on SimPy: the readable definition of the rules.
 
-Pending things are SimPy timeouts. What is due at one instant is collected first; an
-``instant`` of lower priority then runs one pass (rule R2): expiries, topology,
-sensing, logic with its questions, starts and cancellations. Zero-delay consequences
-are timeouts of zero, hence a further pass of the same instant.
+Pending things are SimPy timeouts. What is due at one instant is collected first; once
+nothing else is due then, one pass runs (rule R2): expiries, topology, sensing, logic
+with its questions, starts and cancellations. Zero-delay consequences are timeouts of
+zero, hence a further pass of the same instant.
 """
 
 from __future__ import annotations
@@ -32,8 +32,6 @@ from schemesim.ticks import from_ms
 DEFAULT_HORIZON_US = from_ms(10_000)
 
 Process = Callable[["EventRun"], Generator[simpy.Event, Any, Any]]
-
-_BEHIND = 2  # lower than SimPy's own priorities: everything due has expired before a pass
 
 
 def run_event(
@@ -117,7 +115,7 @@ class EventRun:
         self._fed = False
         self._events = 0
         self._own = bool(processes)
-        self._call_instant()
+        self._called = True
         for process in processes:
             self.env.process(process(self))
 
@@ -154,21 +152,24 @@ class EventRun:
         if i is None or not isinstance(block, Sense) or not isinstance(block.condition, External):
             raise reject("signal", name, "a sense block declared External that leads to a breaker")
         self._forced[i] = state
-        self._call_instant()
+        self._called = True
 
     def finish(self) -> Run:
         """Step until nothing is pending or the horizon is reached (rule R20)."""
         env, at_horizon = self.env, False
         while True:
             when = env.peek()
+            if self._called and when > env.now:
+                self._instant()
+                if self._pending == 0 and not self._own:
+                    break
+                continue
             if when == float("inf"):
                 break
             if when > self.horizon_us:
                 at_horizon = any(map(self._is_pending, range(len(self._token))))
                 break
             env.step()
-            if self._pending == 0 and not self._called and not self._own:
-                break
         return Run(
             outcome=self._outcome(at_horizon),
             asked=tuple(self.logic.asked),
@@ -192,15 +193,6 @@ class EventRun:
             operated=tuple(sorted(self.logic.operated.items())),
             at_horizon=at_horizon,
         )
-
-    def _call_instant(self) -> None:
-        """Ask for one pass, behind everything else that is due now."""
-        if not self._called:
-            self._called = True
-            event = self.env.event()
-            event._ok, event._value = True, None
-            event.callbacks.append(self._instant)
-            self.env.schedule(event, priority=_BEHIND)  # type: ignore[arg-type]  # SimPy types it 0 or 1
 
     def _start(self, block: int, delay_us: int, target: int) -> None:
         """Have a block take a value after a delay; what is due at one time shares one timeout."""
@@ -228,7 +220,7 @@ class EventRun:
                 self._pending -= 1
                 self._expired.append(block)
         if self._expired:
-            self._call_instant()
+            self._called = True
 
     def _delay(self, block: int, rising: bool) -> int:
         fixed = self.case.fixed[rising][block]
@@ -240,7 +232,7 @@ class EventRun:
     def _time_of(self, name: str, delay: Delay) -> int:
         return delay.nominal_us if self._times is None else self._times.of(name, delay)
 
-    def _instant(self, _: simpy.Event) -> None:
+    def _instant(self) -> None:
         """One pass (rule R2)."""
         self._called, now = False, int(self.env.now)
         self._pass = self._pass + 1 if now == self._pass_time else 0

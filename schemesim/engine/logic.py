@@ -207,7 +207,7 @@ class Logic:
                 new = value[g]
                 if new != UNKNOWN and self._shown[g] != (new == TRUE):
                     self._shown[g] = new == TRUE
-                    if not at_rest:
+                    if not at_rest and self.record.keep:
                         self.row[g] = self.record.gate(g, new, value, self.row)
                 self._spread(g)
 
@@ -217,7 +217,7 @@ class Logic:
         True if its value changed, or the role in which it is true. A gate that is unknown for
         want of an answer only is open; its role is ``WANTS_ANSWER``.
         """
-        case, value, verdict = self.case, self.value, self._verdict
+        case, value, verdict, ranks = self.case, self.value, self._verdict, self.rank
         new, rank = FALSE, 0
         failed = False
         for a in case.unless[g]:
@@ -232,12 +232,11 @@ class Logic:
                 v = value[j]
                 if v == UNKNOWN:
                     unknown += 1
-                elif (v == TRUE) is not inverted:
+                elif v != inverted:  # the values are FALSE = 0 and TRUE = 1
                     true += 1
-                    if not inverted and self.rank[j] < best:
-                        best = self.rank[j]
-                    elif inverted:
-                        best = 0
+                    r = 0 if inverted else ranks[j]
+                    if r < best:
+                        best = r
             if true >= k:
                 new, rank = self._with_answers(g)
                 if new == TRUE:
@@ -296,17 +295,21 @@ class Logic:
         """The gate whose question comes next: the first in order that a live sink, or an output observed, waits for."""
         if not self._open:
             return None
-        case, value, live = self.case, self.value, self._live
-        waited = {g for g, bit in self._watch.items() if live & bit}
+        case, value, live, waiting = self.case, self.value, self._live, self._open
+        stack = [g for g, bit in self._watch.items() if live & bit and value[g] == UNKNOWN] if self._watch else []
         for c in self._touched:
             if self._is_live(c):
-                waited.update(self._read_by(c))
-        best, first = None, len(case.program.order)
-        for signal in waited:
-            if value[signal] == UNKNOWN:
-                for g in open_behind(case, value, self._open, signal):
-                    if case.order[g] < first and live & case.reach_mask[g]:
-                        best, first = g, case.order[g]
+                stack += [j for j in self._read_by(c) if value[j] == UNKNOWN]
+        best, first, seen = None, len(case.program.order), set[int]()
+        while stack:
+            g = stack.pop()
+            if g in seen:
+                continue
+            seen.add(g)
+            if g not in waiting:
+                stack += [j for j, _ in case.inputs[g] if value[j] == UNKNOWN]
+            elif case.order[g] < first and live & case.reach_mask[g]:
+                best, first = g, case.order[g]
         return best
 
     def _read_by(self, block: int) -> list[int]:
