@@ -96,7 +96,9 @@ def plot_timelines(
         names = short_names([next(x for x in pair if x is not None).label for pair in pairs], width)
         for name, pair in zip(names, pairs, strict=True):
             for row, (lane, label) in enumerate(zip(pair, labels, strict=True)):
-                ticks[y] = (f"{name} · {label}" if row == 0 else label), False
+                other = lane is not None and row == 1 and pair[0] is not None and lane.subject != pair[0].subject
+                own = lane.label if other and lane is not None else name  # faults at two places
+                ticks[y] = (f"{own} · {label}" if row == 0 or other else label), False
                 if lane is not None:
                     draw_lane(ax, lane, y)
                 y += 1
@@ -128,11 +130,15 @@ def _paired(first: Drawing, second: Drawing, shown: Set[str], *, all: bool) -> t
     """Lanes of both by station, those that differ (or all), and how many are the same."""
     mine = {lane.subject: lane for lane in first.lanes}
     other = {lane.subject: lane for lane in second.lanes}
-    stations = {"": [first.fault.subject]}
+    stations: dict[str, list[str]] = {}
     for station, lanes in (*first.stations, *second.stations):
         here = stations.setdefault(station, [])
         here += [lane.subject for lane in lanes if lane.subject in shown and lane.subject not in here]
-    groups, left_out = list[tuple[str, list[Pair]]](), 0
+    faults: Pair = (first.fault, second.fault)
+    groups: list[tuple[str, list[Pair]]] = [("fault", [faults])]
+    left_out = 0
+    if not all and (first.fault.subject, first.fault.bars) == (second.fault.subject, second.fault.bars):
+        groups, left_out = [], 1
     for station, subjects in stations.items():
         pairs: list[Pair] = []
         for subject in subjects:
@@ -142,7 +148,7 @@ def _paired(first: Drawing, second: Drawing, shown: Set[str], *, all: bool) -> t
             else:
                 pairs.append((a, b))
         if pairs:
-            groups.append((station or "fault", pairs))
+            groups.append((station, pairs))
     return groups, left_out
 
 

@@ -574,3 +574,10 @@ def test_two_sequences_show_what_differs() -> None:
 def test_two_sequences_alike_have_no_lane_that_differs() -> None:
     found = timeline_of("main")
     assert gids_of(plot_timelines(found, found), "bar") == []
+
+
+def test_faults_at_two_places_are_compared_one_above_the_other() -> None:
+    found = [timeline(c, replay(c, NO_FAILURE)) for c in (case_of("L1"), case_of("F1"))]
+    ax = plot_timelines(found[0], found[1], ("line", "feeder"))
+    assert [t.get_text() for t in ax.get_yticklabels()][:3] == ["fault", "L1 · line", "F1 · feeder"]
+    assert [g for g in gids_of(ax, "bar") if g.startswith("fault fed")] == ["fault fed: L1", "fault fed: F1"]
