@@ -8,9 +8,9 @@ and a timer from 70 to 145 ms would be in time and never needless. Zone 2 of the
 failure 100 to 110 ms.
 
 With times that scatter (policy "scattered times": breakers 50 ms and now and then 65, detectors 10 to 30) 150 ms is
-never needless still, but late in 19 of 20 clearings at Dunmore's line breakers, and in one of fifty at Alder's
-generators. A setting from 91 to 129 ms keeps both under one in a thousand at these breakers, 115 has the least of
-both together. Counting a late clearing twenty times as much as a needless trip moves that by two milliseconds only:
+never needless still, but late in nine of ten clearings at Dunmore's line breakers, and in one of a hundred at Alder's
+generators. A setting from 91 to 131 ms keeps both under one in a thousand at these breakers, 115 has the least of
+both together. Counting a late clearing twenty times as much as a needless trip moves that by a millisecond only:
 either side falls by a factor of ten each few milliseconds.
 
 A second set in 1-out-of-2 makes the protection of Alder miss less and trip more without need; 2-out-of-2 misses

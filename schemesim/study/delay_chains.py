@@ -6,6 +6,7 @@ from schemesim.engine.outcome import Run
 from schemesim.engine.program import Program
 from schemesim.scheme.delays import Delay
 from schemesim.scheme.model import Block, Breaker, Gate, Latch, Sense, Timer, inputs_of, signal_of
+from schemesim.study.time_sums import Links, Span
 
 Chain = list[tuple[str, Delay]]
 """Blocks and their delays, from the fault on."""
@@ -133,3 +134,24 @@ def overlap(chains: list[Chain]) -> bool:
     """Whether a delay is in more than one of the chains."""
     names = [n for c in chains for n, _ in c]
     return len(set(names)) < len(names)
+
+
+def earliest_of(chains: list[Chain]) -> tuple[tuple[Links, ...], bool]:
+    """Ways of which the earliest counts, those that end alike taken together, and whether any still share a delay.
+
+    Two elements that trip through one lockout relay are the earlier of both, and then the relay.
+    """
+    groups: dict[str, list[Chain]] = {}
+    for chain in chains:
+        groups.setdefault(chain[-1][0], []).append(chain)
+    ways: list[Links] = []
+    for group in groups.values():
+        tail = group[0][-1][1]
+        before = [chain[:-1] for chain in group]
+        if not all(before):  # one of them begins here
+            ways.append((tail,))
+            continue
+        inner, shared = earliest_of(before)
+        ways.append((*inner[0], tail) if len(inner) == 1 else (Span(shortest=inner, shared=shared), tail))
+    names = [name for group in groups.values() for name in {n for chain in group for n, _ in chain}]
+    return tuple(ways), len(set(names)) < len(names)

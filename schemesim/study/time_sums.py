@@ -122,9 +122,9 @@ class Span:
 
     Parameters
     ----------
-    parts : tuple of Delay
+    parts : tuple of Delay or Span
         Added.
-    longest, shortest : tuple of tuple of Delay
+    longest, shortest : tuple of tuple of Delay or Span
         Chains of which the longest, and the shortest, is added; () for none.
     less : tuple of Delay
         Taken away.
@@ -142,23 +142,23 @@ class Span:
     (0, 1)
     """
 
-    parts: tuple[Delay, ...] = ()
-    longest: tuple[tuple[Delay, ...], ...] = ()
-    shortest: tuple[tuple[Delay, ...], ...] = ()
+    parts: Links = ()
+    longest: tuple[Links, ...] = ()
+    shortest: tuple[Links, ...] = ()
     less: tuple[Delay, ...] = ()
     shared: bool = False
 
     @property
     def delays(self) -> tuple[Delay, ...]:
         """Every delay in it."""
-        chains = (*self.longest, *self.shortest)
-        return (*self.parts, *(d for c in chains for d in c), *self.less)
+        links = (d for chain in (self.parts, *self.longest, *self.shortest) for d in chain)
+        return (*(x for d in links for x in (d.delays if isinstance(d, Span) else (d,))), *self.less)
 
     @property
     def nominal_us(self) -> int:
         """The sum where nothing is random."""
 
-        def of(chain: tuple[Delay, ...]) -> int:
+        def of(chain: Links) -> int:
             return sum(d.nominal_us for d in chain)
 
         found = of(self.parts) - of(self.less)
@@ -173,12 +173,13 @@ class Span:
     def grid(self, cells: int = CELLS) -> Grid:
         """Its distribution, from below and from above."""
         width = max((high - low for low, high in map(_span, self.delays)), default=0)
-        step = max(1, width // cells)
+        return self._on(max(1, width // cells))
 
-        def of(chain: tuple[Delay, ...]) -> Grid:
+    def _on(self, step: int) -> Grid:
+        def of(chain: Links) -> Grid:
             total = point(0, step)
             for d in chain:
-                total = total.plus(_on_grid(d, step))
+                total = total.plus(d._on(step) if isinstance(d, Span) else _on_grid(d, step))
             return total
 
         total = of(self.parts)
@@ -189,6 +190,10 @@ class Span:
         for d in self.less:
             total = total.plus(_on_grid(d, step).negative())
         return total
+
+
+Links = tuple[Delay | Span, ...]
+"""A chain of delays, each with one time or with that of the longest or shortest of several ways."""
 
 
 def _span(delay: Delay) -> tuple[int, int]:

@@ -27,7 +27,7 @@ from schemesim.engine.sensing import Sensing
 from schemesim.plant.model import Location
 from schemesim.scheme.delays import Delay
 from schemesim.scheme.model import Breaker, FailureMode, Gate, Role, Sense, Timer, signal_of
-from schemesim.study.delay_chains import apart, chain_of, overlap, starts_of
+from schemesim.study.delay_chains import apart, chain_of, earliest_of, overlap, starts_of
 from schemesim.study.measures import cleared_by
 from schemesim.study.races import races
 from schemesim.study.time_sums import Span
@@ -199,12 +199,13 @@ def _rest(case: Case, run: Run, breaker: str) -> tuple[Span | None, tuple[Span, 
     cut = [[n for n, _ in c].index(timer) for c in through]
     before, early = apart(starts_of(program, run, timer, f"{breaker}/50BF initiate") or [through[0][: cut[0]]])
     after, late = apart([c[k + 1 :] for c, k in zip(through, cut, strict=True)])
+    shortest, shared = earliest_of(before) if all(before) else ((), False)
     return (
         Span(
             parts=tuple(d for _, d in (*early, *late)),
             longest=tuple(tuple(d for _, d in c) for c in after if c),
-            shortest=tuple(tuple(d for _, d in c) for c in before) if all(before) else (),
-            shared=overlap(before) or overlap(after),
+            shortest=shortest,
+            shared=shared or overlap(after),
         ),
         others,
     )

@@ -27,6 +27,7 @@ from schemesim.scheme.functions import BreakerFailureTimes, ElementTimes
 from schemesim.scheme.model import Role
 from schemesim.scheme.policy import BreakerFailurePolicy, Policy, PolicyTimes, duplicate_relay, single_set
 from schemesim.study.brackets import Bracket, exactly
+from schemesim.study.delay_chains import earliest_of
 from schemesim.study.intervals import clopper_pearson
 from schemesim.study.time_sums import Span
 from schemesim.study.timer_races import timer_races
@@ -325,3 +326,25 @@ def test_a_start_that_a_run_left_undecided_may_come_first_at_other_times() -> No
     runs = [run_event(case, FixedAnswers(program, [stuck]), times=DelayTimes(3, t)).outcome for t in range(200)]
     low, high = clopper_pearson(sum((o.t_clear_us or 0) > 250_000 for o in runs), 200, 0.999)
     assert low <= 0.25 <= high
+
+
+def test_ways_that_end_alike_are_taken_together() -> None:
+    """Three elements of 0 to 100 ms, two of them through one lockout relay of 10 ms: all over 50 ms in one of eight."""
+    ms = Uniform(0, 100_000)
+    chains: list[list[tuple[str, Delay]]] = [
+        [("a", ms), ("86 1", Fixed(10_000))],
+        [("b", ms), ("86 1", Fixed(10_000))],
+        [("c", ms), ("86 2", Fixed(10_000))],
+    ]
+    ways, shared = earliest_of(chains)
+    assert (len(ways), shared) == (2, False)
+    late = Span(shortest=ways).grid().exceeds(60_000)
+    assert float(late.low) == pytest.approx(1 / 8, abs=5e-3)
+    assert float(late.high) == pytest.approx(1 / 8, abs=5e-3)
+    # A relay that takes its time for both at once is drawn once: 0 to 100 ms and no other delay.
+    same: list[list[tuple[str, Delay]]] = [[("a", Fixed(0)), ("86 1", ms)], [("b", Fixed(0)), ("86 1", ms)]]
+    one = Span(shortest=earliest_of(same)[0]).grid().exceeds(50_000)
+    assert float(one.low) == pytest.approx(1 / 2, abs=5e-3)
+    assert float(one.high) == pytest.approx(1 / 2, abs=5e-3)
+    # An element that starts by two ways is in both of them: told, so that only bounds are given.
+    assert earliest_of([[("a", ms), ("x", ms)], [("a", ms), ("y", ms)]])[1]
