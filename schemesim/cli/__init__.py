@@ -50,6 +50,12 @@ report
 audit
     ``policy``; ``elements``, for each its ``sets``, ``fully_duplicated`` and ``shared_kinds``; ``shared`` (rows as in
     the CSV); ``trip_matrix``: one row for each way; ``differences`` and the marks ``compared`` (null without a table).
+settings
+    ``policy``; ``elements`` (count); ``rows`` as in the CSV: one value each, with its ``reason`` (impedances in words).
+elements
+    ``policy``, ``faults`` and ``states`` of the sources (counts); ``rows`` as in the CSV, quantity ÷ setting at its
+    ``least`` of what an element is meant to see and its ``greatest`` of what it is not; ``blind`` and
+    ``over_reaching``: names.
 
 timer
     ``policy``, ``per_yr`` (whether risks are per year), ``weights``; ``timers`` (rows as in the CSV); ``curves``:
@@ -73,8 +79,8 @@ CSV
 With ``--csv FILE`` the table of the command is written, whole or not at all: the rows of the
 sequence (show), one row for each policy and location (study), one for each combination of
 failures (inject), one for each measure and variant (decide), one for each single point or
-pair and location (register), each item out (outages), each item shared (audit), each timer (timer), each
-group and position (dial), each component (importance), one for each
+pair and location (register), each item out (outages), each item shared (audit), each value (settings),
+each element (elements), each timer (timer), each group and position (dial), each component (importance), one for each
 policy (check), each place (campaign run and show). The first row names the columns, as in the JSON.
 """
 

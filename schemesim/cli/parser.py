@@ -10,6 +10,7 @@ from collections.abc import Sequence
 from schemesim.cli.audit import add_audit
 from schemesim.cli.campaign import add_campaign, campaign
 from schemesim.cli.decide import add_decide
+from schemesim.cli.elements import add_elements
 from schemesim.cli.output import BAD_INPUT, CANNOT_GO_ON, DONE, INTERRUPTED, NOTE, check_place
 from schemesim.cli.register import add_register
 from schemesim.cli.report import add_report
@@ -70,6 +71,7 @@ def parser() -> argparse.ArgumentParser:
     add_decide(commands, common)
     add_register(commands, common)
     add_audit(commands, common)
+    add_elements(commands, common)
     add_testing(commands, common)
     add_timer(commands, common)
     add_report(commands, common)
@@ -117,6 +119,7 @@ def _run(options: argparse.Namespace) -> int:
     from schemesim.cli.audit import audit
     from schemesim.cli.commands import check, inject, show  # heavy: not needed to tell of bad arguments
     from schemesim.cli.decide import decide
+    from schemesim.cli.elements import elements, settings
     from schemesim.cli.register import outages, register
     from schemesim.cli.report import report
     from schemesim.cli.study import study
@@ -127,7 +130,7 @@ def _run(options: argparse.Namespace) -> int:
     if options.csv is not None:
         check_place(options.csv, options.file)
     command = {"check": check, "show": show, "inject": inject, "study": study, "decide": decide,
-               "register": register, "outages": outages, "audit": audit,
+               "register": register, "outages": outages, "audit": audit, "settings": settings, "elements": elements,
                "intervals": intervals, "misoperations": misoperations,
                "timer": timer, "dial": dial, "importance": importance, "report": report}[options.command]  # fmt: skip
     return command(load_scenario(options.file), options)

@@ -103,18 +103,27 @@ class ElementAudit:
         over = [r for r in self.rows if r.over and r.greatest is not None]
         return tuple(sorted(over, key=lambda r: (-(r.greatest.multiple if r.greatest else 0.0), r.block)))
 
+    def records(self) -> list[dict[str, object]]:
+        """One row for each element, as data: counts, worst multiples and where they occur; None where there is none."""
+        rows: list[dict[str, object]] = []
+        for r in self.rows:
+            row: dict[str, object] = {"block": r.block}
+            for way, worst, counts in (
+                ("least", r.least, {"must": r.must, "blind": r.blind}),
+                ("greatest", r.greatest, {"must_not": r.must_not, "over": r.over}),
+            ):
+                row |= {**counts, way: worst.multiple if worst else None}
+                row |= {f"{way}_at": worst.fault if worst else "", f"{way}_in": worst.state if worst else ""}
+            rows.append(row)
+        return rows
+
     def table(self) -> pd.DataFrame:
         """One row for each element: counts, worst multiples and where they occur."""
         import pandas as pd
 
         names = ["block", "must", "blind", "least", "least_at", "least_in", "must_not", "over", "greatest",
                  "greatest_at", "greatest_in"]  # fmt: skip
-        rows = []
-        for r in self.rows:
-            least = (r.least.multiple, r.least.fault, r.least.state) if r.least else (float("nan"), "", "")
-            most = (r.greatest.multiple, r.greatest.fault, r.greatest.state) if r.greatest else (float("nan"), "", "")
-            rows.append((r.block, r.must, r.blind, *least, r.must_not, r.over, *most))
-        return pd.DataFrame(rows, columns=names)
+        return pd.DataFrame(self.records(), columns=names).astype({"least": float, "greatest": float})
 
     def _repr_html_(self) -> str:
         return to_html(self.table())
@@ -257,15 +266,19 @@ class _Tally:
         return ElementRow(block, self.seen[0], self.wrong[0], self.seen[1], self.wrong[1], *self.worst)
 
 
+def acting(program: Program, settings: Settings) -> tuple[str, ...]:
+    """Sense blocks that act by their setting, and not only where something fails."""
+    return tuple(
+        b.name
+        for i, b in enumerate(program.blocks)
+        if isinstance(b, Sense) and b.name in settings.of and not _only_where_something_fails(program, i)
+    )
+
+
 def _chosen(program: Program, settings: Settings, blocks: Iterable[str] | None) -> dict[str, Sense]:
     """The blocks to audit."""
     found: dict[str, Sense] = {}
-    if blocks is None:
-        for i, b in enumerate(program.blocks):
-            if isinstance(b, Sense) and b.name in settings.of and not _only_where_something_fails(program, i):
-                found[b.name] = b
-        return found
-    for name in blocks:
+    for name in acting(program, settings) if blocks is None else blocks:
         block = program.scheme.block.get(name)
         if not isinstance(block, Sense) or name not in settings.of:
             raise reject("block", name, "a sense block with a setting", tip=nearest(name, settings.of))
