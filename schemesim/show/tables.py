@@ -93,7 +93,7 @@ def to_html(frame: pd.DataFrame, *, caption: str = "", most: int = MOST_ROWS) ->
         Rows written; how many more there are is said below.
     """
     headings, texts, numeric = cells(frame)
-    side = [' style="text-align:right"' if n else ' style="text-align:left"' for n in numeric]
+    side = [' style="text-align:right;white-space:nowrap"' if n else ' style="text-align:left"' for n in numeric]
     lines = ['<table class="dataframe">']
     if caption:
         lines.append(f"<caption>{escape(caption)}</caption>")

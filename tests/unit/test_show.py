@@ -151,6 +151,7 @@ def test_html_escapes_and_says_what_it_leaves_out() -> None:
     assert html.count("<tr>") == 2
     assert "1 more rows" in html
     assert to_html(frame()).count("<tr>") == 3
+    assert "white-space:nowrap" in to_html(frame())  # figures stay on one line
     assert to_html(frame().head(0)).count("<tr>") == 1
 
 
