@@ -41,6 +41,7 @@ from schemesim.engine.walk import Walk
 from schemesim.engine.wiring import wiring_of
 from schemesim.errors import RunError
 from schemesim.study.tree import Tree, explore
+from tests.rules.random_curves import DrawnCurrents, with_curves
 from tests.rules.random_schemes import HORIZON_US, Sample, sample, with_random_delays, with_seals
 
 if TYPE_CHECKING:
@@ -148,16 +149,20 @@ def _seen(case: Case, columns: Columns, rows: Rows) -> list[Seen]:
     return [Seen(batch.outcome(i), mask, None) for i, mask in zip(range(rows.size), masks, strict=True)]
 
 
-def settings_of(number: int, random: bool) -> Setting:
-    """The program of a number, with some of its delays random or all of them fixed."""
+def settings_of(number: int, random: bool, curves: bool = False) -> Setting:
+    """The program of a number, with delays random or all fixed, with inverse-time elements or without."""
     rng = Random(number)
     s: Sample = sample(rng, rng.choice((2, 3, 4)))
-    if rng.random() < 0.5:
-        s = with_seals(s, rng)
-    if random:
+    sealed = rng.random() < 0.5
+    if random:  # before seals: what is restless there goes on at once or slowly, not each microsecond
         s = with_random_delays(s, rng)
+    if sealed:
+        s = with_seals(s, rng)
     horizon_us = rng.choice((HORIZON_US, HORIZON_US, HORIZON_US, 60_000, 100_000))
-    return Setting(number, bind(s.program, s.event, LogicalSensing(), observe=s.observe), random, horizon_us)
+    sensing = LogicalSensing()
+    if curves:
+        s, sensing = with_curves(s, rng), DrawnCurrents(number)
+    return Setting(number, bind(s.program, s.event, sensing, observe=s.observe), random, horizon_us)
 
 
 @dataclass
@@ -266,12 +271,19 @@ def compare_nominal(number: int, compared: Compared) -> None:
     compared.runs(setting, {"automaton, nominal times": walked, "words, nominal times": in_words})
 
 
+def compare_inverse(number: int, compared: Compared) -> None:
+    """Inverse-time elements, with delays fixed or random."""
+    setting = settings_of(number, random=number % 2 == 1, curves=True)
+    compared.counts["inverse-time elements"] += len(setting.case.inverse)
+    compared.runs(setting, {"words, inverse time": in_words})
+
+
 def compare_trees(number: int, compared: Compared) -> None:
     """Event trees."""
     compared.trees(number)
 
 
-EVERY = (compare_fixed, compare_random, compare_nominal, compare_trees)
+EVERY = (compare_fixed, compare_random, compare_nominal, compare_inverse, compare_trees)
 
 
 def programs(first: int, count: int) -> Iterator[tuple[int, Compared]]:

@@ -10,6 +10,7 @@ import numpy as np
 
 from schemesim.engine import asking, automaton, forks, moment, succession, topologies, verdicts
 from schemesim.engine.asking import Signals
+from schemesim.engine.disc_columns import DiscColumns
 from schemesim.engine.layout import Layout
 from schemesim.engine.many import ManyDrawnTimes
 from schemesim.engine.moment import Moment
@@ -21,7 +22,7 @@ from schemesim.engine.verdicts import Verdicts
 from schemesim.engine.wiring import Doomed, Start, Wiring
 from schemesim.engine.words import NONE
 from schemesim.scheme.delays import Delay
-from tests.rules.agree import compare_random, compare_trees
+from tests.rules.agree import compare_inverse, compare_random, compare_trees
 from tests.rules.broken_rules import Broken, Patch, by_name
 
 # --- the batch engine: the automaton ----------------------------------------------------------
@@ -123,12 +124,12 @@ def _cleared_at_the_end(patch: Patch) -> None:
     patch.setattr(Moment, "expire", broken)
 
 
-def _forks_a_little_late(patch: Patch) -> None:
-    """A fork goes on from the very instant of its question."""
+def _forks_forget_an_answer(patch: Patch) -> None:
+    """A fork goes on with the answers that led to it."""
     run = forks.Forks.run
 
-    def broken(self: forks.Forks, paused: forks.Paused, yes: bool | None) -> forks.Ran:
-        return run(self, paused._replace(t_us=paused.t_us + (yes is True)), yes)
+    def broken(self: forks.Forks, paused: forks.Paused, yes: bool | None, *worth: Any) -> forks.Ran:
+        return run(self, paused, None if yes is None else False, *worth)
 
     patch.setattr(forks.Forks, "run", broken)
 
@@ -226,6 +227,18 @@ def _role_forgotten_in_words(patch: Patch) -> None:
     _with_layout(patch, lambda lay: replace(lay, remembered=()))
 
 
+def _travels_anew_in_words(patch: Patch) -> None:
+    """R10: an element whose current changes goes on from where it has got to."""
+    turn = DiscColumns.turn
+
+    def broken(self: DiscColumns, i: int, rows: Any, now: Any, rate: Any, *, overtravel: bool) -> None:
+        turn(self, i, rows, now, rate, overtravel=overtravel)
+        if overtravel:  # the current changed; else the element has operated or dropped out
+            self.progress[i, rows] = 0
+
+    patch.setattr(DiscColumns, "turn", broken)
+
+
 def _a_horizon_short_of_itself(patch: Patch) -> None:
     """R20: what is due at the horizon still happens."""
     make = Packed.__init__
@@ -255,7 +268,7 @@ ALL = (
     Broken("automaton: asked by name", _asked_by_name_there, 13),
     Broken("automaton: states mixed up", _states_mixed_up, 7),
     Broken("automaton: the last clearing", _cleared_at_the_end, 7),
-    Broken("forks: a microsecond late", _forks_a_little_late, 0, compare_trees),
+    Broken("forks: an answer forgotten", _forks_forget_an_answer, 0, compare_trees),
     Broken("words: never reset", _never_reset_in_words, 0),
     Broken("words: no drop-out time", _no_drop_out_in_words, 7),
     Broken("words: sensed once", _sensed_once_in_words, 7),
@@ -265,5 +278,6 @@ ALL = (
     Broken("words: closes on a trip", _closes_on_a_trip_in_words, 2),
     Broken("words: role forgotten", _role_forgotten_in_words, 75),
     Broken("words: a horizon short of itself", _a_horizon_short_of_itself, 0),
+    Broken("words: travels anew", _travels_anew_in_words, 20, compare_inverse),
     Broken("delays of another row", _delays_of_another_row, 0, compare_random),
 )

@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
-from typing import Any
+from collections.abc import Iterable
 
 import pytest
 
+from schemesim.engine.discs import Discs
 from schemesim.engine.event import EventRun
+from schemesim.engine.inverse import Motion
 from schemesim.engine.logic import Commitment, Logic
 from schemesim.engine.program import Kind
 from schemesim.engine.rules import FALSE, TRUE
 from schemesim.scheme.model import FailureMode, Role
+from tests.rules.agree import compare_inverse
 from tests.rules.broken_rules import Broken, Patch, by_name
 
 
@@ -18,13 +21,13 @@ def _ties_the_other_way(patch: Patch) -> None:
     """R3: a timer that runs out when its input falls has not operated."""
     instant = EventRun._instant
 
-    def broken(run: EventRun, event: Any) -> None:
+    def broken(run: EventRun) -> None:
         timers = [b for b in run._expired if run.case.kind[b] is Kind.TIMER and run._target[b] == TRUE]
         if len(timers) < len(run._expired):
             run._expired = [b for b in run._expired if b not in timers]
             for b in timers:  # one pass behind what is due with them
                 run._start(b, 0, TRUE)
-        instant(run, event)
+        instant(run)
 
     patch.setattr(EventRun, "_instant", broken)
 
@@ -201,6 +204,18 @@ def _all_inputs_needed(patch: Patch) -> None:
     patch.setattr(Logic, "_take", broken)
 
 
+def _travels_anew(patch: Patch) -> None:
+    """R10: an element whose current changes goes on from where it has got to."""
+
+    def broken(discs: Discs, rates: Iterable[tuple[int, int]], now: int) -> None:
+        for block, rate in rates:
+            if rate != discs._motion[block].rate:
+                discs._motion[block] = Motion(0, now, rate)
+                discs._touched.add(block)
+
+    patch.setattr(Discs, "turn", broken)
+
+
 ALL = (
     Broken("ties the other way", _ties_the_other_way, 75),
     Broken("set wins", _set_wins, 0),
@@ -216,5 +231,6 @@ ALL = (
     Broken("exclusive modes asked", _exclusive_modes_asked, 24),
     Broken("closes on a trip", _closes_on_a_trip, 2),
     Broken("asks what is of no use", _asks_what_is_of_no_use, 6),
+    Broken("travels anew", _travels_anew, 20, compare_inverse),
     Broken("all inputs needed", _all_inputs_needed, 21),
 )

@@ -57,6 +57,14 @@ def test_random_delays(number: int) -> None:
     assert none_differs(compared)
 
 
+@many
+@given(numbers)
+def test_inverse_time(number: int) -> None:
+    compared = agree.nothing_yet()
+    agree.compare_inverse(number, compared)
+    assert none_differs(compared)
+
+
 @settings(max_examples=many.max_examples // 2)
 @given(numbers)
 def test_random_delays_at_their_nominal_times(number: int) -> None:
@@ -81,13 +89,14 @@ def test_the_programs_reach_what_they_are_meant_to_reach() -> None:
             compare(number, compared)
     assert none_differs(compared)
     counts = compared.counts
-    for name in ("words", "words, random delays", "automaton", "automaton, random delays"):
+    for name in ("words", "words, random delays", "words, inverse time", "automaton", "automaton, random delays"):
         assert counts[f"runs {name}"] + counts["runs that do not settle"] >= 25 * TRIALS
     assert counts["openings"] > 600
     assert counts["questions"] > 600
     assert counts["trees"] == 25
     assert min(counts[name] for name in ("cleared", "outputs observed", "cut at the horizon", "leaves")) > 30
     assert counts["trees on condition"] > 3
+    assert counts["inverse-time elements"] > 10
 
 
 # --- rows together and apart --------------------------------------------------------------
