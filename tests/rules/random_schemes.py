@@ -308,7 +308,8 @@ def _random_delay(rng: Random) -> Delay:
 def with_seals(s: Sample, rng: Random) -> Sample:
     """The same sample with latches and timers between trips and some coils, and instants that may never settle.
 
-    What a sealed trip does depends on the role in which it was true when the seal began.
+    What a sealed trip does depends on the role in which it was true when the seal began. A seal has one trip before
+    it: of several, what is known of their failures when it begins would decide the role.
     """
     coils = {c for b in s.scheme.blocks if isinstance(b, Breaker) for c in b.coils}
     senses = [b.name for b in s.scheme.blocks if isinstance(b, Sense)]
@@ -327,7 +328,7 @@ def with_seals(s: Sample, rng: Random) -> Sample:
                 Gate(name=restless, inputs=(f"{restless}.l", w, Not(w)), k=3, contact=contact),
             ]
             block = replace(block, inputs=(*block.inputs, restless))
-        blocks.append(Gate(name=joined, inputs=block.inputs, k=block.k))
+        blocks.append(Gate(name=joined, inputs=(rng.choice(block.inputs),)))
         late = Timer(name=seal, input=joined, pick_up=_delay(rng), drop_out=_delay(rng))
         blocks.append(rng.choice((late, Latch(name=seal, set=joined, reset=None))))
         more = tuple(i for i in block.inputs if rng.random() < 0.3)
