@@ -174,7 +174,8 @@ class Settings:
         import pandas as pd
 
         rows = [(s.block, type(s.element).__name__, c.what, c.value, c.reason) for s in self.items for c in s.choices]
-        return pd.DataFrame(rows, columns=["block", "element", "what", "value", "reason"])
+        frame = pd.DataFrame(rows, columns=["block", "element", "what", "value", "reason"], dtype=object)
+        return frame.astype(dict.fromkeys(["block", "element", "what", "reason"], str))  # a number stays no impedance
 
     def _repr_html_(self) -> str:
         return to_html(self.table())

@@ -152,6 +152,9 @@ def test_the_table_prints_every_choice(settings: Settings) -> None:
     assert list(table.columns) == ["block", "element", "what", "value", "reason"]
     assert len(table) == sum(len(s.choices) for s in settings.items)
     assert "<table" in settings._repr_html_()
+    kept = list(table["value"])
+    assert kept == [c.value for s in settings.items for c in s.choices]
+    assert {float, complex} <= {type(value) for value in kept}
 
 
 def test_undervoltage_and_what_lies_out_of_a_zone() -> None:
