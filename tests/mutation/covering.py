@@ -93,6 +93,20 @@ def merged(old: dict[str, Any], new: dict[str, Any]) -> dict[str, Any]:
     return {"tests": names, "seconds": [seconds[n] for n in names], "sets": list(kept), "lines": told}
 
 
+def by_file(tests: list[str], seconds: Mapping[str, float], module: str) -> list[str]:
+    """A few of the shortest tests of every file, a file named after the module first; then the others."""
+    files: dict[str, list[str]] = {}
+    for t in sorted(tests, key=lambda t: (seconds[t], t)):
+        files.setdefault(t.partition("::")[0], []).append(t)
+    stem = Path(module).stem
+
+    def rank(file: str) -> tuple[bool, bool, float]:
+        return stem not in Path(file).stem, file.startswith("schemesim/"), seconds[files[file][0]]
+
+    order = sorted(files, key=rank)
+    return [t for f in order for t in files[f][:4]] + [t for f in order for t in files[f][4:]]
+
+
 def spread(tests: list[str], seconds: Mapping[str, float]) -> list[str]:
     """The shortest test of every file, then the second of every file, and so on."""
     taken: Counter[str] = Counter()
@@ -104,20 +118,26 @@ def spread(tests: list[str], seconds: Mapping[str, float]) -> list[str]:
     return [t for _, _, t in sorted(turns)]
 
 
-def choose(found: dict[str, Any], file: str, first: int, last: int, budget_s: float) -> list[str]:
-    """Tests for a change in some lines, of every file in turn, as many as a budget of seconds allows.
-
-    Lines that run on import only are tried by what runs any of the module.
-    """
+def running(found: dict[str, Any], file: str, first: int, last: int) -> list[str]:
+    """Every test that runs some lines; of lines that run on import only, what runs any of the module."""
     of = found["lines"].get(file, {})
     sets = found["sets"]
     tests = {t for line in range(first, last + 1) if str(line) in of for t in sets[of[str(line)]]}
     if not tests:
         tests = {t for here in set(of.values()) for t in sets[here]}
+    return [found["tests"][n] for n in sorted(tests)]
+
+
+def choose(found: dict[str, Any], file: str, first: int, last: int, budget_s: float) -> list[str]:
+    """Tests for a change in some lines, of every file in turn, as many as a budget of seconds allows.
+
+    Lines that run on import only are tried by what runs any of the module.
+    """
+    tests = running(found, file, first, last)
     seconds = dict(zip(found["tests"], found["seconds"], strict=True))
     out: list[str] = []
     spent = 0.0
-    for t in spread([found["tests"][n] for n in tests], seconds):
+    for t in spread(tests, seconds):
         if not out or spent + seconds[t] <= budget_s:  # one at least
             spent += seconds[t]
             out.append(t)

@@ -149,9 +149,9 @@ def mutants_of(file: str, source: str) -> list[Mutant]:
     return out
 
 
-def mutated(source: str, mutant: Mutant) -> str:
-    """The source with the change made; comments and layout are lost."""
-    tree = ast.parse(source)
+def changed(tree: ast.Module, mutant: Mutant) -> ast.Module:
+    """A copy of the tree with the change made."""
+    tree = copy.deepcopy(tree)
     old = next(node for n, node in enumerate(ast.walk(tree)) if n == mutant.node)
     new = next(new for kind, (_, new) in enumerate(changes(old)) if kind == mutant.kind)
 
@@ -159,4 +159,10 @@ def mutated(source: str, mutant: Mutant) -> str:
         def visit(self, node: ast.AST) -> ast.AST:
             return ast.copy_location(new, node) if node is old else self.generic_visit(node)
 
-    return ast.unparse(ast.fix_missing_locations(Swap().visit(tree))) + "\n"
+    Swap().visit(tree)  # a module stays one: it is changed in place
+    return ast.fix_missing_locations(tree)
+
+
+def mutated(source: str, mutant: Mutant) -> str:
+    """The source with the change made; comments and layout are lost."""
+    return ast.unparse(changed(ast.parse(source), mutant)) + "\n"

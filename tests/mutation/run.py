@@ -29,6 +29,7 @@ import tempfile
 import time
 import tomllib
 from collections import Counter
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import asdict
 from pathlib import Path
 from typing import Any
@@ -38,8 +39,9 @@ if __name__ == "__main__":
     sys.path[0] = str(ROOT)
 
 from schemesim.study.intervals import wilson  # noqa: E402  # only now can it be found
-from tests.mutation.covering import choose, merged  # noqa: E402
+from tests.mutation.covering import by_file, choose, merged, running  # noqa: E402
 from tests.mutation.forking import ended, environment, preload, start, wait  # noqa: E402
+from tests.mutation.live import Loop, Task, session  # noqa: E402
 from tests.mutation.mutants import Mutant, mutants_of, mutated  # noqa: E402
 
 EXPLAINED = Path(__file__).with_name("survivors.toml")
@@ -85,11 +87,12 @@ def make_map(into: Path, tests: list[str], add: bool) -> None:
         (into / "map.json").write_text(json.dumps(whole), encoding="utf-8")
 
 
-def sample(into: Path, count: int, seed: int) -> list[Mutant]:
+def sample(into: Path, count: int, seed: int, only: Sequence[str] = ()) -> list[Mutant]:
     """A random sample of all mutants, the same for a seed and a tree; a longer one begins with a shorter."""
     tree = into / "tree"
-    every = [m for f in files(tree) for m in mutants_of(f, (tree / f).read_text(encoding="utf-8"))]
-    print(f"{len(every)} mutants of {len(files(tree))} files; {min(count, len(every))} drawn with seed {seed}")
+    chosen = [f for f in files(tree) if not only or Path(f).name in only]
+    every = [m for f in chosen for m in mutants_of(f, (tree / f).read_text(encoding="utf-8"))]
+    print(f"{len(every)} mutants of {len(chosen)} files; {min(count, len(every))} drawn with seed {seed}")
     random.Random(seed).shuffle(every)
     return every[:count]
 
@@ -130,44 +133,71 @@ def check_unmutated(tree: Path, found: dict[str, Any]) -> None:
 
 
 def run(into: Path, todo: list[Mutant], seed: int, workers: int, budget_s: float) -> None:
-    """Try mutants and keep the results."""
+    """Try mutants in forks of one session, those that are not live in processes of their own; keep the results."""
     found = json.loads((into / "map.json").read_text(encoding="utf-8"))
-    number = {name: n for n, name in enumerate(found["tests"])}
-    waiting, running, done = list(reversed(todo)), list[Trial](), 0
-    with tempfile.TemporaryDirectory(prefix="mutation-") as place, results_of(into, seed).open("a") as out:
+    seconds = dict(zip(found["tests"], found["seconds"], strict=True))
+    slow: list[Mutant] = []
+    done = 0
+
+    def keep(row: dict[str, Any]) -> None:
+        nonlocal done
+        done += 1
+        with results_of(into, seed).open("a", encoding="utf-8") as out:
+            out.write(json.dumps(row, ensure_ascii=False) + "\n")
+        where = f"{row['file']}:{row['first']}: {row['what']}"
+        print(f"{done}/{len(todo)} {row['end']:9} {row['seconds']:6.1f} s  {where}", flush=True)
+
+    def tasks() -> Iterator[Task]:
+        for m in todo:
+            tests = running(found, m.file, m.first, m.last)
+            if tests:
+                yield m, by_file(tests, seconds, m.file), budget_s
+            else:
+                keep(asdict(m) | {"tests": 0, "end": UNCOVERED, "by": "", "seconds": 0.0})
+
+    def told(task: Task, code: int, said: str, spent: float) -> None:
+        if code == 3:
+            slow.append(task[0])
+            return
+        if code == 99:
+            raise SystemExit(f"{task[0].name}: {said}")
+        end = TIMEOUT if code < 0 else KILLED if code else SURVIVED
+        keep(asdict(task[0]) | {"tests": len(task[1]), "end": end, "by": said[:200], "seconds": round(spent, 2)})
+
+    with tempfile.TemporaryDirectory(prefix="mutation-") as place:
         free = [Path(place) / str(n) for n in range(workers)]
         for copy in free:
             shutil.copytree(into / "tree", copy)
         preload(free[0])
-        check_unmutated(free[0], found)
-        while waiting or running:
-            ready: list[dict[str, Any]] = []
-            while waiting and free:
-                mutant = waiting.pop()
-                tests = choose(found, mutant.file, mutant.first, mutant.last, budget_s)
-                if not tests:
-                    ready.append(asdict(mutant) | {"tests": 0, "end": UNCOVERED, "by": "", "seconds": 0.0})
-                    continue
-                nominal = sum(found["seconds"][number[t]] for t in tests)
-                running.append(Trial(free.pop(), mutant, tests, nominal, 1_000_000_000 + 2 * len(waiting)))
-            for trial in list(running):
-                row = trial.end()
-                if row is not None:
-                    running.remove(trial)
-                    free.append(trial.tree)
-                    ready.append(row)
-            for row in ready:
-                done += 1
-                out.write(json.dumps(row, ensure_ascii=False) + "\n")
-                out.flush()
-                where = f"{row['file']}:{row['first']}: {row['what']}"
-                print(f"{done}/{len(todo)} {row['end']:9} {row['seconds']:6.1f} s  {where}", flush=True)
-            time.sleep(0.05)
+        paths = sorted({t.partition("::")[0] for m in todo for t in running(found, m.file, m.first, m.last)})
+        session(free[0], paths, Loop(free[0], tasks(), workers, told))
+        run_slowly(slow, found, free, budget_s, keep)
+
+
+def run_slowly(
+    todo: list[Mutant], found: dict[str, Any], free: list[Path], budget_s: float, keep: Callable[[dict[str, Any]], None]
+) -> None:
+    """Try mutants each in a process that imports the project anew."""
+    number = {name: n for n, name in enumerate(found["tests"])}
+    waiting, tried = list(reversed(todo)), list[Trial]()
+    while waiting or tried:
+        while waiting and free:
+            mutant = waiting.pop()
+            tests = choose(found, mutant.file, mutant.first, mutant.last, budget_s)
+            nominal = sum(found["seconds"][number[t]] for t in tests)
+            tried.append(Trial(free.pop(), mutant, tests, nominal, 1_000_000_000 + 2 * len(waiting)))
+        for trial in list(tried):
+            row = trial.end()
+            if row is not None:
+                tried.remove(trial)
+                free.append(trial.tree)
+                keep(row)
+        time.sleep(0.05)
 
 
 def verify(into: Path, found: list[dict[str, Any]]) -> int:
     """Run with no change each test that told a mutant; how many fail."""
-    told = [r["by"].split(" - ")[0].partition(" ")[2] for r in found if r["end"] == KILLED and "::" in r["by"]]
+    told = [r["by"].split(" - ")[0].removeprefix("FAILED ") for r in found if r["end"] == KILLED and "::" in r["by"]]
     with tempfile.TemporaryDirectory(prefix="mutation-") as place:
         shutil.copytree(into / "tree", tree := Path(place) / "0")
         preload(tree)
@@ -253,6 +283,7 @@ def main(arguments: list[str]) -> int:
     parser.add_argument("--seed", type=int, default=1)
     parser.add_argument("--workers", type=int, default=1)
     parser.add_argument("--budget", type=float, default=30.0, help="seconds of tests for a mutant, unmutated")
+    parser.add_argument("--only", nargs="*", default=[], help="of sample: names of files to draw from")
     parser.add_argument("--without", nargs="*", default=[], help="of sample: names of files left for another time")
     asked = parser.parse_intermixed_args(arguments)
     if asked.command == "map":
@@ -265,7 +296,8 @@ def main(arguments: list[str]) -> int:
     todo: list[Mutant] = []
     if asked.command == "sample":
         known = {key(r) for r in found}
-        chosen = [m for m in sample(asked.into, asked.count, asked.seed) if Path(m.file).name not in asked.without]
+        drawn = sample(asked.into, asked.count, asked.seed, asked.only)
+        chosen = [m for m in drawn if Path(m.file).name not in asked.without]
         todo = [m for m in chosen if (m.file, m.node, m.kind) not in known]
         print(f"{len(chosen) - len(todo)} tried before, {len(todo)} to try")
     elif asked.command == "again":

@@ -3,14 +3,16 @@
 from __future__ import annotations
 
 import ast
+import importlib.util
 import json
 import tomllib
 from pathlib import Path
 
 import pytest
 
-from tests.mutation.covering import choose, merged, spread
+from tests.mutation.covering import by_file, choose, merged, spread
 from tests.mutation.forking import start, wait
+from tests.mutation.live import put_in_place
 from tests.mutation.mutants import mutants_of, mutated
 from tests.mutation.run import (
     EXPLAINED,
@@ -164,3 +166,26 @@ def test_a_child_runs_the_tests_of_the_copy_and_not_ours(tmp_path: Path) -> None
     codes = [wait(start(tmp_path, [f"tests/test_{name}.py"], tmp_path / "log")) for name in ("good", "bad")]
     assert codes == [0, 1], (tmp_path / "log").read_text()
     assert wait(start(tmp_path, ["tests/test_good.py"], tmp_path / "log"), limit_s=0.0) == -1
+
+
+def test_a_live_function_takes_the_code_of_the_mutant_and_a_default_does_not(tmp_path: Path) -> None:
+    path = tmp_path / "live_source.py"
+    path.write_text("def more(n, by=1):\n    return [x + by for x in range(n)]\n\n\nMOST = 3\n")
+    spec = importlib.util.spec_from_file_location("live_source", path)
+    assert spec is not None
+    assert spec.loader is not None
+    spec.loader.exec_module(module := importlib.util.module_from_spec(spec))
+    found = {m.what: m for m in mutants_of("live_source.py", path.read_text())}
+    assert module.more(2) == [1, 2]
+    for what in ("1 → 2", "3 → 4"):  # of a default and of a constant: set on import
+        assert not put_in_place(path, found[what], [module.more])
+    assert module.more(2) == [1, 2]
+    assert put_in_place(path, found["x + by → x - by"], [module.more])
+    assert module.more(2) == [-1, 0]
+
+
+def test_the_file_named_after_a_module_comes_first_then_a_few_tests_of_each() -> None:
+    seconds = {f"tests/test_{name}.py::{n}": n / 10 for name, some in (("a", 1), ("risk", 6)) for n in range(some)}
+    found = by_file(list(seconds), seconds, "schemesim/study/risk.py")
+    assert found[:5] == [*(f"tests/test_risk.py::{n}" for n in range(4)), "tests/test_a.py::0"]
+    assert found[5:] == ["tests/test_risk.py::4", "tests/test_risk.py::5"]
