@@ -56,13 +56,15 @@ time_per_case_exponent
 memory_gib_9241
     Most memory this process has held at its end, in GiB.
 
-Times are the least of several repeats in one process, of processor time. Tables of the growth go to
+Times are the least of several repeats in one process, of processor time, linear algebra on one thread: threads
+that spin while others keep the processor busy would count as work. Tables of the growth go to
 the standard error output. With ``--quick`` the trees at 1e-6 of the scenarios are left out. Names of
 figures as arguments print these alone; a name ending in ``_demo`` or ``_rts96`` prints its group.
 """
 
 from __future__ import annotations
 
+import os
 import sys
 from collections.abc import Callable, Iterable, Iterator
 from pathlib import Path
@@ -70,6 +72,8 @@ from pathlib import Path
 
 def main(arguments: list[str]) -> None:
     """Measure and print, each figure as soon as it is known."""
+    for library in ("OPENBLAS", "OMP", "MKL"):  # before numpy is loaded
+        os.environ.setdefault(f"{library}_NUM_THREADS", "1")
     sys.path.insert(0, str(Path(__file__).resolve().parents[2]))
     from tests.benchmarks.figures import grid_figures
     from tests.benchmarks.figures_reference import FIGURES
