@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Mapping
+from dataclasses import replace
 from fnmatch import fnmatchcase
 
 from schemesim.engine.sensing import NoFault
@@ -64,19 +66,39 @@ def _names(value: object) -> list[str]:
     return [str(v.get("name")) for v in value if isinstance(v, dict)] if isinstance(value, list) else []
 
 
-def _dress(notes: Notes, scenario: Scenario) -> dict[str, Scheme]:
+def schemes_of(scenario: Scenario) -> tuple[dict[str, Scheme], dict[Problem, list[str]]]:
+    """The plant dressed by every policy, and each mistake with the policies it is made under.
+
+    A policy that nothing in the scenario uses need not go with the exceptions, only with the plant.
+    """
     schemes: dict[str, Scheme] = {}
     found: dict[Problem, list[str]] = {}
+    money = scenario.money
+    used = {scenario.policy, *(r.policy for r in scenario.runs)}
+    if money is not None:
+        used |= {money.start, *(money.policies or scenario.policies)}
     for name in scenario.policies:
         try:
-            schemes[name] = scenario.scheme(name)
+            try:
+                schemes[name] = scenario.scheme(name)
+            except InputError:
+                if name in used or not scenario.exceptions:
+                    raise
+                schemes[name] = replace(scenario, exceptions={}).scheme(name)
         except InputError as error:
             for p in error.problems:
                 found.setdefault(p, []).append(name)
+    return schemes, found
+
+
+def _dress(notes: Notes, scenario: Scenario) -> dict[str, Scheme]:
+    schemes, found = schemes_of(scenario)
     told: set[Path] = set()
     for p, names in found.items():
-        where = " and ".join(repr(n) for n in names)
-        if p.subject == "exception to the policy":
+        where = " and ".join(repr(n) for n in dict.fromkeys(names))
+        if scenario.exceptions and re.match(r"coil \S+ of '|exception '|policy of breaker '", p.subject):
+            notes.take(InputError([p]), ("exceptions",), tip=f"under policy {where}")
+        elif p.subject == "exception to the policy":
             notes.take(InputError([p]), ("exceptions", str(p.value)))
         elif p.subject.startswith(("modes of", "probability of", "no_fault_per_yr of")):
             at = _override(scenario, p)

@@ -10,7 +10,7 @@ from pydantic import ValidationError
 from schemesim.errors import InputError, Problem
 from schemesim.scenario.convert import parts_of, scenario_of
 from schemesim.scenario.document import document_of
-from schemesim.scenario.dressed import check_dressed
+from schemesim.scenario.dressed import check_dressed, schemes_of
 from schemesim.scenario.imports import import_tables
 from schemesim.scenario.locate import Data, Place, Tree
 from schemesim.scenario.model import Scenario
@@ -86,7 +86,8 @@ def scenario_text(scenario: Scenario) -> str:
     Raises
     ------
     InputError
-        For what a file cannot say, such as a probability as a fraction.
+        For what a file cannot say, such as a probability as a fraction, and for policies that do not fit the
+        plant or its exceptions, with which it could not be read again.
     """
     return write_text(_document(scenario))
 
@@ -107,6 +108,9 @@ def _document(scenario: Scenario) -> Data:
         notes, read = _read(Tree(scenario.document, "scenario", {(): Place(1, 1)}), None)
         if read == scenario and not notes.problems:
             return scenario.document
+    _, wrong = schemes_of(scenario)
+    if wrong:  # what could not be loaded again is not written
+        raise InputError(list(wrong))
     return document_of(scenario)
 
 

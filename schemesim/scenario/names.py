@@ -222,7 +222,9 @@ class _Checker:
         self._policy(("policy",), at(self.tree.data, ("policy",)))
         for path, key, value in pairs(self.tree, "exceptions"):
             known = {**self.names.sections, **self.names.others}
-            self._one(path, key, known, "the name of an element or a breaker", of_key=True)
+            if key.partition("/")[2] not in self.names.sections:  # a bay's station is checked later
+                expected = "the name of an element, a breaker or a bay (station/element)"
+                self._one(path, key, known, expected, of_key=True)
             self._policy(path, value)
 
     def _policy(self, path: Path, value: Data) -> None:

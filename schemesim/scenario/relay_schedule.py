@@ -67,7 +67,7 @@ class RelaySchedule:
         bare = replace(
             self.base, sets=(), votes=1, local_backup=None, breaker_failure=None, end_fault=False, remote_backup=False
         )
-        return dress(self.plant, bare, data, exceptions=self.policies)
+        return dress(self.plant, bare, data, exceptions=self.policies, breakers_say=False)
 
     def table(self) -> pd.DataFrame:
         """The schedule as a table that :func:`load_relay_schedule` reads back."""

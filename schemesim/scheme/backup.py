@@ -23,11 +23,14 @@ def dress_local_backup(b: SchemeBuilder, e: Element) -> None:
     A directional overcurrent element into the element, timed; and one that looks back
     at the zone behind its breakers, so that a bus is backed up by its own circuits.
     """
-    lb = e.policy.local_backup
-    if lb is None or e.kind is SectionKind.BUS:
+    if e.kind is SectionKind.BUS:
         return
     times = e.policy.times.overcurrent
     for n, side in enumerate(e.sides):
+        p = side.policy or e.policy
+        lb = p.local_backup
+        if lb is None:
+            continue
         group = f"{side.station}/{e.name}"
         host = b.host(f"{group}/relay local {n + 1}", side.station, lb.dc, "local")
         what = f"local back-up of {e.name!r}"
@@ -53,10 +56,10 @@ def dress_local_backup(b: SchemeBuilder, e: Element) -> None:
         reverse = fn.trip_output(b, f"{base} 67 reverse trip", ways, host, mark, times, unless=needs.unless)
         for signal in (forward, reverse):
             for breaker in side.breakers:
-                b.trip(signal, breaker, lb.coil, e.policy.dc_of_coil(lb.coil))
+                b.trip(signal, breaker, lb.coil, p.dc_of_coil(lb.coil), by=e.name)
         units = [t for t in e.targets if t not in b.plant.device and station_of(b, t) == side.station]
         for unit in units:  # a fault behind its breaker is no reason to trip a unit
-            b.trip(forward, unit, lb.coil, e.policy.dc_of_coil(lb.coil))
+            b.trip(forward, unit, lb.coil, p.dc_of_coil(lb.coil), by=e.name)
 
 
 def _unit_operated(b: SchemeBuilder, e: Element, side: Side, base: str, lb: LocalBackup) -> list[Input]:
@@ -78,8 +81,13 @@ def _unit_operated(b: SchemeBuilder, e: Element, side: Side, base: str, lb: Loca
     return ways
 
 
-def dress_end_faults(b: SchemeBuilder, elements: Sequence[Element], policies: Mapping[str, Policy]) -> None:
-    """End-fault logic for each breaker with a CT on one side only: cut out what the open breaker did not."""
+def dress_end_faults(
+    b: SchemeBuilder, elements: Sequence[Element], policies: Mapping[str, Policy], of_target: Mapping[str, Policy]
+) -> None:
+    """End-fault logic for each breaker with a CT on one side only: cut out what the open breaker did not.
+
+    ``of_target``: policies that say which DC domain feeds the coils of what is tripped, by its name.
+    """
     seen: dict[str, set[Terminal]] = {}
     for e in elements:
         for t in e.object.terminals:
@@ -99,11 +107,12 @@ def dress_end_faults(b: SchemeBuilder, elements: Sequence[Element], policies: Ma
         out = fn.end_fault(b, breaker, ct, core, host, policy.times.end_fault, policy.times.overcurrent)
         own = [x.name for x in b.plant.sources if x.trips and b.zones.of[x.section] == ct_zone]
         others = sorted(b.zones.border[ct_zone] - {breaker})
-        trip_all(b, out, device.station, [*others, *own], path_of(s), policy)
+        by = f"end-fault logic of {breaker}"
+        trip_all(b, out, device.station, [*others, *own], path_of(s), policy, by=by, of_target=of_target)
 
 
 def dress_breaker_failure(
-    b: SchemeBuilder, elements: Sequence[Element], policies: Mapping[str, Policy]
+    b: SchemeBuilder, elements: Sequence[Element], policies: Mapping[str, Policy], of_target: Mapping[str, Policy]
 ) -> None:
     """Breaker failure of every breaker that anything trips (rules R11, R12).
 
@@ -140,7 +149,8 @@ def dress_breaker_failure(
             auxiliary=bf.auxiliary,
         )
         if retrip is not None:
-            b.trip(retrip, breaker, bf.retrip_coil, policy.dc_of_coil(bf.retrip_coil), initiates=False)
+            fed = policy.dc_of_coil(bf.retrip_coil)
+            b.trip(retrip, breaker, bf.retrip_coil, fed, by=f"retrip of {breaker}", initiates=False)
         if policy.lockout:
             unit = b.component(f"{breaker}/86BF {bf.lockout}", ComponentKind.LOCKOUT, station)
             name = f"{breaker}/86BF {bf.lockout}"
@@ -149,4 +159,7 @@ def dress_breaker_failure(
         own = [s.name for s in b.plant.sources if s.trips and b.zones.of[s.section] in zones]
         targets = [*sorted(around(b.zones, breaker)), *own]
         path = Path(bf.coil, bf.dc, bf.lockout, bf.channel)
-        trip_all(b, out, station, targets, path, policy, remote=bf.transfer_trip, initiates=False)
+        trip_all(
+            b, out, station, targets, path, policy, remote=bf.transfer_trip, initiates=False,
+            by=f"breaker failure of {breaker}", of_target=of_target,
+        )  # fmt: skip

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 from schemesim.errors import ErrorList, reject
@@ -71,6 +72,8 @@ class SchemeBuilder:
         self.trips: dict[str, dict[str, dict[str, None]]] = {}
         self.initiates: dict[str, dict[str, None]] = {}
         self.coil_dc: dict[tuple[str, str], str] = {}
+        self.coil_dc_by: dict[tuple[str, str], str] = {}
+        self.coil_claims: dict[tuple[str, str], dict[str, dict[str, None]]] = {}
         self.breaker_times: dict[str, BreakerTimes] = {}
         self.relay_groups: dict[str, list[str]] = {}
         self.intertrips: dict[str, set[str]] = {}
@@ -150,12 +153,27 @@ class SchemeBuilder:
             return signals[0]
         return self.add(Gate(name=name, inputs=tuple(signals)))
 
-    def trip(self, signal: str, breaker: str, coil: str, coil_dc: str, *, initiates: bool = True) -> None:
-        """Wire a trip to a coil of a breaker; by default it initiates breaker failure too."""
+    def feed(self, breaker: str, coil: str, dc: str, by: str) -> None:
+        """Say which DC domain feeds a coil, whatever the policies of those who trip it say.
+
+        ``by`` is the exception that says so; two of them have to agree.
+        """
+        fed, first = self.coil_dc.setdefault((breaker, coil), dc), self.coil_dc_by.setdefault((breaker, coil), by)
+        if fed != dc:
+            self.errors.add(f"coil {coil} of {breaker!r}", f"DC {dc!r} by exception {by!r}",
+                            f"DC {fed!r} as by exception {first!r}")  # fmt: skip
+
+    def trip(
+        self, signal: str, breaker: str, coil: str, coil_dc: str, *, by: str = "", initiates: bool = True
+    ) -> None:
+        """Wire a trip to a coil of a breaker; by default it initiates breaker failure too.
+
+        All who trip a coil have to agree on its DC domain, unless :meth:`feed` said it; ``by`` tells who says so.
+        """
         self.trips.setdefault(breaker, {}).setdefault(coil, {})[signal] = None
-        fed = self.coil_dc.setdefault((breaker, coil), coil_dc)
-        if fed != coil_dc:
-            self.errors.add(f"coil {coil} of {breaker!r}", f"DC {coil_dc!r}", f"DC {fed!r} as in another policy")
+        self.coil_dc.setdefault((breaker, coil), coil_dc)
+        if (breaker, coil) not in self.coil_dc_by:
+            self.coil_claims.setdefault((breaker, coil), {}).setdefault(coil_dc, {})[by or signal] = None
         if initiates:
             self.initiates.setdefault(breaker, {})[signal] = None
 
@@ -167,6 +185,15 @@ class SchemeBuilder:
         InputError
             With every mistake noted while the scheme was put together.
         """
+        for (breaker, coil), claims in sorted(self.coil_claims.items()):
+            if len(claims) > 1:
+                said = ", ".join(f"DC {dc!r} by {_some(list(who))}" for dc, who in claims.items())
+                self.errors.add(
+                    f"coil {coil} of {breaker!r}",
+                    f"DC {list(claims)[1]!r}",
+                    f"one supply for it; said are {said}",
+                    tip="an exception for the breaker or for its bay says it for all",
+                )
         self.errors.raise_if_any()
         for breaker, coils in sorted(self.trips.items()):
             self._breaker(breaker, coils)
@@ -216,3 +243,8 @@ class SchemeBuilder:
                 late_by=times.late_by,
             )
         )
+
+
+def _some(who: Sequence[str]) -> str:
+    """The first of some names, and how many more there are."""
+    return repr(who[0]) + (f" and {len(who) - 1} more" if len(who) > 1 else "")

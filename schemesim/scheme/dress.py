@@ -9,10 +9,11 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 
-from schemesim.errors import nearest, reject
+from schemesim.errors import reject
 from schemesim.plant.coverage import default_objects
 from schemesim.plant.model import Plant, SectionKind
 from schemesim.scheme.backup import dress_breaker_failure, dress_end_faults, dress_local_backup
+from schemesim.scheme.bays import check_exceptions, feed_coils, with_bays
 from schemesim.scheme.build import SchemeBuilder
 from schemesim.scheme.elements import Element, dress_line, dress_unit, element_of
 from schemesim.scheme.failure_data import FailureData
@@ -27,6 +28,7 @@ def dress(
     *,
     exceptions: Mapping[str, Policy] | None = None,
     out_of_service: frozenset[str] = frozenset(),
+    breakers_say: bool = True,
 ) -> Scheme:
     """The scheme of a plant under a policy.
 
@@ -38,10 +40,16 @@ def dress(
     data : FailureData or None
         Failure data; orders of magnitude by default.
     exceptions : mapping of name to Policy, or None
-        Another policy for an element (bus, line, transformer, generator, feeder), or for a
-        breaker's breaker-failure protection.
+        Another policy for an element (bus, line, transformer, generator, feeder); for a
+        breaker: its breaker failure, its times and, where it differs from ``policy``, the DC
+        domain of its coils; or for a bay ``station/element``: a unit, or one end of a line,
+        with the breakers there. The ends of a line have to have the same sets, schemes,
+        channels, votes, reaches and times of relays.
     out_of_service : frozenset of str
         Components out for work.
+    breakers_say : bool
+        Whether an exception for a breaker says which DC domain feeds its coils; else all
+        policies that trip it have to agree.
 
     Returns
     -------
@@ -72,26 +80,23 @@ def dress(
             raise reject(f"policy for {name!r}", item, "a Policy, such as duplicate_chain() makes")
     b = SchemeBuilder(plant, data, out_of_service)
     special = dict(exceptions or {})
-    objects = default_objects(plant)
-    known = [o.element for o in objects] + list(plant.breakers)
-    for name in sorted(set(special) - set(known)):
-        tip = nearest(name, known)
-        b.errors.add("exception to the policy", name, "the name of an element or a breaker", tip=tip)
     elements: list[Element] = []
+    objects = default_objects(plant)
     for o in objects:
         element = element_of(b, o, special.get(o.element, policy))
         if element is not None:
             elements.append(element)
+    check_exceptions(b, [o.element for o in objects], elements, special)
+    elements = with_bays(b, elements, special)
+    feeds = feed_coils(b, elements, special, policy, breakers_say=breakers_say)
     for e in elements:
         if e.kind is SectionKind.LINE:
             dress_line(b, e)
         else:
             dress_unit(b, e)
         dress_local_backup(b, e)
-    of_breaker = {name: special.get(name, policy) for name in plant.breakers}
-    b.breaker_times = {name: p.times.breaker for name, p in of_breaker.items()}
-    for s in plant.sources:
-        b.breaker_times[s.name] = special.get(s.section, policy).times.breaker
-    dress_end_faults(b, elements, of_breaker)
-    dress_breaker_failure(b, elements, of_breaker)
+    b.breaker_times = {name: p.times.breaker for name, p in feeds.items()}
+    of_target = feeds if breakers_say else {}
+    dress_end_faults(b, elements, feeds, of_target)
+    dress_breaker_failure(b, elements, feeds, of_target)
     return b.build()

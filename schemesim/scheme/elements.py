@@ -33,12 +33,16 @@ FUNCTION = {
 
 @dataclass(frozen=True)
 class Side:
-    """One end of an element: its station, the place along it, the CTs there and the breakers to trip."""
+    """One end of an element: its station, the place along it, the CTs there and the breakers to trip.
+
+    ``policy`` is that of an exception for this end alone.
+    """
 
     station: str
     at: float
     terminals: tuple[Terminal, ...]
     breakers: tuple[str, ...]
+    policy: Policy | None = None
 
 
 @dataclass(frozen=True)
@@ -172,7 +176,7 @@ def dress_unit(b: SchemeBuilder, e: Element) -> None:
     if through_lockout:
         wires = locked_out(b, base, station, wires, p.times.lockout)
     for out, path in wires:
-        trip_all(b, out, station, e.targets, path, p, remote=p.intertrip)
+        trip_all(b, out, station, e.targets, path, p, remote=p.intertrip, by=e.name)
     if p.remote_backup and e.kind in (SectionKind.TRANSFORMER, SectionKind.GENERATOR) and p.sets:
         _timed_backup(b, e)
 
@@ -211,7 +215,7 @@ def _timed_backup(b: SchemeBuilder, e: Element) -> None:
         waited = fn.delayed(b, f"{base} timer", element, p.reaches.transformer_backup_delay)
         mark = e.contact("51", Role.LOCAL, host, e.object.zone | in_station(b, station))
         out = fn.trip_output(b, f"{base} trip", (waited,), host, mark, p.times.overcurrent, unless=unless)
-        trip_all(b, out, station, e.targets, path_of(s), p, remote=p.intertrip)
+        trip_all(b, out, station, e.targets, path_of(s), p, remote=p.intertrip, by=e.name)
 
 
 # --- lines --------------------------------------------------------------------------------
@@ -225,6 +229,7 @@ class _LineEnd:
     host: Host
     needs: DistanceNeeds
     base: str
+    core: str
 
 
 def dress_line(b: SchemeBuilder, e: Element) -> None:
@@ -258,17 +263,20 @@ def _wire_end(
 ) -> None:
     p = e.policy
     base = f"{side.station}/{e.name}"
+    paths = {s.label: path_of(_at(s, side)) for s in p.sets}
     if p.votes > 1:
         merged = [str(b.any_of(f"{base}/{s.label} trip", list(outputs[(n, s.label)]))) for s in p.sets]
         voted = fn.vote(b, f"{base}/{p.votes}oo{len(merged)}", merged, p.votes)
-        wires = [(voted, s) for s in p.sets]
+        wires = [(voted, paths[s.label]) for s in p.sets]
     else:
-        wires = [(out, s) for s in p.sets for out in outputs[(n, s.label)]]
+        wires = [(out, paths[s.label]) for s in p.sets for out in outputs[(n, s.label)]]
     theirs = {t for other in e.sides for t in _own_targets(b, e, other)}
     mine = _own_targets(b, e, side)
     targets = [t for t in e.targets if t in mine or t not in theirs]
-    for signal, s in wires:
-        trip_all(b, signal, side.station, targets, path_of(s), p, remote=p.intertrip)
+    elsewhere = {t: p for t in targets if t not in mine}
+    own = side.policy or p
+    for signal, path in wires:
+        trip_all(b, signal, side.station, targets, path, own, remote=p.intertrip, by=e.name, of_target=elsewhere)
 
 
 def _own_targets(b: SchemeBuilder, e: Element, side: Side) -> frozenset[str]:
@@ -278,13 +286,18 @@ def _own_targets(b: SchemeBuilder, e: Element, side: Side) -> frozenset[str]:
 
 
 def _line_end(b: SchemeBuilder, e: Element, s: ProtectionSet, side: Side) -> _LineEnd:
-    group = f"{side.station}/{e.name}"
+    group, s = f"{side.station}/{e.name}", _at(s, side)
     host = b.host(f"{group}/relay {s.label}", side.station, s.dc, s.label, group)
     what = f"distance set {s.label} of {e.name!r}"
     cores = tuple(b.core(t.ct, s.core, what) for t in side.terminals)
     winding = b.winding(side.station, e.name, s.winding, what)
     needs = DistanceNeeds(side.terminals, cores, winding, e.policy.vt_supervision)
-    return _LineEnd(side, host, needs, f"{group}/{s.label}")
+    return _LineEnd(side, host, needs, f"{group}/{s.label}", s.core)
+
+
+def _at(s: ProtectionSet, side: Side) -> ProtectionSet:
+    """A set as it is at one end of a line: the same relays and channel, on what the end's own policy says."""
+    return next((own for own in side.policy.sets if own.label == s.label), s) if side.policy else s
 
 
 def to_far_end(b: SchemeBuilder, e: Element, side: Side, *, nearest: bool = False) -> float:
@@ -389,7 +402,7 @@ def _line_differential(b: SchemeBuilder, e: Element, s: ProtectionSet, ends: lis
     trips: list[str] = []
     for end in ends:
         what = f"87L set {s.label} of {e.name!r}"
-        cores = [(t, b.core(t.ct, s.core, what)) for other in ends for t in other.side.terminals]
+        cores = [(t, b.core(t.ct, other.core, what)) for other in ends for t in other.side.terminals]
         name = f"{end.base} 87L"
         times = e.policy.times.differential
         element = fn.differential(b, name, e.object.zone, cores, e.nearby, end.host, times)

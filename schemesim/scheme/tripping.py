@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 
 from schemesim.scheme import functions as fn
@@ -49,10 +49,13 @@ def trip_all(
     *,
     remote: bool = True,
     initiates: bool = True,
+    by: str = "",
+    of_target: Mapping[str, Policy] | None = None,
 ) -> None:
     """Trip targets at a station directly, and those at others by transfer trip, one for each station.
 
-    Without ``remote`` the others are left alone; ``initiates``: the trip starts breaker failure.
+    Without ``remote`` the others are left alone; ``initiates``: the trip starts breaker failure. ``by``: who trips.
+    The DC domain of a coil is that of its target's policy in ``of_target``, else that of ``policy``.
     """
     for target in targets:
         where = station_of(b, target)
@@ -61,7 +64,8 @@ def trip_all(
             if not remote:
                 continue
             wire = transfer_trip(b, signal, station, where, path, policy)
-        b.trip(wire, target, path.coil, policy.dc_of_coil(path.coil), initiates=initiates)
+        fed = dict((of_target or {}).get(target, policy).coil_dc).get(path.coil) or policy.dc_of_coil(path.coil)
+        b.trip(wire, target, path.coil, fed, by=by, initiates=initiates)
 
 
 def transfer_trip(b: SchemeBuilder, signal: str, station: str, where: str, path: Path, policy: Policy) -> str:

@@ -10,8 +10,7 @@ relay, every set at its station, every element's protection and the whole statio
 
 An element's protection operates where as many of its sets do as its policy's voting asks for; a relay and a
 set count alone. What a set does is judged by its outputs: with voting, sets that operate at different times count
-as agreed. Timed zones are left out unless asked for: they clear in the end what a scheme has missed, and are
-meant to operate for faults beyond.
+as agreed. Timed zones are left out unless asked for: they clear what a scheme has missed, and faults beyond.
 """
 
 from __future__ import annotations
@@ -27,6 +26,7 @@ from schemesim.engine.program import Program, compile_scheme
 from schemesim.engine.sensing import LogicalSensing, NoFault, Sensing
 from schemesim.errors import ErrorList, nearest, reject
 from schemesim.plant.model import Location, Plant
+from schemesim.scheme.bays import policy_of
 from schemesim.scheme.dress import dress
 from schemesim.scheme.failure_data import FailureData
 from schemesim.scheme.model import Role
@@ -365,7 +365,7 @@ def _groups(
     relay: dict[tuple[str, str, str], str] = {}
     protects: dict[tuple[str, str], frozenset[str]] = {}
     for name, c in sorted(program.scheme.contacts.items()):
-        sets = {s.label for s in exceptions.get(c.element, policy).sets}
+        sets = {s.label for s in policy_of(exceptions, policy, c.element, c.station).sets}
         here = (wanted[0] is None or c.station in wanted[0]) and (wanted[1] is None or c.element in wanted[1])
         if here and c.role in roles and c.relay and c.chain in sets:
             key = c.station, c.element
@@ -379,7 +379,7 @@ def _groups(
             alone = _Part({chain: frozenset(outputs)}, 1, area)
             groups.setdefault(("relay", relay[(station, element, chain)]), []).append(alone)
             groups.setdefault(("set", f"{station} set {chain}"), []).append(alone)
-        votes = exceptions.get(element, policy).votes
+        votes = policy_of(exceptions, policy, element, station).votes
         whole = _Part({chain: frozenset(outputs) for chain, outputs in chains.items()}, votes, area)
         groups.setdefault(("element", f"{station}/{element}"), []).append(whole)
         groups.setdefault(("station", station), []).append(whole)

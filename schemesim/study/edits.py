@@ -8,6 +8,7 @@ from dataclasses import dataclass, field, replace
 from schemesim.engine.program import Program, compile_scheme
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Plant
+from schemesim.scheme.bays import base_of
 from schemesim.scheme.dress import dress
 from schemesim.scheme.failure_data import FailureData, Override
 from schemesim.scheme.model import Scheme
@@ -32,7 +33,8 @@ class Edit:
     change : callable
         From a policy to a policy.
     elements : tuple of str
-        Only these elements or breakers; empty: everywhere, exceptions included.
+        Only these elements, breakers or bays (``station/element``: one end of a line, or a unit, with the
+        breakers there); empty: everywhere, exceptions included.
     overrides : tuple of Override
         Failure data, after all others.
     """
@@ -74,7 +76,7 @@ class Recipe:
         if edit.overrides:
             data = replace(data, overrides=(*data.overrides, *edit.overrides))
         if edit.elements:
-            some = {e: edit.change(self.exceptions.get(e, self.policy)) for e in edit.elements}
+            some = {e: edit.change(base_of(self.exceptions, self.policy, e)) for e in edit.elements}
             return replace(self, data=data, exceptions={**self.exceptions, **some})
         special = {e: edit.change(p) for e, p in self.exceptions.items()}
         return replace(self, policy=edit.change(self.policy), exceptions=special, data=data)

@@ -305,6 +305,6 @@ def test_the_description_of_the_format_holds() -> None:
         plant = {k: v for k, v in plant.items() if k != "imports"}
         ScenarioIn.model_validate({"schemesim": 1, **data, "plant": plant})
     assert keys == {
-        "plant", "policies", "failure_data", "out_of_service", "fault_frequencies", "limits", "study", "runs",
-        "money", "maintenance",
+        "plant", "policies", "policy", "exceptions", "failure_data", "out_of_service", "fault_frequencies", "limits",
+        "study", "runs", "money", "maintenance",
     }  # fmt: skip
