@@ -18,6 +18,7 @@ from schemesim.engine.case import bind
 from schemesim.engine.outcome import Opening, Outcome, Status
 from schemesim.engine.program import compile_scheme
 from schemesim.engine.sensing import LogicalSensing, NoFault
+from schemesim.errors import InputError
 from schemesim.plant.grid import without_chains
 from schemesim.plant.model import Location
 from schemesim.scheme.delays import Fixed
@@ -32,6 +33,7 @@ from schemesim.study.importance import given_by_leaves
 from schemesim.study.importance_study import _middle
 from schemesim.study.measures import cleared_by
 from schemesim.study.misoperations import Misoperation, misoperation
+from schemesim.study.money import Values
 from schemesim.study.outages import _worse
 from schemesim.study.precision import Precision
 from schemesim.study.proof_intervals import AtInterval, IntervalStudy
@@ -315,3 +317,38 @@ def test_zone_2_is_needed_where_breaker_failure_fails_too() -> None:
     assert failing.needed_per_yr > 0
     assert failing.exposed_per_yr == pytest.approx(1 - failing.needed_per_yr, rel=1e-12)
     assert float(stuck) <= failing.needed_per_yr
+
+
+def test_products_and_quotients_of_brackets_at_their_edges() -> None:
+    for n in (-2, -1, 1, 2):
+        assert exactly(n) * exactly(3) == exactly(3) * exactly(n) == exactly(3 * n)
+        assert exactly(n) * exactly(0) == exactly(0) * exactly(n) == exactly(0)
+    assert exactly(0) * Bracket(1, math.inf) == exactly(0)
+    half = Fraction(1, 2)
+    for divisor in (Bracket(-half, 1), Bracket(-2, -1)):  # taken as unknown: only what is zero or more is divided
+        assert exactly(1) / divisor == Bracket(-math.inf, math.inf)
+    assert exactly(-half) / Bracket(0, 1) == Bracket(-math.inf, math.inf)
+    assert exactly(half) / exactly(2) == exactly(Fraction(1, 4))
+
+
+def test_a_long_campaign_says_how_many_places_it_does_not_print(tmp_path: Path) -> None:
+    program = program_of(feeder_scheme())
+    for places in (12, 13, 15):
+        variants = {f"v{n:02}": program for n in range(places)}
+        lines = repr(run_campaign(Campaign(variants, (F1,), trials=1), str(tmp_path / f"{places}"))).splitlines()
+        assert len([line for line in lines if line.startswith("  F1, v")]) == 12
+        assert lines[13:] == ([f"  … and {places - 12} more"] if places > 12 else [])
+
+
+def test_what_a_value_of_money_may_be_is_said_in_words() -> None:
+    with pytest.raises(InputError, match="a finite number of 0 or more"):
+        Values(damage_cap=-1)
+    with pytest.raises(InputError, match=r"a finite number of 0 to 1$"):
+        Values(p_unstable_if_late=2)
+
+
+def test_nothing_explored_has_no_probability() -> None:
+    tree = explore(case_of(feeder_scheme(as_float), "F1"), epsilon=0)
+    assert (tree.floor(0.0), tree.ceiling(0.0)) == (0, 0)
+    assert tree.floor(0.5) < 0.5 < tree.ceiling(0.5)
+    assert tree.floor(Fraction(1, 2)) == tree.ceiling(Fraction(1, 2)) == Fraction(1, 2)
