@@ -46,7 +46,9 @@ def run_batch(
     Batch
         Row i equals the run of the event engine with the answers and times of row i: every
         opening, its role and all times to the microsecond. Where delays are random and several trip
-        outputs energise a coil at one instant in one role, the one named is the first by name.
+        outputs energise a coil at one instant in one role, the one named is the first by name; and
+        where several trips of different roles set one timer or latch in one pass, the role it keeps is
+        the best of all (the event engine keeps the best of those whose failures it had to ask about).
 
     Raises
     ------
