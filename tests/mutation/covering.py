@@ -119,25 +119,26 @@ def spread(tests: list[str], seconds: Mapping[str, float]) -> list[str]:
 
 
 def running(found: dict[str, Any], file: str, first: int, last: int) -> list[str]:
-    """Every test that runs some lines; of lines that run on import only, what runs any of the module."""
+    """Every test that runs some lines; of lines that run on import only, any of the module, or of its folder."""
     of = found["lines"].get(file, {})
     sets = found["sets"]
     tests = {t for line in range(first, last + 1) if str(line) in of for t in sets[of[str(line)]]}
     if not tests:
         tests = {t for here in set(of.values()) for t in sets[here]}
+    if not tests:
+        folder = [lines for name, lines in found["lines"].items() if Path(name).parent == Path(file).parent]
+        tests = {t for lines in folder for here in set(lines.values()) for t in sets[here]}
     return [found["tests"][n] for n in sorted(tests)]
 
 
-def choose(found: dict[str, Any], file: str, first: int, last: int, budget_s: float) -> list[str]:
-    """Tests for a change in some lines, of every file in turn, as many as a budget of seconds allows.
-
-    Lines that run on import only are tried by what runs any of the module.
-    """
+def choose(found: dict[str, Any], file: str, first: int, last: int, budget_s: float, files: int = 100) -> list[str]:
+    """Tests for a change in some lines, of every file in turn, as many as a budget of seconds and of files allows."""
     tests = running(found, file, first, last)
     seconds = dict(zip(found["tests"], found["seconds"], strict=True))
+    near = list(dict.fromkeys(t.partition("::")[0] for t in by_file(tests, seconds, file)))[:files]
     out: list[str] = []
     spent = 0.0
-    for t in spread(tests, seconds):
+    for t in spread([t for t in tests if t.partition("::")[0] in near], seconds):
         if not out or spent + seconds[t] <= budget_s:  # one at least
             spent += seconds[t]
             out.append(t)

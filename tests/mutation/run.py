@@ -183,7 +183,7 @@ def run_slowly(
     while waiting or tried:
         while waiting and free:
             mutant = waiting.pop()
-            tests = choose(found, mutant.file, mutant.first, mutant.last, budget_s)
+            tests = choose(found, mutant.file, mutant.first, mutant.last, budget_s, files=8)
             nominal = sum(found["seconds"][number[t]] for t in tests)
             tried.append(Trial(free.pop(), mutant, tests, nominal, 1_000_000_000 + 2 * len(waiting)))
         for trial in list(tried):

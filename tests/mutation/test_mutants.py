@@ -93,7 +93,8 @@ def test_tests_are_chosen_of_every_file_in_turn() -> None:
     assert choose(found, "f.py", 3, 4, budget_s=10) == ["a::1", "a::2"]
     assert choose(found, "f.py", 5, 5, budget_s=4) == ["c::1", "a::1", "a::2"]  # no test of the line: of the module
     assert choose(found, "f.py", 9, 9, budget_s=0.1) == ["c::1"]  # one at least
-    assert choose(found, "g.py", 1, 1, budget_s=9) == []
+    assert choose(found, "g.py", 1, 1, budget_s=0.1) == ["c::1"]  # run on import only: of the folder
+    assert choose(found, "other/g.py", 1, 1, budget_s=9) == []
 
 
 def test_a_longer_sample_begins_with_a_shorter(tmp_path: object, monkeypatch: pytest.MonkeyPatch) -> None:

@@ -5,8 +5,8 @@ from __future__ import annotations
 import pytest
 
 from schemesim.engine.inverse import AT_ONCE, FULL, Motion, speed_for
-from schemesim.scheme.model import Block, Latch
-from tests.rules.hand import FAILS, asked, breaker, case, fails, gate, openings, play, radial, relay, sense, trip
+from schemesim.scheme.model import Block, Latch, Not
+from tests.rules.hand import FAILS, asked, breaker, case, fails, gate, openings, play, radial, relay, sense, timer, trip
 
 
 @pytest.mark.parametrize(
@@ -48,3 +48,19 @@ def test_r10_a_disc_that_runs_on_gets_there_in_the_last_microsecond_of_its_overt
     assert moving.turn(990, AT_ONCE, 9).due() is None
     assert moving.turn(990, AT_ONCE, 9).at(999) == 999 * speed_for(1000)
     assert moving.turn(990, AT_ONCE, 9).at(1000) == 0
+
+
+def test_at_rest_what_follows_from_what_follows_has_settled() -> None:
+    """b holds by what is not sensed, a by b, and b by a: both have operated before the fault, and F1 trips at 20."""
+    blocks: list[Block] = [
+        sense("oc", "F1.CT"),
+        sense("never", "IN.CT", 10_000),
+        timer("a", "g", 100),
+        timer("b", "h", 100),
+        gate("g", "b"),
+        gate("h", "a", Not("never")),
+        trip("t", "oc", "a", k=2),
+        gate("coil", "t"),
+        breaker("F1.CB", "coil"),
+    ]
+    assert openings(play(case(radial(), blocks))) == {"F1.CB": (20, 70)}

@@ -26,6 +26,7 @@ from schemesim.scheme.dress import dress
 from schemesim.scheme.model import Ask, Block, Component, ComponentKind, FailureMode, Role
 from schemesim.study.brackets import Bracket, exactly
 from schemesim.study.campaign import Campaign
+from schemesim.study.campaign_export import ending_rows
 from schemesim.study.campaign_run import run_campaign
 from schemesim.study.delay_chains import starts_of
 from schemesim.study.frontier import Weigher
@@ -40,6 +41,7 @@ from schemesim.study.proof_intervals import AtInterval, IntervalStudy
 from schemesim.study.risk import Explorer, meaning, place_of
 from schemesim.study.sensitivity import tornado
 from schemesim.study.spoiled import Effect, Spoiled, place_row
+from schemesim.study.store import Store
 from schemesim.study.stratified import simulate_stratified
 from schemesim.study.timer_study import study_timers
 from schemesim.study.tree import explore
@@ -352,3 +354,17 @@ def test_nothing_explored_has_no_probability() -> None:
     assert (tree.floor(0.0), tree.ceiling(0.0)) == (0, 0)
     assert tree.floor(0.5) < 0.5 < tree.ceiling(0.5)
     assert tree.floor(Fraction(1, 2)) == tree.ceiling(Fraction(1, 2)) == Fraction(1, 2)
+
+
+def test_each_failure_set_of_a_campaign_is_one_trial(tmp_path: Path) -> None:
+    sets = ((), ("DC: lost",), ("CB1: does_not_open",))
+    campaign = Campaign({"a": program_of(feeder_scheme())}, (F1,), failures=sets)
+    run_campaign(campaign, str(tmp_path / "kept"))
+    with Store(str(tmp_path / "kept")) as store:
+        rows = list(ending_rows(store))
+    assert [(r["trial"], r["trials"], r["failures"]) for r in rows] == [
+        (0, 1, "none"),
+        (1, 1, "DC: lost"),
+        (2, 1, "CB1: does_not_open"),
+    ]
+    assert [r["t_clear_ms"] for r in rows] == [70, 470, 220]
