@@ -23,12 +23,15 @@ from schemesim.plant.grid import without_chains
 from schemesim.plant.model import Location
 from schemesim.scheme.delays import Fixed
 from schemesim.scheme.dress import dress
-from schemesim.scheme.model import Ask, Block, Component, ComponentKind, FailureMode, Role
+from schemesim.scheme.model import Ask, Block, Component, ComponentKind, Contact, FailureMode, Gate, Role, Scheme
+from schemesim.scheme.policy import duplicate_relay
 from schemesim.study.brackets import Bracket, exactly
 from schemesim.study.campaign import Campaign
 from schemesim.study.campaign_export import ending_rows
 from schemesim.study.campaign_run import run_campaign
 from schemesim.study.delay_chains import starts_of
+from schemesim.study.dependability import study_dependability
+from schemesim.study.edits import ADDITIONS
 from schemesim.study.frontier import Weigher
 from schemesim.study.importance import given_by_leaves
 from schemesim.study.importance_study import _middle
@@ -368,3 +371,33 @@ def test_each_failure_set_of_a_campaign_is_one_trial(tmp_path: Path) -> None:
         (2, 1, "CB1: does_not_open"),
     ]
     assert [r["t_clear_ms"] for r in rows] == [70, 470, 220]
+
+
+def test_security_is_the_chance_that_nothing_trips_for_faults_outside() -> None:
+    """A relay for F1 operates for a fault on F2 too, in one of four, and fails in one of eight."""
+    unwanted = FailureMode.UNWANTED_OPERATION
+    for_f1 = Contact("50", Role.MAIN, frozenset({"F1"}), relay="R")
+    blocks: list[Block] = [
+        sense("oc1", "F1.CT"), sense("oc2", "F2.CT"), gate("over", "oc2", given=[Ask("R", unwanted)]),
+        Gate(name="t", inputs=("oc1", "over"), unless=fails("R"), contact=for_f1),
+        gate("coil", "t"), breaker("F1.CB", "coil"),
+    ]  # fmt: skip
+    modes = ((FailureMode.FAILURE_TO_OPERATE, Fraction(1, 8)), (unwanted, Fraction(1, 4)))
+    scheme = Scheme((Component("R", ComponentKind.RELAY, modes),), tuple(blocks))
+    program = compile_scheme(radial(), scheme)
+    found = study_dependability(program, LogicalSensing(), ["t"], [F1, Location("F2")], epsilon=0)
+    assert found.dependability is not None
+    assert found.security is not None
+    assert found.dependability.contains(Fraction(7, 8))
+    assert found.security.contains(Fraction(3, 4))
+    assert max(float(found.dependability.width), float(found.security.width)) < 1e-12
+
+
+@pytest.mark.parametrize(("second", "wanted"), [("1", "1"), ("2", "2")])
+def test_back_up_added_takes_the_second_dc_where_there_is_one(second: str, wanted: str) -> None:
+    policy = duplicate_relay()
+    sets = (policy.sets[0], replace(policy.sets[1], dc=second))
+    added = ADDITIONS["local back-up"].change(replace(policy, sets=sets, local_backup=None))
+    assert added.local_backup is not None
+    assert added.local_backup.dc == wanted
+    assert added.local_backup.coil == ("2" if "2" in dict(policy.coil_dc) else "1")
