@@ -107,6 +107,12 @@ def by_file(tests: list[str], seconds: Mapping[str, float], module: str) -> list
     return [t for f in order for t in files[f][:4]] + [t for f in order for t in files[f][4:]]
 
 
+def beside(tests: list[str], every: list[str]) -> list[str]:
+    """Other tests of the same files: a fixture of a module is set up once, and counts for the test that came first."""
+    files, own = {t.partition("::")[0] for t in tests}, set(tests)
+    return [t for t in every if t not in own and t.partition("::")[0] in files]
+
+
 def spread(tests: list[str], seconds: Mapping[str, float]) -> list[str]:
     """The shortest test of every file, then the second of every file, and so on."""
     taken: Counter[str] = Counter()

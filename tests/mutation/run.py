@@ -39,7 +39,7 @@ if __name__ == "__main__":
     sys.path[0] = str(ROOT)
 
 from schemesim.study.intervals import wilson  # noqa: E402  # only now can it be found
-from tests.mutation.covering import by_file, choose, merged, running  # noqa: E402
+from tests.mutation.covering import beside, by_file, choose, merged, running  # noqa: E402
 from tests.mutation.forking import ended, environment, preload, start, wait  # noqa: E402
 from tests.mutation.live import Loop, Task, session  # noqa: E402
 from tests.mutation.mutants import Mutant, mutants_of, mutated  # noqa: E402
@@ -151,7 +151,8 @@ def run(into: Path, todo: list[Mutant], seed: int, workers: int, budget_s: float
         for m in todo:
             tests = running(found, m.file, m.first, m.last)
             if tests:
-                yield m, by_file(tests, seconds, m.file), budget_s
+                more = beside(tests, found["tests"])
+                yield m, by_file(tests, seconds, m.file) + by_file(more, seconds, m.file), budget_s
             else:
                 keep(asdict(m) | {"tests": 0, "end": UNCOVERED, "by": "", "seconds": 0.0})
 

@@ -10,7 +10,7 @@ from pathlib import Path
 
 import pytest
 
-from tests.mutation.covering import by_file, choose, merged, spread
+from tests.mutation.covering import beside, by_file, choose, merged, spread
 from tests.mutation.forking import start, wait
 from tests.mutation.live import put_in_place
 from tests.mutation.mutants import mutants_of, mutated
@@ -190,3 +190,7 @@ def test_the_file_named_after_a_module_comes_first_then_a_few_tests_of_each() ->
     found = by_file(list(seconds), seconds, "schemesim/study/risk.py")
     assert found[:5] == [*(f"tests/test_risk.py::{n}" for n in range(4)), "tests/test_a.py::0"]
     assert found[5:] == ["tests/test_risk.py::4", "tests/test_risk.py::5"]
+
+
+def test_tests_beside_those_that_run_a_line_are_of_the_same_files() -> None:
+    assert beside(["a::1"], ["a::1", "a::2", "b::1"]) == ["a::2"]

@@ -4,7 +4,9 @@ from __future__ import annotations
 
 import pytest
 
+from schemesim.engine.draws import uniform
 from schemesim.engine.inverse import AT_ONCE, FULL, Motion, speed_for
+from schemesim.errors import InputError
 from schemesim.scheme.model import Block, Latch, Not
 from tests.rules.hand import FAILS, asked, breaker, case, fails, gate, openings, play, radial, relay, sense, timer, trip
 
@@ -64,3 +66,9 @@ def test_at_rest_what_follows_from_what_follows_has_settled() -> None:
         breaker("F1.CB", "coil"),
     ]
     assert openings(play(case(radial(), blocks))) == {"F1.CB": (20, 70)}
+
+
+def test_the_last_trial_there_may_be() -> None:
+    assert 0 <= uniform(1, "x", 2**63 - 1) < 1
+    with pytest.raises(InputError, match=f"at most {2**63 - 1}"):
+        uniform(1, "x", 2**63)
