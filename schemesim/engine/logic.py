@@ -200,14 +200,18 @@ class Logic:
     def _propagate(self, at_rest: bool = False) -> None:
         """Evaluate gates in order until nothing changes; keeps ``row`` and ``open`` up to date."""
         dirty, queued, value = self._dirty, self._queued, self.value
+        told = self.record.keep and not at_rest
         while dirty:
             g = heapq.heappop(dirty)
             queued[g] = False
-            if self._take(g):
+            changed = self._take(g)
+            if told and self.case.unless[g]:
+                self.record.prevented(g, value, self._verdict)
+            if changed:
                 new = value[g]
                 if new != UNKNOWN and self._shown[g] != (new == TRUE):
                     self._shown[g] = new == TRUE
-                    if not at_rest and self.record.keep:
+                    if told:
                         self.row[g] = self.record.gate(g, new, value, self.row)
                 self._spread(g)
 
@@ -352,7 +356,7 @@ class Logic:
         yes = self._answers.answer(q, probability)
         self.asked.append((q, yes))
         self.probabilities.append(probability)
-        self.record.answer(question.name, yes, cause)
+        self.record.answer(q, yes, cause)
         self._know(q, yes)
         if yes:
             for j in siblings:

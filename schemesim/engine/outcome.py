@@ -88,6 +88,11 @@ class Outcome:
         return replace(self, openings=tuple(replace(o, via="") for o in self.openings))
 
     @property
+    def t_clear_ms(self) -> float | None:
+        """The clearing time in ms; None if it was not cleared."""
+        return None if self.t_clear_us is None else self.t_clear_us / 1000
+
+    @property
     def tripped(self) -> frozenset[str]:
         """Names of everything that opened."""
         return frozenset(o.breaker for o in self.openings)

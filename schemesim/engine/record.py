@@ -5,7 +5,7 @@ from __future__ import annotations
 from schemesim.engine.case import Case
 from schemesim.engine.outcome import Row
 from schemesim.engine.program import Kind
-from schemesim.engine.rules import TRUE
+from schemesim.engine.rules import TRUE, UNKNOWN
 
 
 class Recorder:
@@ -17,6 +17,8 @@ class Recorder:
         self.topology_row = -1
         self._now = 0
         self._pass = 0
+        self._happened: dict[int, int] = {}
+        self._prevented: set[int] = set()
 
     def at(self, now: int, pass_no: int) -> None:
         """Set the instant and the pass of the rows to come."""
@@ -77,10 +79,26 @@ class Recorder:
             what = "sped up" if due_us < was_due_us else "slowed down"
             self.row(self.case.names[block], self.case.kind[block].name.lower(), what, cause)
 
-    def answer(self, question: str, yes: bool, cause: int) -> None:
+    def answer(self, question: int, yes: bool, cause: int) -> None:
         """A question was answered."""
         if self.keep:
-            self.row(question, "question", "yes" if yes else "no", cause)
+            row = self.row(self.case.questions[question].name, "question", "yes" if yes else "no", cause)
+            if yes:
+                self._happened[question] = row
+
+    def prevented(self, g: int, value: list[int], verdict: list[int]) -> None:
+        """A gate that would operate, were it not for a failure that happened: told once, with the failure as cause."""
+        inputs = self.case.inputs[g]
+        if g in self._prevented or sum(value[j] != UNKNOWN and (value[j] == TRUE) != inv for j, inv in inputs) < max(
+            self.case.k[g], 1
+        ):
+            return
+        failed = (q for a in self.case.unless[g] if verdict[a] == TRUE for q in self.case.asks[a])
+        cause = next((self._happened[q] for q in failed if q in self._happened), -1)
+        if cause >= 0:
+            self._prevented.add(g)
+            kind = "gate" if self.case.contacts[g] is None else "trip output"
+            self.row(self.case.names[g], kind, "prevented", cause)
 
     def finish(self, at_horizon: bool, horizon_us: int) -> tuple[Row, ...]:
         """The whole log."""

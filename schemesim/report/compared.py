@@ -29,7 +29,7 @@ from schemesim.ticks import to_ms
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-_LEFT_IN, _RIGHT_IN, _TOP_IN, _BOTTOM_IN = 3.3, 0.25, 0.75, 1.25
+_LEFT_IN, _RIGHT_IN, _TOP_IN, _BOTTOM_IN = 3.3, 0.25, 0.75, 1.6
 
 
 def plot_timelines(
@@ -119,7 +119,7 @@ def plot_timelines(
         f"{label}: {shorten(t.title, TITLE_CHARS - 20)}" for label, t in zip(labels, (first, second), strict=True)
     )
     ax.set_title("\n".join(titles) + told, fontsize=FONT_PT + 1, loc="left")
-    legend(ax, lanes, links=False)
+    legend(ax, lanes, links=False, columns=3)
     return ax
 
 

@@ -16,7 +16,7 @@ from enum import StrEnum
 from schemesim.engine.case import Case
 from schemesim.engine.outcome import Row, Status
 from schemesim.engine.program import Kind
-from schemesim.report.selection import is_channel, only_holds
+from schemesim.report.selection import is_channel, only_holds, output_of
 from schemesim.report.sequence import ClearingSequence, plain
 from schemesim.scheme.model import Breaker, ComponentKind, Gate, Sense
 from schemesim.ticks import to_ms
@@ -50,10 +50,11 @@ class Bar:
 
 @dataclass(frozen=True, slots=True)
 class Mark:
-    """A failure, at its moment."""
+    """A failure, at its moment; ``prevented``: an output that would operate then, but for a failure."""
 
     t_us: int
     text: str
+    prevented: bool = False
 
 
 @dataclass
@@ -117,7 +118,7 @@ def drawing(t: ClearingSequence, also: Set[str] = frozenset()) -> Drawing:
     """What the picture of a timeline holds; ``also``: components with a lane whatever they did."""
     log = t.run.log
     subjects = {_subject(t, log[i]) for i in t.story if log[i].kind not in ("gate", "run", "fault")}
-    subjects |= {_subject(t, log[i]) for i in t.kept if log[i].kind == "timer"}
+    subjects |= {_subject(t, log[i]) for i in t.kept if log[i].kind == "timer" or log[i].what == "prevented"}
     end = max((log[i].t_us for i in t.kept if log[i].kind != "run"), default=0)
     end = max(end, t.limit_us or 0, 1000)
     subjects = {name for name in subjects if not only_holds(t.case, name)} | also
@@ -140,6 +141,9 @@ def _subject(t: ClearingSequence, row: Row) -> str:
     """The lane of a row: a failure's is the component's, and the time a lockout takes is the lockout's."""
     if row.kind == "question":
         return t.case.questions[t.question_at[row.index]].component or row.subject
+    if row.what == "prevented":
+        whole = output_of(row.subject)
+        return whole if whole in t.case.index else row.subject
     return _latch_of(t.case, row.subject) if row.kind == "timer" else row.subject
 
 
@@ -185,7 +189,10 @@ def _lane(t: ClearingSequence, name: str, rows: list[Row]) -> Lane:
         if r.kind == "question":
             question = t.case.questions[t.question_at[r.index]]
             words = question.mode.replace("_", " ") if question.component else "common cause"
-            lane.marks.append(Mark(r.t_us, words))
+            lane.marks.append(Mark(r.t_us, words) if t.fails_at_once(r) else Mark(0, f"{words}, before the fault"))
+        elif r.what == "prevented":
+            if not any(m.text == t.says(r) for m in lane.marks):
+                lane.marks.append(Mark(r.t_us, t.says(r), prevented=True))
         elif r.kind == "breaker" and r.what in _FAILS and not lane.marks:
             lane.marks.append(Mark(r.t_us, _FAILS[r.what]))  # certain, so it was not asked
     return lane
@@ -246,8 +253,10 @@ def _links(t: ClearingSequence, subjects: set[str]) -> Iterator[Link]:
     """Links on the way to openings, breakers that do not open, and failures; each pair of lanes and times once."""
     log = t.run.log
     way: set[int] = set()
+    beforehand = {r.index for r in log if r.kind == "question" and r.what == "yes" and not t.fails_at_once(r)}
     for row in log:
-        if row.index in t.story and (row.kind == "question" or (row.kind == "breaker" and row.what != "52a open")):
+        fails = row.kind == "question" and row.index not in beforehand
+        if row.index in t.story and (fails or (row.kind == "breaker" and row.what != "52a open")):
             at: Row | None = row
             while at is not None and at.index not in way:
                 way.add(at.index)
@@ -256,7 +265,7 @@ def _links(t: ClearingSequence, subjects: set[str]) -> Iterator[Link]:
     for i in sorted(way):
         effect = log[i]
         name = _subject(t, effect)
-        if name not in subjects:
+        if name not in subjects or i in beforehand:
             continue
         cause = t.cause_of(effect, all=True)
         while cause is not None and cause.kind != "fault" and _subject(t, cause) not in subjects:

@@ -232,10 +232,11 @@ def draw_lane(ax: Axes, lane: Lane, y: float) -> None:
     for mark in lane.marks:
         x = to_ms(mark.t_us)
         (cross,) = ax.plot(
-            [x], [y], marker="X", markersize=8, markerfacecolor=VERMILLION, markeredgecolor=BLACK,
+            [x], [y], marker="X", markersize=8, markeredgecolor=BLACK,
+            markerfacecolor="white" if mark.prevented else VERMILLION,
             markeredgewidth=0.8, linestyle="none", zorder=6, clip_on=False,
         )  # fmt: skip
-        cross.set_gid(f"failure: {lane.subject}")
+        cross.set_gid(f"{'prevented' if mark.prevented else 'failure'}: {lane.subject}")
         text_beside(ax, to_ms(_behind(lane, mark)), y - 0.1, mark.text, bold=True, away_pt=7)
 
 
@@ -322,7 +323,7 @@ def draw_margin(ax: Axes, clear_ms: float, limit_ms: float, words: str, y: float
     )  # fmt: skip
 
 
-def legend(ax: Axes, lanes: Sequence[Lane], links: bool) -> None:
+def legend(ax: Axes, lanes: Sequence[Lane], links: bool, columns: int = 4) -> None:
     """What is there to be explained, and no more."""
     from matplotlib.lines import Line2D  # heavy: only when a picture is asked for
     from matplotlib.patches import Patch
@@ -333,14 +334,16 @@ def legend(ax: Axes, lanes: Sequence[Lane], links: bool) -> None:
         for look, s in STYLES.items()
         if look in used
     ]
-    if any(lane.marks for lane in lanes):
-        cross = Line2D([], [], linestyle="none", marker="X", markersize=8, label="failure")
-        cross.set_markerfacecolor(VERMILLION)
-        cross.set_markeredgecolor(BLACK)
-        handles.append(cross)
+    marks = {mark.prevented for lane in lanes for mark in lane.marks}
+    for prevented, label, face in ((False, "failure", VERMILLION), (True, "no output, for a failure", "white")):
+        if prevented in marks:
+            cross = Line2D([], [], linestyle="none", marker="X", markersize=8, label=label)
+            cross.set_markerfacecolor(face)
+            cross.set_markeredgecolor(BLACK)
+            handles.append(cross)
     if links:
         handles.append(Line2D([], [], color=BLACK, linewidth=0.8, marker="o", markersize=3, label="cause to effect"))
     ax.legend(
-        handles=handles, loc="upper center", bbox_to_anchor=(0.5, 0), borderaxespad=5.5, ncol=4,
+        handles=handles, loc="upper center", bbox_to_anchor=(0.5, 0), borderaxespad=5.5, ncol=columns,
         fontsize=FONT_PT, frameon=False, handlelength=2.4, handleheight=1.0,
     )  # fmt: skip

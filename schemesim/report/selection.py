@@ -20,7 +20,8 @@ _SWITCHES = {
 _TELLING = {
     "fault": frozenset({"begins", "cleared", "fed again"}),
     "question": frozenset({"yes"}),
-    "trip output": frozenset({"operates"}),
+    "trip output": frozenset({"operates", "prevented"}),
+    "gate": frozenset({"prevented"}),
     "latch": frozenset({"seals in"}),
     "timer": frozenset({"operates", "stopped before operating"}),
     "breaker": frozenset(
@@ -38,6 +39,8 @@ def select(case: Case, run: Run) -> tuple[frozenset[int], tuple[int, ...]]:
     log, beside = run.log, support(case, run)
     happened = {q for q, yes in run.asked if yes}
     telling = [r for r in log if r.what in _TELLING.get(r.kind, ()) and not _is_aside(case, r, happened)]
+    first = {output_of(r.subject): r.index for r in reversed(telling) if r.what == "prevented"}
+    telling = [r for r in telling if r.what != "prevented" or first[output_of(r.subject)] == r.index]
     way = _ancestors(log, (r for r in telling if r.kind in _DECISIVE), beside)
     behind = _ancestors(log, (r for r in telling if r.kind != "timer"), beside)
     story = way | {i for i in behind if log[i].kind in _PLAIN and log[i].what not in _IN_BETWEEN}
@@ -50,6 +53,19 @@ def select(case: Case, run: Run) -> tuple[frozenset[int], tuple[int, ...]]:
     }
     kept = story | {r.index for r in telling} | later
     return frozenset(story), tuple(sorted(kept))
+
+
+def output_of(gate: str) -> str:
+    """The output that a gate leads to, where one part of it is in time and the other late.
+
+    Examples
+    --------
+    >>> output_of("Elm/L1/1 21-2 trip: in time")
+    'Elm/L1/1 21-2 trip'
+    """
+    for end in (": in time", ": late", " in time", " late"):
+        gate = gate.removesuffix(end)
+    return gate
 
 
 def _is_aside(case: Case, row: Row, happened: Set[int]) -> bool:

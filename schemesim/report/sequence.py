@@ -8,7 +8,7 @@ from functools import cached_property
 
 from schemesim.engine.case import Case
 from schemesim.engine.outcome import Row, Run, Status
-from schemesim.report.selection import support
+from schemesim.report.selection import output_of, support
 from schemesim.ticks import to_cycles, to_ms
 
 
@@ -91,13 +91,29 @@ class ClearingSequence:
         """The row that led to one, in words."""
         cause = self.cause_of(row, all)
         if cause is not None:
-            return f"{cause.subject} {words_of(cause)}"
+            return f"{cause.subject} {self._words(cause)}"
         return "" if row.index == 0 or row.kind == "run" else "as before the event"
 
     def says(self, row: Row) -> str:
         """What happened, in words."""
-        since = self.since_us(row)
-        return words_of(row) if since == row.t_us else f"{words_of(row)} (on since {plain(to_ms(since))} ms)"
+        since, words = self.since_us(row), self._words(row)
+        return words if since == row.t_us else f"{words} (on since {plain(to_ms(since))} ms)"
+
+    def fails_at_once(self, row: Row) -> bool:
+        """Whether a row that answers a question is about a breaker: it fails when it is told to open, not before."""
+        return self.case.questions[self.question_at[row.index]].component in self.case.program.plant.device
+
+    def _words(self, row: Row) -> str:
+        if row.kind == "question":
+            if row.what == "no":
+                return "has not failed"
+            return "fails" if self.fails_at_once(row) else "had failed; first felt here"
+        if row.what == "prevented":
+            question = self.case.questions[self.question_at[row.cause]]
+            failure = f"{question.component} {question.mode.replace('_', ' ')}" if question.component else question.name
+            trips = row.kind == "trip output" or output_of(row.subject).endswith("trip")
+            return f"{'no trip' if trips else 'no output'}: {failure}"
+        return words_of(row)
 
     @cached_property
     def _shown(self) -> frozenset[int]:
@@ -149,8 +165,6 @@ def words_of(row: Row) -> str:
     A timer that runs out has put nothing out yet: what stands behind it may ask for more, as breaker failure
     does for current. An element that starts has begun to measure and not picked up.
     """
-    if row.kind == "question":
-        return f"answered {row.what}"
     return _WORDS.get((row.kind, row.what), row.what)
 
 

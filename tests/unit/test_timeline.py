@@ -200,7 +200,7 @@ def test_breaker_failure_row_by_row() -> None:
         chosen = table[(table.subject == subject) & table.what.str.startswith(what)]
         return [float(t) for t in chosen.t_ms]
 
-    assert at("Elm.L1.CB: does_not_open", "answered yes") == [20.0]
+    assert at("Elm.L1.CB: does_not_open", "fails") == [20.0]
     assert at("Elm.L1.CB", "does not open") == [20.0]
     assert at("Elm.L1.CB/50BF timer", "starts") == [20.0]
     assert at("Elm.L1.CB/50BF timer", "runs out") == [170.0]
@@ -421,7 +421,9 @@ def test_every_failure_is_marked_and_named(situation: str) -> None:
     marked = sorted((item.get_gid() or "") for item in ax.lines if (item.get_gid() or "").startswith("failure"))
     assert marked == sorted(f"failure: {name.split(': ')[0]}" for name in yes)
     for name in yes:
-        assert name.split(": ")[1].replace("_", " ") in text_of(ax)
+        component, mode = name.split(": ")
+        before = "" if component.endswith("CB") else ", before the fault"  # a breaker fails when it is told to open
+        assert mode.replace("_", " ") + before in text_of(ax)
 
 
 def test_looks_differ_without_colour() -> None:
@@ -581,3 +583,34 @@ def test_faults_at_two_places_are_compared_one_above_the_other() -> None:
     ax = plot_timelines(found[0], found[1], ("line", "feeder"))
     assert [t.get_text() for t in ax.get_yticklabels()][:3] == ["fault", "L1 · line", "F1 · feeder"]
     assert [g for g in gids_of(ax, "bar") if g.startswith("fault fed")] == ["fault fed: L1", "fault fed: F1"]
+
+
+def test_a_lost_supply_is_told_on_the_outputs_it_keeps_from_operating() -> None:
+    case = case_of("Fir.B1")
+    found = timeline(case, replay(case, ["Fir/DC 1: lost"]))
+    supply = next(r for r in found.rows() if r.subject == "Fir/DC 1: lost")
+    assert found.says(supply) == "had failed; first felt here"
+    silent = [r for r in found.rows() if r.what == "prevented"]
+    assert next((r.subject, r.t_us) for r in silent) == ("Fir/Fir.B1/1 87B trip: in time", 20_000)
+    assert {found.says(r) for r in silent if r.kind == "trip output" or "trip" in r.subject} == {
+        "no trip: Fir/DC 1 lost"
+    }
+    operated = {r.subject for r in found.run.log if r.what == "operates"}
+    assert not operated & {r.subject for r in silent}  # what did not operate is said of nothing that did
+    assert "answered" not in repr(found)
+    picture = found.plot(short=True)
+    crosses = {
+        str(item.get_gid()): float(item.get_xdata()[0])  # type: ignore[index, arg-type]
+        for item in picture.lines
+        if str(item.get_gid()).startswith(("failure", "prevented"))
+    }
+    assert crosses["failure: Fir/DC 1"] == 0  # it was lost before the fault
+    assert crosses["prevented: Fir/Fir.B1/1 87B trip"] == 20
+    texts = [text.get_text() for text in picture.texts]
+    assert "lost, before the fault" in texts
+    assert "no trip: Fir/DC 1 lost" in texts
+
+
+def test_without_a_failure_nothing_is_kept_from_operating() -> None:
+    case = case_of("Fir.B1")
+    assert not [r for r in replay(case, ()).log if r.what == "prevented"]
