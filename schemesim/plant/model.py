@@ -217,6 +217,14 @@ class Plant:
         object.__setattr__(self, "couplings", tuple(sorted(self.couplings, key=lambda c: (c.a, c.b))))
         check_plant(self).raise_if_any()
 
+    def __repr__(self) -> str:
+        stations = len({d.station for d in self.devices if d.station})
+        counts = (
+            f"{stations} station{'' if stations == 1 else 's'}, {len(self.breakers)} breakers, "
+            f"{len(self.sections)} sections, {len(self.sources)} sources"
+        )
+        return f"Plant({counts})"
+
     @cached_property
     def section(self) -> Mapping[str, Section]:
         """Sections by name."""

@@ -294,6 +294,12 @@ class Scheme:
         object.__setattr__(self, "common_causes", tuple(sorted(self.common_causes, key=lambda c: c.name)))
         check_scheme(self).raise_if_any()
 
+    def __repr__(self) -> str:
+        return (
+            f"Scheme({len(self.components)} components, {len(self.blocks)} blocks, "
+            f"{len(self.contacts)} trip outputs, {len(self.common_causes)} common causes)"
+        )
+
     @cached_property
     def component(self) -> Mapping[str, Component]:
         """Components by name."""

@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING, Literal
 from schemesim.engine.answers import FixedAnswers
 from schemesim.engine.case import Case
 from schemesim.engine.event import DEFAULT_HORIZON_US, run_event
-from schemesim.engine.outcome import Outcome, Run
+from schemesim.engine.outcome import Outcome, Run, Status
 from schemesim.errors import reject
 from schemesim.scheme.model import Probability
 from schemesim.show.tables import to_html
@@ -93,8 +93,19 @@ class Injection:
                 return row
         raise reject("injected failures", sorted(wanted), "a combination that was among the candidates")
 
-    def table(self) -> pd.DataFrame:
-        """One row for each combination, times in ms."""
+    def ranked(self) -> tuple[Injected, ...]:
+        """Rows with failures, the worst first: not cleared, then the longest, then most breakers, then by name.
+
+        A common cause counts as one failure.
+        """
+        return tuple(sorted(self.rows[1:], key=_worst_first))
+
+    def worst(self) -> Injected:
+        """The row with the worst outcome; that without a failure if there is no other."""
+        return next(iter(self.ranked()), self.base)
+
+    def table(self, ranked: bool = False) -> pd.DataFrame:
+        """One row for each combination, times in ms; ``ranked``: after the first the worst first, else by name."""
         import pandas as pd  # heavy: only when a table is asked for
 
         return pd.DataFrame(
@@ -112,7 +123,7 @@ class Injection:
                     "changed": r.changed,
                     "immaterial": r.immaterial,
                 }
-                for r in self.rows
+                for r in ((self.base, *self.ranked()) if ranked else self.rows)
             ]
         )
 
@@ -194,6 +205,12 @@ def inject(
             continue
         rows.append(_row(case, failures, met, found, base))
     return Injection(str(case.event), order, tuple(rows), len(done))
+
+
+def _worst_first(row: Injected) -> tuple[int, float, int, tuple[str, ...]]:
+    o = row.outcome
+    rank = {Status.NOT_CLEARED: 0, Status.UNDETERMINED: 1}.get(o.status, 2)
+    return rank, -(o.t_clear_us or 0), -len(o.tripped), row.failures
 
 
 def _bearing(case: Case) -> list[int]:
