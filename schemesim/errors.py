@@ -127,15 +127,20 @@ def reject(
 def nearest(name: str, known: Iterable[str]) -> str:
     """A hint with the nearest known name, or an empty string.
 
-    Of names of two letters, one that begins alike is near.
+    Of names of two letters, one that begins alike is near; of names with dots or slashes, one in the same place first.
 
     Examples
     --------
     >>> nearest("Alder.L1.C", ["Alder.L1.CB", "Birch.L1.CB"]), nearest("F2", ["F1", "G2"]), nearest("F2", ["G1"])
     ("did you mean 'Alder.L1.CB'?", "did you mean 'F1'?", '')
+    >>> nearest("Alder.L4.c", ["Alder.L5.c", "Alder.L4.b"])
+    "did you mean 'Alder.L4.b'?"
     """
     items, text = list(known), str(name)
-    close = get_close_matches(text, items, n=1, cutoff=0.6)
+    close = get_close_matches(text, items, n=20, cutoff=0.6)
+    place = text[: max(text.rfind("."), text.rfind("/")) + 1]
+    if place and place.strip("./"):
+        close.sort(key=lambda name: not name.startswith(place))
     if not close and len(text) == 2:
         close = sorted(k for k in items if len(k) == 2 and k[0] == text[0])
     return f"did you mean {close[0]!r}?" if close else ""

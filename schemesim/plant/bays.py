@@ -218,7 +218,8 @@ def check_station(equipment: Equipment, bays: Sequence[Bay], *, meshed: bool = F
         elif not at_breaker:
             allowed -= {CtPlacement.BOTH, CtPlacement.DEAD_TANK}
         if placement not in allowed:
-            errors.add(subject, str(placement), f"one of {sorted(map(str, allowed))}")
+            tip = "the line side is the circuit side" if str(placement) == "line_side" else ""
+            errors.add(subject, str(placement), f"one of {sorted(map(str, allowed))}", tip=tip)
     return errors
 
 

@@ -199,10 +199,10 @@ class Reading:
             row.note("winding", "nothing", "the VT winding that its distance zones need")
         return ProtectionSet(
             label=label,
-            core=row.required("core"),
+            core=row.required("core") or "1",
             winding=row.text("winding", label),
-            dc=row.required("dc"),
-            coil=row.required("coil"),
+            dc=row.required("dc") or "1",
+            coil=row.required("coil") or "1",
             channel=row.text("channel", label),
             lockout=row.text("lockout", label),
             line=LINE_FUNCTIONS.get(function, LineScheme.DISTANCE),
@@ -217,7 +217,7 @@ class Reading:
             own: self._time(row, "delay_ms", getattr(usual, own), LEAST_DELAY_MS),
             "bus_delay": self._time(row, "reverse_delay_ms", usual.bus_delay, LEAST_DELAY_MS),
         }
-        core, dc, coil = (row.required(column) for column in ("core", "dc", "coil"))
+        core, dc, coil = (row.required(column) or "1" for column in ("core", "dc", "coil"))
         return replace(usual, core=core, winding=row.text("winding", "1"), dc=dc, coil=coil, **changes)
 
     # --- breakers ---------------------------------------------------------------------
@@ -234,7 +234,7 @@ class Reading:
         sets: tuple[ProtectionSet, ...] = ()
         times = self.base.times
         if ef is not None:
-            core, dc, coil = (ef.required(column) for column in ("core", "dc", "coil"))
+            core, dc, coil = (ef.required(column) or "1" for column in ("core", "dc", "coil"))
             channel, lockout = ef.text("channel", "1"), ef.text("lockout", "1")
             sets = (ProtectionSet(core=core, dc=dc, coil=coil, channel=channel, lockout=lockout),)
             measured = self._measuring([ef], times.overcurrent)
@@ -259,7 +259,7 @@ class Reading:
             retrip = self._time(row, "retrip_ms", t.retrip or Fixed(0))
         elif "retrip_ms" in row.cells:
             row.note("retrip_coil", "nothing", "the coil that the retrip goes to")
-        core, dc, coil = (row.required(column) for column in ("core", "dc", "coil"))
+        core, dc, coil = (row.required(column) or "1" for column in ("core", "dc", "coil"))
         start = row.word("start", map(str, Start), str(usual.start))
         return BreakerFailurePolicy(
             times=replace(
@@ -321,7 +321,7 @@ class Reading:
                 stated = row.text("coil_dc") if column == "coil" else ""
                 elsewhere = "".join(stated_for.get(coil, ())) if len(stated_for.get(coil, ())) == 1 else ""
                 before = found[coil][0] if coil in found else ""
-                dc = stated or before or elsewhere or usual.get(coil) or row.text("dc")
+                dc = stated or before or elsewhere or usual.get(coil) or row.text("dc") or "1"
                 if coil in found and found[coil][0] != dc:
                     row.note("coil_dc", dc, f"DC {found[coil][0]} for coil {coil} as in row {found[coil][1].number}")
                 found.setdefault(coil, (dc, row))

@@ -121,6 +121,7 @@ def check_exceptions(
     known = {*names, *b.plant.breakers}
     bays = [name for e in elements for name in bays_of(e)]
     for name in sorted(set(special) - known - set(bays)):
-        tip = nearest(name, [*names, *bays, *b.plant.breakers])
+        dotted = [bay for bay in bays if bay.replace("/", ".") == name]
+        tip = nearest(name, dotted or [*names, *bays, *b.plant.breakers])
         expected = "the name of an element, a breaker or a bay (station/element)"
         b.errors.add("exception to the policy", name, expected, tip=tip)

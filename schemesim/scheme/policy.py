@@ -7,6 +7,7 @@ stands behind them, and how breaker failure is done. It is inert; ``dress`` appl
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field, fields, replace
 from enum import StrEnum
 
@@ -14,6 +15,21 @@ from schemesim.errors import ErrorList, nearest
 from schemesim.scheme.build import BreakerTimes
 from schemesim.scheme.delays import Delay, Fixed, check_delays
 from schemesim.scheme.functions import BreakerFailureTimes, ElementTimes
+
+_LABEL = "a label: text that is not empty, without outer blanks"
+
+
+def _is_label(value: object) -> bool:
+    return isinstance(value, str) and bool(value) and value == value.strip()
+
+
+def _check_labels(owner: object, *names: str) -> None:
+    errors = ErrorList()
+    for name in names:
+        value = getattr(owner, name)
+        if not _is_label(value):
+            errors.add(f"{name} of {type(owner).__name__}", value, _LABEL)
+    errors.raise_if_any()
 
 
 class LineScheme(StrEnum):
@@ -63,6 +79,9 @@ class ProtectionSet:
     lockout: str = "1"
     line: LineScheme = LineScheme.DISTANCE
 
+    def __post_init__(self) -> None:
+        _check_labels(self, "label", "core", "winding", "dc", "coil", "channel", "lockout")
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class LocalBackup:
@@ -85,6 +104,7 @@ class LocalBackup:
 
     def __post_init__(self) -> None:
         check_delays(self)
+        _check_labels(self, "core", "winding", "dc", "coil")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -105,6 +125,9 @@ class BreakerFailurePolicy:
     lockout: str = "1"
     channel: str = "1"
     transfer_trip: bool = True
+
+    def __post_init__(self) -> None:
+        _check_labels(self, "core", "dc", "coil", "retrip_coil", "lockout", "channel")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -172,7 +195,7 @@ class Policy:
         Echo of a permissive signal at a weak or open end.
     vt_supervision : bool
         A lost VT winding blocks distance elements rather than letting them trip.
-    coil_dc : tuple of (coil label, DC label)
+    coil_dc : tuple of (coil label, DC label), or a mapping
         Which DC domain feeds each trip coil.
     """
 
@@ -193,6 +216,12 @@ class Policy:
 
     def __post_init__(self) -> None:
         errors = ErrorList()
+        if isinstance(self.coil_dc, Mapping):
+            object.__setattr__(self, "coil_dc", tuple(self.coil_dc.items()))
+        for coil, dc in self.coil_dc:
+            for what, value in (("coil", coil), ("DC", dc)):
+                if not _is_label(value):
+                    errors.add(f"{what} in coil_dc of policy {self.name!r}", value, _LABEL)
         labels = [s.label for s in self.sets]
         if len(set(labels)) < len(labels):
             errors.add(f"sets of policy {self.name!r}", labels, "labels not used twice")

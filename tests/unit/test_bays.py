@@ -7,7 +7,7 @@ from pathlib import Path
 
 import pytest
 
-from schemesim.errors import InputError
+from schemesim.errors import InputError, nearest
 from schemesim.plant.layouts import Bay, breaker_and_a_half, generator, line, single_bus
 from schemesim.plant.model import Plant, PlantBuilder
 from schemesim.scenario.files import load_scenario, save_scenario, scenario_from_text, scenario_text
@@ -15,7 +15,14 @@ from schemesim.scenario.model import Scenario
 from schemesim.scenario.relay_schedule import relay_schedule
 from schemesim.scheme.dress import dress
 from schemesim.scheme.model import Scheme
-from schemesim.scheme.policy import Policy, duplicate_chain, single_set
+from schemesim.scheme.policy import (
+    BreakerFailurePolicy,
+    LocalBackup,
+    Policy,
+    ProtectionSet,
+    duplicate_chain,
+    single_set,
+)
 from schemesim.study.edits import Recipe, addition
 from tests.rules.small import chain, opened, play
 
@@ -228,3 +235,39 @@ def test_a_policy_not_in_use_still_has_to_fit_the_plant() -> None:
     with pytest.raises(InputError) as caught:
         scenario_from_text(poor.replace("KEY", "F1"))
     assert any("core '7'" in str(p) for p in caught.value.problems)
+
+
+@pytest.mark.parametrize("item", ["label", "core", "winding", "dc", "coil", "channel", "lockout"])
+@pytest.mark.parametrize("value", ["", " 1", 2])
+def test_a_label_is_text(item: str, value: object) -> None:
+    with pytest.raises(InputError, match=f"{item} of ProtectionSet: got .*, expected a label"):
+        ProtectionSet(**{item: value})  # type: ignore[arg-type]  # as a user may
+
+
+def test_labels_of_back_up_and_coils_are_text() -> None:
+    with pytest.raises(InputError, match="dc of LocalBackup"):
+        LocalBackup(dc="")
+    with pytest.raises(InputError, match="retrip_coil of BreakerFailurePolicy"):
+        BreakerFailurePolicy(retrip_coil="")
+    with pytest.raises(InputError, match="DC in coil_dc of policy 'p': got ''"):
+        Policy(name="p", coil_dc=(("1", ""),))
+
+
+def test_coil_dc_may_be_a_mapping() -> None:
+    assert single_set(coil_dc={"1": "1"}) == single_set(coil_dc=(("1", "1"),))
+
+
+def test_line_side_is_told_by_its_other_name() -> None:
+    b = PlantBuilder()
+    line(b, "L1", 50)
+    with pytest.raises(InputError, match="the line side is the circuit side"):
+        single_bus(b, "Alder", [Bay("L1", "L1", ct="line_side")])  # type: ignore[arg-type]  # as a user may
+
+
+def test_a_hint_names_a_neighbour_in_the_same_bay_first() -> None:
+    names = [f"Dunmore.L{n}.{what}" for n in (5, 6, 7, 8) for what in ("b", "c", "CB", "CTb")] + ["Dunmore.L4.CB"]
+    assert nearest("Dunmore.L4.c", names) == "did you mean 'Dunmore.L4.CB'?"
+    assert nearest("Dunmor.L5.c", names) == "did you mean 'Dunmore.L5.c'?"
+    assert nearest("Dunmore/L4/relay 3", ["Dunmore/L5/relay 3", "Dunmore/L4/relay 1"]) == (
+        "did you mean 'Dunmore/L4/relay 1'?"
+    )
