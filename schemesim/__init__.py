@@ -75,12 +75,13 @@ if TYPE_CHECKING:
     from schemesim.report.one_line import plot_one_line
     from schemesim.report.page import HtmlPage
     from schemesim.report.pictures import plot_timeline
-    from schemesim.report.timeline import replay, timeline
+    from schemesim.report.timeline import Timeline, replay, timeline
     from schemesim.scenario import Scenario, load_scenario, save_scenario
     from schemesim.scenario.campaigns import campaign_in, campaign_scenario, export_campaign
     from schemesim.scenario.deciding import decide
     from schemesim.scenario.equipment import load_equipment
     from schemesim.scenario.equipment_list import equipment_list
+    from schemesim.scenario.model import Limits, StudySettings
     from schemesim.scenario.relay_schedule import RelaySchedule, load_relay_schedule, relay_schedule
     from schemesim.scenario.reporting import report_scenario
     from schemesim.scenario.testing import intervals_scenario, misoperations_scenario
@@ -173,7 +174,8 @@ if TYPE_CHECKING:
     from schemesim.study.precision import Precision
     from schemesim.study.proof_intervals import TestCosts, study_test_intervals
     from schemesim.study.races import races
-    from schemesim.study.register import register
+    from schemesim.study.register import Register, register
+    from schemesim.study.register_changes import compare_registers
     from schemesim.study.risk import Explorer
     from schemesim.study.sensitivity import uncertainty
     from schemesim.study.stratified import simulate_stratified
@@ -261,7 +263,7 @@ _HOMES = {
     "schemesim.study.variants": "study_variants",
     "schemesim.study.frontier": "frontier next_best",
     "schemesim.study.sensitivity": "uncertainty",
-    "schemesim.report.timeline": "replay timeline",
+    "schemesim.report.timeline": "Timeline replay timeline",
     "schemesim.report.page": "HtmlPage",
     "schemesim.report.pictures": "plot_timeline",
     "schemesim.report.compared": "plot_timelines",
@@ -271,10 +273,12 @@ _HOMES = {
     "schemesim.show.tables": "readable",
     "schemesim.scenario": "Scenario load_scenario save_scenario",
     "schemesim.scenario.deciding": "decide",
+    "schemesim.scenario.model": "Limits StudySettings",
     "schemesim.scheme.trip_matrix": "trip_matrix",
     "schemesim.scheme.trip_comparison": "compare_trip_matrix",
     "schemesim.scheme.independence": "independence",
-    "schemesim.study.register": "register",
+    "schemesim.study.register": "Register register",
+    "schemesim.study.register_changes": "compare_registers",
     "schemesim.study.footnote": "Monitored",
     "schemesim.study.outages": "planned_outages study_outages",
     "schemesim.scenario.weak": "outages_scenario register_scenario",
@@ -300,16 +304,17 @@ __all__ = [
     "Campaign", "Case", "CommonCause", "Component", "ComponentKind", "Contact", "CostRule", "Costs", "Coupling",
     "CtPlacement", "Current", "Curve", "DelayTimes", "Device", "DeviceKind", "Dispatch", "Distance", "DrawnAnswers",
     "Edit", "ElectricalSensing", "ElementTimes", "Explorer", "External", "FailureData", "FailureMode", "FaultType",
-    "Fixed", "FixedAnswers", "ForcedAnswers", "Gate", "HtmlPage", "InZone", "InputError", "Latch", "LineImpedance",
-    "LineScheme", "LocalBackup", "Location", "LogNormal", "LogicalSensing", "Looking", "Money", "Monitored", "Narrow",
-    "NoFault", "Normal", "Not", "Outcome", "Overcurrent", "Override", "Plant", "PlantBuilder", "Policy", "PolicyTimes",
-    "Precision", "Program", "ProtectionSet", "RateData", "RateRule", "Reach", "Reaches", "Recipe", "RelaySchedule",
-    "Role", "Run", "RunError", "Scenario", "Scheme", "SchemeBuilder", "SchemesimError", "Section", "SectionKind",
-    "Sense", "Setting", "SettingRules", "Settings", "ShuntFault", "Source", "SourceImpedance", "Start", "Status",
-    "Terminal", "TestCosts", "Timer", "TransformerImpedance", "Tree", "Triangular", "Uniform", "Values", "Voltage",
-    "VoltageTransformer", "Weights", "audit_elements", "bind", "breaker_and_a_half", "breakers_distribution",
-    "breakers_excess", "breakers_mean", "campaign_in", "campaign_scenario", "clearing_time", "clopper_pearson",
-    "compare", "compare_trip_matrix", "compile_scheme", "coordination", "coverage_audit", "decide", "dial_policies",
+    "Fixed", "FixedAnswers", "ForcedAnswers", "Gate", "HtmlPage", "InZone", "InputError", "Latch", "Limits",
+    "LineImpedance", "LineScheme", "LocalBackup", "Location", "LogNormal", "LogicalSensing", "Looking", "Money",
+    "Monitored", "Narrow", "NoFault", "Normal", "Not", "Outcome", "Overcurrent", "Override", "Plant", "PlantBuilder",
+    "Policy", "PolicyTimes", "Precision", "Program", "ProtectionSet", "RateData", "RateRule", "Reach", "Reaches",
+    "Recipe", "Register", "RelaySchedule", "Role", "Run", "RunError", "Scenario", "Scheme", "SchemeBuilder",
+    "SchemesimError", "Section", "SectionKind", "Sense", "Setting", "SettingRules", "Settings", "ShuntFault", "Source",
+    "SourceImpedance", "Start", "Status", "StudySettings", "Terminal", "TestCosts", "Timeline", "Timer",
+    "TransformerImpedance", "Tree", "Triangular", "Uniform", "Values", "Voltage", "VoltageTransformer", "Weights",
+    "audit_elements", "bind", "breaker_and_a_half", "breakers_distribution", "breakers_excess", "breakers_mean",
+    "campaign_in", "campaign_scenario", "clearing_time", "clopper_pearson", "compare", "compare_registers",
+    "compare_trip_matrix", "compile_scheme", "coordination", "coverage_audit", "decide", "dial_policies",
     "dial_scenario", "double_bus", "dress", "duplicate_chain", "duplicate_relay", "duty", "equipment_list", "explore",
     "export_campaign", "extend", "feeder", "find_trials", "fixed_ms", "frontier", "generator", "graded",
     "iec_61508_pfd", "importance", "importance_scenario", "independence", "infeed", "inject", "intervals_scenario",

@@ -11,6 +11,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from schemesim.errors import reject
+from schemesim.plant.model import Location
 from schemesim.show.tables import to_html
 from schemesim.study.brackets import Bracket, exactly
 from schemesim.study.locations import LocationStudy
@@ -32,6 +33,7 @@ _LESS_IS_BETTER = frozenset(
         "single_points",
         "single_points_not_cleared",
         "single_points_late",
+        "single_points_at_places",
     }
 )
 
@@ -48,7 +50,8 @@ class Compared:
         Variant less base.
     verdict : str
         ``"better"``, ``"worse"``, ``"higher"``, ``"lower"`` (where neither is better),
-        ``"same"`` (one and the same value) or ``"not told apart"``; empty for the base.
+        ``"same"`` (one and the same value), ``"same number"`` (of single points of failure: as many, but
+        others, or at other locations) or ``"not told apart"``; empty for the base.
     """
 
     measure: str
@@ -60,7 +63,12 @@ class Compared:
 
 @dataclass(frozen=True)
 class Comparison:
-    """Every measure of every variant; the first variant is the base."""
+    """Every measure of every variant; the first variant is the base.
+
+    ``single_points`` and those not cleared or late count a failure once, however many locations it
+    spoils; ``single_points_at_places`` counts it at each. Which are gone and which are new:
+    :func:`~schemesim.study.register_changes.compare_registers`.
+    """
 
     base: str
     variants: tuple[str, ...]
@@ -135,27 +143,39 @@ def compare(studies: Mapping[str, LocationStudy], *, own_places: bool = False) -
             tip = "" if own_places else "own_places=True compares plants that differ"
             raise reject(f"study {name!r}", "another", expected, tip=tip)
     figures = {name: _figures(study) for name, study in studies.items()}
+    points = {name: _points(study) for name, study in studies.items()}
     rows = []
     for measure, before in figures[base_name].items():
         for name in studies:
             value = figures[name].get(measure)
             if value is not None:
                 verdict = "" if name == base_name else _verdict(measure, before, value)
+                if verdict == "same" and points[name].get(measure) != points[base_name].get(measure):
+                    verdict = "same number"
                 rows.append(Compared(measure, name, value, value - before, verdict))
     return Comparison(base_name, tuple(studies), tuple(rows))
 
 
 def _figures(study: LocationStudy) -> dict[str, Bracket]:
     figures = study.measures()
-    if all(r.stopped != "budget" for r in study.results):
-        points = [p for r in study.results for p in r.single_points]
-        for name, chosen in (
-            ("single_points", points),
-            ("single_points_not_cleared", [p for p in points if p.not_cleared]),
-            ("single_points_late", [p for p in points if p.late]),
-        ):
-            figures[name] = exactly(len({p.failure for p in chosen}))
+    points = _points(study)
+    for name, pairs in points.items():
+        figures[name] = exactly(len({failure for failure, _ in pairs}))
+    if points:
+        figures["single_points_at_places"] = exactly(len(points["single_points"]))
     return figures
+
+
+def _points(study: LocationStudy) -> dict[str, frozenset[tuple[str, Location]]]:
+    """Single points of failure and the locations they spoil, all and of each kind; none if they were not all found."""
+    if any(r.stopped == "budget" for r in study.results):
+        return {}
+    found = [(p, r.location) for r in study.results for p in r.single_points]
+    return {
+        "single_points": frozenset((p.failure, at) for p, at in found),
+        "single_points_not_cleared": frozenset((p.failure, at) for p, at in found if p.not_cleared),
+        "single_points_late": frozenset((p.failure, at) for p, at in found if p.late),
+    }
 
 
 def _verdict(measure: str, before: Bracket, after: Bracket) -> str:

@@ -56,6 +56,7 @@ PUBLIC: list[str] = [
     "InZone",
     "InputError",
     "Latch",
+    "Limits",
     "LineImpedance",
     "LineScheme",
     "LocalBackup",
@@ -84,6 +85,7 @@ PUBLIC: list[str] = [
     "Reach",
     "Reaches",
     "Recipe",
+    "Register",
     "RelaySchedule",
     "Role",
     "Run",
@@ -103,8 +105,10 @@ PUBLIC: list[str] = [
     "SourceImpedance",
     "Start",
     "Status",
+    "StudySettings",
     "Terminal",
     "TestCosts",
+    "Timeline",
     "Timer",
     "TransformerImpedance",
     "Tree",
@@ -125,6 +129,7 @@ PUBLIC: list[str] = [
     "clearing_time",
     "clopper_pearson",
     "compare",
+    "compare_registers",
     "compare_trip_matrix",
     "compile_scheme",
     "coordination",
@@ -289,8 +294,7 @@ def test_public_names_resolve_to_documented_things_of_the_library() -> None:
     foreign = [
         name
         for name, thing in things.items()
-        if not (inspect.isclass(thing) or inspect.isroutine(thing))
-        or not thing.__module__.startswith("schemesim.")
+        if not (inspect.isclass(thing) or inspect.isroutine(thing)) or not thing.__module__.startswith("schemesim.")
     ]
     assert foreign == []
     assert [name for name, thing in things.items() if not has_docstring(thing)] == []
