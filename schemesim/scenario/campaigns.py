@@ -7,6 +7,7 @@ from collections.abc import Iterable
 from schemesim.engine.sensing import Event, NoFault
 from schemesim.errors import InputError, nearest, reject
 from schemesim.plant.model import Location
+from schemesim.scenario.chosen import Places, chosen_of
 from schemesim.scenario.files import scenario_from_text, scenario_text
 from schemesim.scenario.model import Scenario
 from schemesim.scenario.writing import write_whole
@@ -21,7 +22,7 @@ def campaign_scenario(
     scenario: Scenario,
     policies: Iterable[str] | None = None,
     *,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     no_fault: bool = False,
     trials: int | None = None,
     seed: int | None = None,
@@ -35,7 +36,7 @@ def campaign_scenario(
     scenario : Scenario
     policies : iterable of str or None
         The policy in use by default.
-    locations : iterable of Location or None
+    locations : iterable of Location or str, or None
         By default every location of the scenario.
     no_fault : bool
         Trips with no fault too: of each component that has a rate under every policy.
@@ -56,7 +57,7 @@ def campaign_scenario(
         if name not in scenario.policies:
             known = sorted(scenario.policies)
             raise reject("policy", name, f"one of {known}", tip=nearest(name, known))
-    events: list[Event] = list(dict.fromkeys(scenario.frequencies if locations is None else locations))
+    events: list[Event] = [*chosen_of(scenario.plant, scenario.frequencies if locations is None else locations)]
     if no_fault:
         schemes = [scenario.scheme(name) for name in names]
         common = set.intersection(*({c.name for c in s.components if c.no_fault_per_yr > 0} for s in schemes))

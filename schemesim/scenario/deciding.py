@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 from schemesim.engine.program import Program
 from schemesim.errors import ErrorList, InputError, nearest, reject
 from schemesim.plant.model import Location, Plant, SectionKind
+from schemesim.scenario.chosen import Places, chosen_of
 from schemesim.scenario.model import Scenario
 from schemesim.study.edits import ADDITIONS, Edit, Recipe, addition
 from schemesim.study.frontier import Frontier, NextBest, Weigher, frontier
@@ -105,7 +106,7 @@ def recipe_of(scenario: Scenario, policy: str | None = None) -> Recipe:
 
 def explorer_of(
     scenario: Scenario,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     *,
     epsilon: float = 1e-3,
     no_fault: bool = True,
@@ -113,7 +114,7 @@ def explorer_of(
     """What explores variants of a scenario, and the faults per year that are left out (see :func:`stand_in`)."""
     rates, left = dict(scenario.frequencies), 0.0
     if locations is not None:
-        rates, left = stand_in(scenario.plant, scenario.frequencies, locations)
+        rates, left = stand_in(scenario.plant, scenario.frequencies, chosen_of(scenario.plant, locations))
     s = scenario.study
     explorer = Explorer(
         rates, scenario.limit_us, sensing=scenario.sensing(), dispatch=s.dispatch, epsilon=epsilon,
@@ -128,7 +129,7 @@ def decide(
     *,
     edits: Iterable[Edit] = (),
     start: str | None = None,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     epsilon: float = 1e-3,
     no_fault: bool = True,
     trials: int = 0,
@@ -147,7 +148,7 @@ def decide(
         Further variants: the start with each edit.
     start : str or None
         Policy that additions are made to; as the scenario says by default.
-    locations : iterable of Location or None
+    locations : iterable of Location or str, or None
         A few locations that stand for all of their kind; as the scenario says by default.
     epsilon : float
         Mass of each tree left unexplored, at most; every single failure at a fault is explored besides.
@@ -198,7 +199,7 @@ def _decided(
     policies: Iterable[str] | None,
     edits: tuple[Edit, ...],
     start: str | None,
-    locations: Iterable[Location] | None,
+    locations: Places | None,
     epsilon: float,
     no_fault: bool,
     trials: int,

@@ -2,15 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable
+from collections.abc import Callable
 from concurrent.futures import Executor
 from dataclasses import fields
 
 from schemesim.engine.sensing import NoFault
 from schemesim.errors import reject
-from schemesim.plant.model import Location
 from schemesim.report.page import Assumption, HtmlPage, PageCase, PageContent, html_page
 from schemesim.report.timeline import replay, timeline
+from schemesim.scenario.chosen import Places, chosen_of
 from schemesim.scenario.model import Scenario
 from schemesim.scenario.studying import study_scenario
 from schemesim.scenario.weak import register_scenario
@@ -39,7 +39,7 @@ def report_scenario(
     *,
     study: LocationStudy | None = None,
     register: Register | None = None,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     epsilon: float | None = None,
     max_cases: int = MAX_CASES,
     executor: Executor | None = None,
@@ -59,7 +59,7 @@ def report_scenario(
         What :func:`~schemesim.scenario.studying.study_scenario` found; it is studied here otherwise.
     register : Register or None
         What :func:`~schemesim.scenario.weak.register_scenario` found; it is made here otherwise.
-    locations : iterable of Location or None
+    locations : iterable of Location or str, or None
         By default every location of the scenario.
     epsilon : float or None
         Probability left unexplored at each location; as in the scenario by default.
@@ -90,7 +90,7 @@ def report_scenario(
     name = scenario.policy if policy is None else policy
     program = scenario.program(name)
     told = _untold if stage is None else stage
-    chosen = None if locations is None else list(locations)
+    chosen = None if locations is None else chosen_of(scenario.plant, locations)
     if study is None:
         study = study_scenario(
             scenario, name, locations=chosen, epsilon=epsilon, executor=executor, progress=told("locations")

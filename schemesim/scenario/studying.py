@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable
+from collections.abc import Callable
 from concurrent.futures import Executor
 from dataclasses import replace
 
 from schemesim.errors import ErrorList, nearest
 from schemesim.plant.model import Location
+from schemesim.scenario.chosen import Places, chosen_of
 from schemesim.scenario.model import Scenario
 from schemesim.study.location import LocationOptions, LocationResult
 from schemesim.study.locations import LocationStudy, iter_locations
@@ -20,7 +21,7 @@ def study_scenario(
     scenario: Scenario,
     policy: str | None = None,
     *,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     epsilon: float | None = None,
     no_fault: bool = False,
     executor: Executor | None = None,
@@ -33,7 +34,7 @@ def study_scenario(
     scenario : Scenario
     policy : str or None
         The policy in use by default.
-    locations : iterable of Location or None
+    locations : iterable of Location or str, or None
         By default every location of the scenario.
     epsilon : float or None
         Probability left unexplored at each location; as in the scenario by default.
@@ -56,7 +57,7 @@ def study_scenario(
     InputError
         For a policy or section that is not there.
     """
-    chosen = list(dict.fromkeys(scenario.frequencies if locations is None else locations))
+    chosen = chosen_of(scenario.plant, scenario.frequencies if locations is None else locations)
     errors = ErrorList()
     for at in chosen:
         if at.section not in scenario.plant.section:

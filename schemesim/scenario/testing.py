@@ -14,6 +14,7 @@ from dataclasses import replace
 
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
+from schemesim.scenario.chosen import Places, chosen_of
 from schemesim.scenario.model import Scenario
 from schemesim.scheme.model import ComponentKind
 from schemesim.scheme.starting_values import StartingValues
@@ -38,7 +39,7 @@ def intervals_scenario(
     policy: str | None = None,
     *,
     intervals_yr: Iterable[float] = INTERVALS_YR,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     staggered: bool | None = None,
     epsilon: float = 1e-4,
     progress: Progress | None = None,
@@ -59,7 +60,7 @@ def intervals_scenario(
         The policy in use by default.
     intervals_yr, staggered, epsilon, progress
         See :func:`~schemesim.study.proof_intervals.study_test_intervals`.
-    locations : iterable of Location or None
+    locations : iterable of Location or str, or None
         By default every location of the scenario.
 
     Raises
@@ -95,7 +96,7 @@ def misoperations_scenario(
     scenario: Scenario,
     policy: str | None = None,
     *,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     no_fault: bool = True,
     epsilon: float = 1e-4,
 ) -> MisoperationStudy:
@@ -106,7 +107,7 @@ def misoperations_scenario(
     scenario : Scenario
     policy : str or None
         The policy in use by default.
-    locations : iterable of Location or None
+    locations : iterable of Location or str, or None
         By default every location of the scenario.
     no_fault, epsilon
         See :func:`~schemesim.study.misoperations.study_misoperations`.
@@ -152,10 +153,5 @@ def _rates(scenario: Scenario, chosen: Iterable[Location]) -> dict[Location, flo
     return rates if any(rates.values()) else None
 
 
-def _chosen(scenario: Scenario, locations: Iterable[Location] | None) -> list[Location]:
-    chosen = list(dict.fromkeys(scenario.frequencies if locations is None else locations))
-    known = scenario.plant.section
-    for at in chosen:
-        if at.section not in known:
-            raise reject("section", at.section, "a section", tip=nearest(at.section, known))
-    return chosen
+def _chosen(scenario: Scenario, locations: Places | None) -> list[Location]:
+    return chosen_of(scenario.plant, scenario.frequencies if locations is None else locations)

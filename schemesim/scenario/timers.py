@@ -24,6 +24,7 @@ from concurrent.futures import Executor
 
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
+from schemesim.scenario.chosen import Places, chosen_of
 from schemesim.scenario.model import Scenario
 from schemesim.study.dials import VOTES, DialStudy, dial_policies, study_dial
 from schemesim.study.importance_study import ImportanceStudy, Spoils, study_importance
@@ -40,7 +41,7 @@ def timer_scenario(
     scenario: Scenario,
     policy: str | None = None,
     *,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     limit_us: int | None = None,
     zone_2_limit_us: int | None = None,
     weights: Weights | None = None,
@@ -54,7 +55,7 @@ def timer_scenario(
     scenario : Scenario
     policy : str or None
         The policy in use by default.
-    locations : iterable of Location or None
+    locations : iterable of Location or str, or None
         By default every location of the scenario.
     limit_us, zone_2_limit_us : int or None
         Longest clearing with a breaker stuck, and by a remote zone 2; by default those of the scenario.
@@ -85,7 +86,7 @@ def dial_scenario(
     *,
     stations: Iterable[str] | None = None,
     elements: Iterable[str] | None = None,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     timed: bool = False,
     epsilon: float = 1e-3,
 ) -> DialStudy:
@@ -102,7 +103,7 @@ def dial_scenario(
         The policy in use by default; elements and breakers with a policy of their own keep it.
     stations, elements, timed, epsilon
         See :func:`~schemesim.study.dials.study_dial`.
-    locations : iterable of Location or None
+    locations : iterable of Location or str, or None
         By default every location of the scenario.
 
     Raises
@@ -139,7 +140,7 @@ def importance_scenario(
     policy: str | None = None,
     *,
     event: Spoils | str = Spoils.LATE,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     epsilon: float = 1e-3,
     executor: Executor | None = None,
     progress: Callable[[int, int], None] | None = None,
@@ -153,7 +154,7 @@ def importance_scenario(
         The policy in use by default.
     event, epsilon, executor, progress
         See :func:`~schemesim.study.importance_study.study_importance`.
-    locations : iterable of Location or None
+    locations : iterable of Location or str, or None
         By default every location of the scenario.
     """
     chosen = _chosen(scenario, locations)
@@ -177,10 +178,5 @@ def _rates(scenario: Scenario, chosen: Iterable[Location]) -> dict[Location, flo
     return rates if any(rates.values()) else None
 
 
-def _chosen(scenario: Scenario, locations: Iterable[Location] | None) -> list[Location]:
-    chosen = list(dict.fromkeys(scenario.frequencies if locations is None else locations))
-    known = scenario.plant.section
-    for at in chosen:
-        if at.section not in known:
-            raise reject("section", at.section, "a section", tip=nearest(at.section, known))
-    return chosen
+def _chosen(scenario: Scenario, locations: Places | None) -> list[Location]:
+    return chosen_of(scenario.plant, scenario.frequencies if locations is None else locations)

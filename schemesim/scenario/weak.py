@@ -24,6 +24,7 @@ from concurrent.futures import Executor
 
 from schemesim.errors import nearest, reject
 from schemesim.plant.model import Location
+from schemesim.scenario.chosen import Places, chosen_of
 from schemesim.scenario.maintenance import hours_by_name
 from schemesim.scenario.model import Scenario
 from schemesim.study.footnote import Monitored
@@ -38,7 +39,7 @@ def register_scenario(
     scenario: Scenario,
     policy: str | None = None,
     *,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     monitored: Iterable[Monitored] | None = None,
     pairs: bool = False,
     executor: Executor | None = None,
@@ -51,7 +52,7 @@ def register_scenario(
     scenario : Scenario
     policy : str or None
         The policy in use by default.
-    locations : iterable of Location or None
+    locations : iterable of Location or str, or None
         By default every location of the scenario.
     monitored : iterable of Monitored or None
         By default as ``maintenance`` says.
@@ -81,7 +82,7 @@ def outages_scenario(
     scenario: Scenario,
     policy: str | None = None,
     *,
-    locations: Iterable[Location] | None = None,
+    locations: Places | None = None,
     kinds: Iterable[str] = KINDS,
     names: Iterable[str] | None = None,
     hours_per_yr: Mapping[str, float] | None = None,
@@ -96,7 +97,7 @@ def outages_scenario(
     scenario : Scenario
     policy : str or None
         The policy in use by default.
-    locations : iterable of Location or None
+    locations : iterable of Location or str, or None
         By default every location of the scenario.
     kinds : iterable of str
         Of ``"set"``, ``"dc"``, ``"channel"``, ``"breaker"``.
@@ -141,10 +142,5 @@ def outages_scenario(
     )
 
 
-def _chosen(scenario: Scenario, locations: Iterable[Location] | None) -> list[Location]:
-    chosen = list(dict.fromkeys(scenario.frequencies if locations is None else locations))
-    known = scenario.plant.section
-    for at in chosen:
-        if at.section not in known:
-            raise reject("section", at.section, "a section", tip=nearest(at.section, known))
-    return chosen
+def _chosen(scenario: Scenario, locations: Places | None) -> list[Location]:
+    return chosen_of(scenario.plant, scenario.frequencies if locations is None else locations)
