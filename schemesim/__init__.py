@@ -37,6 +37,7 @@ if TYPE_CHECKING:
     from schemesim.engine.times import DelayTimes
     from schemesim.errors import InputError, RunError, SchemesimError
     from schemesim.plant.coverage import coverage_audit
+    from schemesim.plant.ct_positions import ct_frequencies, with_ct
     from schemesim.plant.layouts import (
         Bay,
         CtPlacement,
@@ -212,6 +213,7 @@ _HOMES = {
     "schemesim.plant.net_tables": "plant_of_tables",
     "schemesim.plant.terminals": "Terminal protected_object",
     "schemesim.plant.coverage": "coverage_audit",
+    "schemesim.plant.ct_positions": "ct_frequencies with_ct",
     "schemesim.scheme.delays": "Fixed fixed_ms",
     "schemesim.scheme.model": (
         "Ask Breaker CommonCause Component ComponentKind Contact FailureMode Gate Latch Not Role Scheme Sense "
@@ -314,7 +316,8 @@ __all__ = [
     "TransformerImpedance", "Tree", "Triangular", "Uniform", "Values", "Voltage", "VoltageTransformer", "Weights",
     "audit_elements", "bind", "breaker_and_a_half", "breakers_distribution", "breakers_excess", "breakers_mean",
     "campaign_in", "campaign_scenario", "clearing_time", "clopper_pearson", "compare", "compare_registers",
-    "compare_trip_matrix", "compile_scheme", "coordination", "coverage_audit", "decide", "dial_policies",
+    "compare_trip_matrix", "compile_scheme", "coordination", "coverage_audit", "ct_frequencies", "decide",
+    "dial_policies",
     "dial_scenario", "double_bus", "dress", "duplicate_chain", "duplicate_relay", "duty", "equipment_list", "explore",
     "export_campaign", "extend", "feeder", "find_trials", "fixed_ms", "frontier", "generator", "graded",
     "iec_61508_pfd", "importance", "importance_scenario", "independence", "infeed", "inject", "intervals_scenario",
@@ -328,7 +331,7 @@ __all__ = [
     "settings_for", "simulate", "simulate_stratified", "single_bus", "single_points", "single_set", "standard_curve",
     "study_dependability", "study_dial", "study_importance", "study_locations", "study_misoperations", "study_no_fault",
     "study_outages", "study_test_intervals", "study_timers", "study_variants", "timeline", "timer_scenario",
-    "transformer", "trip_matrix", "unavailability", "uncertainty", "wilson", "zone_graph",
+    "transformer", "trip_matrix", "unavailability", "uncertainty", "wilson", "with_ct", "zone_graph",
 ]
 # fmt: on
 

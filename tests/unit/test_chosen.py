@@ -52,5 +52,5 @@ def test_a_register_and_a_study_of_places_named_in_text(small: Scenario) -> None
 
 @pytest.mark.parametrize("study", [register_scenario, study_scenario, campaign_scenario])
 def test_a_study_refuses_what_is_no_place(small: Scenario, study: Callable[..., object]) -> None:
-    with pytest.raises(InputError, match="did you mean 'Cedar.B"):
+    with pytest.raises(InputError, match=r"did you mean 'Cedar\.B"):
         study(small, locations=["Cedar.B9"])

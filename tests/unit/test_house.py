@@ -134,6 +134,7 @@ PUBLIC: list[str] = [
     "compile_scheme",
     "coordination",
     "coverage_audit",
+    "ct_frequencies",
     "decide",
     "dial_policies",
     "dial_scenario",
@@ -228,6 +229,7 @@ PUBLIC: list[str] = [
     "unavailability",
     "uncertainty",
     "wilson",
+    "with_ct",
     "zone_graph",
 ]
 
