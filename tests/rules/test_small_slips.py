@@ -2,12 +2,18 @@
 
 from __future__ import annotations
 
+from fractions import Fraction
+
 import pytest
 
+from schemesim.engine.batch import run_batch
+from schemesim.engine.case import Case
 from schemesim.engine.draws import uniform
 from schemesim.engine.inverse import AT_ONCE, FULL, Motion, speed_for
+from schemesim.engine.many import ManyDrawn, ManyDrawnTimes
 from schemesim.errors import InputError
-from schemesim.scheme.model import Block, Latch, Not
+from schemesim.scheme.model import Block, Latch, Not, Role
+from schemesim.study.tree import explore
 from tests.rules.hand import FAILS, asked, breaker, case, fails, gate, openings, play, radial, relay, sense, timer, trip
 
 
@@ -72,3 +78,69 @@ def test_the_last_trial_there_may_be() -> None:
     assert 0 <= uniform(1, "x", 2**63 - 1) < 1
     with pytest.raises(InputError, match=f"at most {2**63 - 1}"):
         uniform(1, "x", 2**63)
+
+
+def both_engines(bound: Case) -> list[tuple[list[str], dict[str, tuple[float, float]]]]:
+    """What each leaf of the tree asks and opens: the same by runs from the start, and among rows of a batch."""
+    tree = explore(bound, epsilon=0)
+    found = []
+    for leaf in tree.leaves:
+        yes = [bound.questions[q].name for q, answer in leaf.asked if answer]
+        run = play(bound, *yes)
+        assert run.asked == leaf.asked
+        assert run.outcome.openings == tree.ends[leaf.end].outcome.openings
+        found.append((asked(bound, run), openings(run)))
+    for times in (None, ManyDrawnTimes(1, 0, 64)):
+        rows = run_batch(bound, 64, ManyDrawn(bound.program, 1, 0, 64), times=times)
+        ends = {
+            tuple((o.breaker, o.t_trip_us, o.t_open_us, o.role) for o in rows.outcome(i).openings) for i in range(64)
+        }
+        every = (tree.ends[leaf.end].outcome.openings for leaf in tree.leaves)
+        assert ends == {tuple((o.breaker, o.t_trip_us, o.t_open_us, o.role) for o in end) for end in every}
+    return sorted(found, key=repr)
+
+
+def test_r04_a_latch_that_is_set_asks_for_its_reset_in_both_engines() -> None:
+    """Set at 20; reset at 50 unless R fails; what waits for 100 ms of it runs out only if it was not reset."""
+    blocks: list[Block] = [
+        sense("oc", "F1.CT"),
+        timer("later", "oc", 30),
+        gate("reset", "later", unless=fails("R")),
+        Latch(name="l", set="oc", reset="reset"),
+        timer("wait", "l", 100),
+        trip("t", "wait"),
+        gate("coil", "t"),
+        breaker("F1.CB", "coil"),
+    ]
+    question = [f"R: {FAILS}"]
+    bound = case(radial(), blocks, [relay("R", Fraction(1, 2))])
+    assert both_engines(bound) == [(question, {"F1.CB": (120, 170)}), (question, {})]
+
+
+def test_r04_a_breaker_tripped_in_the_best_role_by_one_coil_asks_nothing_for_the_other() -> None:
+    """Coil 1 by main protection; coil 2 by remote back-up, and by local back-up if R does not fail: not asked."""
+    blocks: list[Block] = [
+        sense("oc", "F1.CT"),
+        trip("main", "oc"),
+        trip("remote", "oc", role=Role.REMOTE),
+        trip("local", "oc", role=Role.LOCAL, unless=fails("R")),
+        gate("c1", "main"),
+        gate("c2", "remote", "local"),
+        breaker("F1.CB", "c1", "c2"),
+    ]
+    bound = case(radial(), blocks, [relay("R", Fraction(1, 2))])
+    assert both_engines(bound) == [([], {"F1.CB": (20, 70)})]
+
+
+def test_r04_a_breaker_tripped_in_a_worse_role_asks_what_may_better_it() -> None:
+    """As before, without main protection: local back-up is asked for, and its role is what counts."""
+    blocks: list[Block] = [
+        sense("oc", "F1.CT"),
+        trip("remote", "oc", role=Role.REMOTE),
+        trip("local", "oc", role=Role.LOCAL, unless=fails("R")),
+        gate("c1", "remote"),
+        gate("c2", "remote", "local"),
+        breaker("F1.CB", "c1", "c2"),
+    ]
+    bound = case(radial(), blocks, [relay("R", Fraction(1, 2))])
+    assert both_engines(bound) == [([f"R: {FAILS}"], {"F1.CB": (20, 70)})] * 2
