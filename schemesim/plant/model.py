@@ -169,6 +169,16 @@ class Location:
     def __str__(self) -> str:
         return self.section if self.position == 0.5 else f"{self.section}@{self.position:g}"
 
+    def is_named(self, text: str) -> bool:
+        """Whether a text names it: as printed, or with its position also where that is the middle.
+
+        Examples
+        --------
+        >>> Location("L1").is_named("L1@0.5"), Location("L1").is_named("L1"), Location("L1", 0.1).is_named("L1")
+        (True, True, False)
+        """
+        return text in (str(self), f"{self.section}@{self.position:g}")
+
 
 _Item = TypeVar("_Item", Section, Device, Source, VoltageTransformer, Dispatch)
 

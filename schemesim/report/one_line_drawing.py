@@ -216,6 +216,15 @@ def fault_point(placed: Placed, fault: Location) -> Point | None:
     return x, y
 
 
+def bolt_of(placed: Placed, at: Point) -> list[Point]:
+    """The mark of a fault, its tip at nought: flat and away from a device close by, so that it covers none."""
+    close = [s.y - at[1] for s in placed.sheet.spots.values() if abs(s.x - at[0]) < 0.2 and abs(s.y - at[1]) < 0.5]
+    if not close:
+        return list(_BOLT)
+    up = -1 if min(close, key=abs) > 0 else 1
+    return [(1.1 * x, 0.45 * up * y) for x, y in _BOLT]
+
+
 def _fault(pen: Pen, placed: Placed, fault: Location) -> None:
     from matplotlib.patches import Polygon  # heavy: only when a picture is asked for
 
@@ -224,7 +233,7 @@ def _fault(pen: Pen, placed: Placed, fault: Location) -> None:
         return
     crowded = any(s.dx < 0 and abs(s.x - at[0]) < 0.5 and abs(s.y - at[1]) < 0.8 for s in placed.sheet.spots.values())
     side = -1 if crowded else 1  # away from labels on the left
-    bolt = Polygon([(at[0] + side * x, at[1] + y) for x, y in _BOLT], closed=True)
+    bolt = Polygon([(at[0] + side * x, at[1] + y) for x, y in bolt_of(placed, at)], closed=True)
     bolt.set_facecolor(VERMILLION)
     bolt.set_edgecolor(BLACK)
     bolt.set_linewidth(0.7 * pen.size)

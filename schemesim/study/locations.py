@@ -60,7 +60,7 @@ class LocationStudy:
     complete: bool = True
 
     def where(self, location: Location | str) -> LocationResult:
-        """The result of one location, by itself or as printed.
+        """The result of one location, by itself or by name (``"L1"`` and ``"L1@0.5"`` are the same).
 
         Raises
         ------
@@ -68,7 +68,7 @@ class LocationStudy:
             If it was not studied.
         """
         for r in self.results:
-            if location in (r.location, str(r.location)):
+            if r.location.is_named(location) if isinstance(location, str) else r.location == location:
                 return r
         known = [str(r.location) for r in self.results]
         raise reject("location", str(location), "a location studied", tip=nearest(str(location), known))

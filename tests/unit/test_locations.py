@@ -226,3 +226,10 @@ def test_frequencies_are_shared_by_the_locations_of_a_section() -> None:
     rates = spread_frequency(along, {"L": 0.3})
     assert sum(rates.values()) == pytest.approx(0.3)
     assert rates[Location("B")] == 0
+
+
+def test_a_location_is_found_by_its_name_with_or_without_the_position_in_the_middle() -> None:
+    found = study(feeder_scheme(), locations=[F1])
+    assert found.where("F1") is found.where("F1@0.5") is found.where(F1)
+    with pytest.raises(InputError, match="a location studied"):
+        found.where("F1@0.4")

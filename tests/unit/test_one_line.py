@@ -42,6 +42,7 @@ from schemesim.plant.zones import isolation_zones
 from schemesim.report.geometry import Sheet
 from schemesim.report.grid_layout import arrange, neighbourhood
 from schemesim.report.one_line import dead_sections, plot_one_line
+from schemesim.report.one_line_drawing import bolt_of, fault_point
 from schemesim.report.station_layout import diameter_of, lay_out, ring_of
 from schemesim.report.station_parts import station_names, station_parts
 from schemesim.report.timeline import timeline
@@ -408,3 +409,29 @@ def test_any_plant_is_drawn_to_the_end(plant: Plant) -> None:
     drawn = gids(ax, "breaker") + gids(ax, "ct") + gids(ax, "switch")
     joints = [d for d in plant.devices if d.kind is DeviceKind.JOINT]
     assert len(drawn) + len(joints) == len(plant.devices)
+
+
+@pytest.mark.parametrize("ct", [CtPlacement.CIRCUIT_SIDE, CtPlacement.BUS_SIDE])
+def test_the_mark_of_a_fault_beside_a_breaker_covers_no_symbol(ct: CtPlacement) -> None:
+    b = PlantBuilder()
+    generator(b, "G1", station="Elm")
+    feeder(b, "F1", station="Elm", load_mw=10)
+    single_bus(b, "Elm", [Bay("G1", "G1"), Bay("F1", "F1", ct=ct)])
+    plant = b.build()
+    breaker = plant.device["Elm.F1.CB"]
+    sheet = arrange(plant, ["Elm"])
+    beside = sorted({breaker.a, breaker.b} - set(sheet.sheet.buses))
+    assert beside
+    for section in beside:
+        at = fault_point(sheet, Location(section))
+        assert at is not None
+        shape = bolt_of(sheet, at)
+        for side in (1, -1):
+            corners = [(at[0] + side * x, at[1] + y) for x, y in shape]
+            edge = [
+                (p[0] + n / 10 * (q[0] - p[0]), p[1] + n / 10 * (q[1] - p[1]))
+                for p, q in pairwise([*corners, corners[0]])
+                for n in range(10)
+            ]
+            for name, spot in sheet.sheet.spots.items():
+                assert not [p for p in edge if abs(p[0] - spot.x) < 0.1 and abs(p[1] - spot.y) < 0.1], (section, name)
