@@ -3,15 +3,22 @@
 from __future__ import annotations
 
 from fractions import Fraction
+from pathlib import Path
 
 import pytest
 
+from schemesim.engine.answers import DrawnAnswers
+from schemesim.engine.automaton import automaton_of
 from schemesim.engine.batch import run_batch
 from schemesim.engine.case import Case
 from schemesim.engine.draws import uniform
+from schemesim.engine.event import run_event
 from schemesim.engine.inverse import AT_ONCE, FULL, Motion, speed_for
 from schemesim.engine.many import ManyDrawn, ManyDrawnTimes
+from schemesim.engine.outcome import Outcome
 from schemesim.errors import InputError
+from schemesim.plant.model import Location
+from schemesim.scenario import load_scenario
 from schemesim.scheme.model import Block, Latch, Not, Role
 from schemesim.study.tree import explore
 from tests.rules.hand import FAILS, asked, breaker, case, fails, gate, openings, play, radial, relay, sense, timer, trip
@@ -80,6 +87,11 @@ def test_the_last_trial_there_may_be() -> None:
         uniform(1, "x", 2**63)
 
 
+def told(outcome: Outcome) -> tuple[tuple[object, ...], ...]:
+    """Openings without the trip output, of which several may do."""
+    return tuple((o.breaker, o.t_trip_us, o.t_open_us, o.role) for o in outcome.openings)
+
+
 def both_engines(bound: Case) -> list[tuple[list[str], dict[str, tuple[float, float]]]]:
     """What each leaf of the tree asks and opens: the same by runs from the start, and among rows of a batch."""
     tree = explore(bound, epsilon=0)
@@ -92,11 +104,8 @@ def both_engines(bound: Case) -> list[tuple[list[str], dict[str, tuple[float, fl
         found.append((asked(bound, run), openings(run)))
     for times in (None, ManyDrawnTimes(1, 0, 64)):
         rows = run_batch(bound, 64, ManyDrawn(bound.program, 1, 0, 64), times=times)
-        ends = {
-            tuple((o.breaker, o.t_trip_us, o.t_open_us, o.role) for o in rows.outcome(i).openings) for i in range(64)
-        }
-        every = (tree.ends[leaf.end].outcome.openings for leaf in tree.leaves)
-        assert ends == {tuple((o.breaker, o.t_trip_us, o.t_open_us, o.role) for o in end) for end in every}
+        ends = {told(rows.outcome(i)) for i in range(64)}
+        assert ends == {told(tree.ends[leaf.end].outcome) for leaf in tree.leaves}
     return sorted(found, key=repr)
 
 
@@ -144,3 +153,14 @@ def test_r04_a_breaker_tripped_in_a_worse_role_asks_what_may_better_it() -> None
     ]
     bound = case(radial(), blocks, [relay("R", Fraction(1, 2))])
     assert both_engines(bound) == [([f"R: {FAILS}"], {"F1.CB": (20, 70)})] * 2
+
+
+def test_an_automaton_that_grows_over_its_first_size_gives_what_the_engine_gives() -> None:
+    """Over 256 states, which are met one by one; every sixteenth row is run from the start too."""
+    scenario = load_scenario(Path(__file__).resolve().parents[2] / "scenarios" / "demo.yaml")
+    bound = scenario.case(Location("Dunmore.L4.c"))
+    rows = run_batch(bound, 2_000, ManyDrawn(bound.program, 1, 0, 2_000))
+    assert len(automaton_of(bound).states) > 256
+    for trial in range(0, 2_000, 16):
+        outcome = run_event(bound, DrawnAnswers(bound.program, 1, trial)).outcome
+        assert told(rows.outcome(trial)) == told(outcome)
