@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from fractions import Fraction
 from pathlib import Path
 
@@ -19,7 +20,8 @@ from schemesim.engine.outcome import Outcome
 from schemesim.errors import InputError
 from schemesim.plant.model import Location
 from schemesim.scenario import load_scenario
-from schemesim.scheme.model import Block, Latch, Not, Role
+from schemesim.scheme.distributions import Empirical
+from schemesim.scheme.model import Block, Latch, Not, Role, Sense
 from schemesim.study.tree import explore
 from tests.rules.hand import FAILS, asked, breaker, case, fails, gate, openings, play, radial, relay, sense, timer, trip
 
@@ -164,3 +166,47 @@ def test_an_automaton_that_grows_over_its_first_size_gives_what_the_engine_gives
     for trial in range(0, 2_000, 16):
         outcome = run_event(bound, DrawnAnswers(bound.program, 1, trial)).outcome
         assert told(rows.outcome(trial)) == told(outcome)
+
+
+@pytest.mark.parametrize("role", list(Role))
+def test_every_role_is_kept_until_its_signal_gets_through_in_both_engines(role: Role) -> None:
+    """Tripped at 20, let through at 70 unless R fails: the role is that of the trip."""
+    blocks: list[Block] = [
+        sense("oc", "F1.CT"),
+        trip("t", "oc", role=role),
+        Latch(name="seal", set="t"),
+        timer("wait", "oc", 50),
+        gate("coil", "seal", "wait", k=2, unless=fails("R")),
+        breaker("F1.CB", "coil"),
+    ]
+    bound = case(radial(), blocks, [relay("R", Fraction(1, 2))])
+    both = both_engines(bound)
+    assert [opened for _, opened in both] == [{"F1.CB": (70, 120)}, {}]
+    assert {o.role for end in explore(bound, epsilon=0).ends for o in end.outcome.openings} == {role}
+
+
+def test_more_trip_outputs_behind_one_coil_than_bits_in_a_word() -> None:
+    """Seventy, each by its own relay; those after the first are slower, and of a better role the later they come."""
+    count = 70
+    blocks: list[Block] = [sense(f"oc{n:02}", "F1.CT", 20 if n < 2 else 20 + n) for n in range(count)]
+    roles = [Role.REMOTE, Role.LOCAL, *[Role.MAIN] * (count - 2)]
+    blocks += [trip(f"t{n:02}", f"oc{n:02}", role=roles[n], unless=fails(f"R{n:02}")) for n in range(count)]
+    blocks += [gate("coil", *(f"t{n:02}" for n in range(count))), breaker("F1.CB", "coil")]
+    relays = [relay(f"R{n:02}", 0.5 if n < 2 else 1e-9) for n in range(count)]
+    bound = case(radial(), blocks, relays)
+    answers = ManyDrawn(bound.program, 3, 0, 64)
+    # Delays that are random by kind alone: rows stand in words, and every run takes the same times.
+    sensed = [b for b in blocks if isinstance(b, Sense)]
+    scattered: list[Block] = [replace(b, operate=Empirical((b.operate.nominal_us,) * 2)) for b in sensed]
+    scattered += [b for b in blocks if not isinstance(b, Sense)]
+    in_words = case(radial(), scattered, relays)
+    every = [run_batch(bound, 64, answers), run_batch(in_words, 64, answers, times=ManyDrawnTimes(3, 0, 64))]
+    kept = {Role.LOCAL: 20.0, Role.REMOTE: 20.0, Role.MAIN: 22.0}
+    seen = set()
+    for trial in range(64):
+        outcome = run_event(bound, DrawnAnswers(bound.program, 3, trial)).outcome
+        (opening,) = outcome.openings
+        assert opening.t_trip_us / 1000 == kept[opening.role]
+        seen.add(opening.role)
+        assert {told(rows.outcome(trial)) for rows in every} == {told(outcome)}
+    assert seen == set(kept)
