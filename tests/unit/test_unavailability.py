@@ -13,11 +13,10 @@ from schemesim.scheme.redundancy import iec_61508_pfd, redundant
 from schemesim.scheme.starting_values import (
     COLUMNS,
     FILE,
-    Quality,
     load_starting_values,
     read_starting_values,
 )
-from schemesim.scheme.unavailability import Over, RateData, RateRule, optimal_interval_yr, unavailability
+from schemesim.scheme.unavailability import Over, Quality, RateData, RateRule, optimal_interval_yr, unavailability
 
 RELAY, DC = ComponentKind.RELAY, ComponentKind.DC
 FTO, LOST = FailureMode.FAILURE_TO_OPERATE, FailureMode.LOST
