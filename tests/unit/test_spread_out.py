@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 from concurrent.futures import ThreadPoolExecutor
+from dataclasses import replace
+from typing import Any
 
 import pytest
 
@@ -10,15 +12,21 @@ from schemesim.engine.program import compile_scheme
 from schemesim.engine.sensing import LogicalSensing
 from schemesim.plant.model import Location
 from schemesim.scheme.dress import dress
-from schemesim.scheme.policy import duplicate_chain
+from schemesim.scheme.policy import duplicate_chain, duplicate_relay
 from schemesim.scheme.settings_rules import settings_for
+from schemesim.study.edits import ADDITIONS
 from schemesim.study.element_audit import audit_elements
 from schemesim.study.importance_study import study_importance
+from schemesim.study.outage_results import Outage, OutageResult, OutageStudy, Worse
+from schemesim.study.spoiled import Effect
+from schemesim.study.timer_study import Weights
+from schemesim.study.tree import explore
 from tests.rules.small import chain
 from tests.unit.electrical_plants import with_impedances
-from tests.unit.small_schemes import feeder_scheme, program_of
+from tests.unit.small_schemes import as_float, case_of, feeder_scheme, program_of
 
-PLACES = [Location("F1"), Location("F2")]
+F1, F2 = Location("F1"), Location("F2")
+PLACES = [F1, F2]
 
 
 def test_importance_by_an_executor_is_that_of_one_process() -> None:
@@ -51,3 +59,34 @@ def test_a_detector_must_see_faults_beside_its_breaker_only(place: str, must: in
     rows = {r.block: r for r in got.rows}
     detector = rows.get("Alder.L1.CB/50BF current")
     assert (0 if detector is None else detector.must) == must
+
+
+def test_what_an_outage_makes_critical_in_rows() -> None:
+    nothing: Any = None
+    places = (Worse(F1, Effect.LATE, 470_000, 70_000, 1, 1), Worse(F2, Effect.NOT_CLEARED, None, 70_000, 0, 1))
+    out = OutageResult(Outage("dc", "DC", frozenset({"DC"})), nothing, 2, places, (), *[None] * 5)
+    rows = list(OutageStudy(nothing, (out,)).critical_records())
+    assert [(r["out"], r["location"], r["effect"], r["t_clear_ms"], r["breakers"]) for r in rows] == [
+        ("DC", "F1", "late", 470.0, 1),
+        ("DC", "F2", "not cleared", None, 0),
+    ]
+
+
+def test_weights_of_a_timer_unless_stated() -> None:
+    """A needless trip weighs as much as a late clearing; one in a thousand is the target of both."""
+    assert Weights() == Weights(needless=1.0, late=1.0, needless_target=1e-3, late_target=1e-3)
+
+
+def test_a_tree_of_plain_numbers_has_nothing_lost_to_the_smallest_of_them() -> None:
+    assert explore(case_of(feeder_scheme(as_float), "F1"), epsilon=0).slack == 0
+
+
+def test_a_second_dc_takes_the_second_coil_with_it() -> None:
+    policy = duplicate_relay()
+    coil = replace(policy.sets[1], coil="2", dc="1")
+    two = replace(policy, sets=(replace(policy.sets[0], coil="1", dc="1"), coil), coil_dc=(("1", "1"), ("2", "1")))
+    added = ADDITIONS["second DC"].change(two)
+    assert [s.dc for s in added.sets] == ["1", "2"]
+    assert added.coil_dc == (("1", "1"), ("2", "2"))
+    one = replace(two, sets=two.sets[:1])
+    assert ADDITIONS["second DC"].change(one) == one
