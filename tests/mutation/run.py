@@ -284,6 +284,7 @@ def main(arguments: list[str]) -> int:
     parser.add_argument("--seed", type=int, default=1)
     parser.add_argument("--workers", type=int, default=1)
     parser.add_argument("--budget", type=float, default=30.0, help="seconds of tests for a mutant, unmutated")
+    parser.add_argument("--also", type=Path, nargs="*", default=[], help="of report: other places of work to add up")
     parser.add_argument("--only", nargs="*", default=[], help="of sample: names of files to draw from")
     parser.add_argument("--without", nargs="*", default=[], help="of sample: names of files left for another time")
     asked = parser.parse_intermixed_args(arguments)
@@ -307,7 +308,8 @@ def main(arguments: list[str]) -> int:
         todo = [Mutant(**{f: r[f] for f in fields}) for r in alive if (r["file"], r["line"], r["what"]) not in why]
     if todo:
         run(asked.into, todo, asked.seed, asked.workers, asked.budget)
-    print(report(with_line(rows(results), tree), why))
+    places = [asked.into, *asked.also]
+    print(report([r for into in places for r in with_line(rows(results_of(into, asked.seed)), into / "tree")], why))
     return 0
 
 
