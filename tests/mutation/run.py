@@ -198,7 +198,9 @@ def run_slowly(
 
 def verify(into: Path, found: list[dict[str, Any]]) -> int:
     """Run with no change each test that told a mutant; how many fail."""
-    told = [r["by"].split(" - ")[0].removeprefix("FAILED ") for r in found if r["end"] == KILLED and "::" in r["by"]]
+    known = json.loads((into / "map.json").read_text(encoding="utf-8"))["tests"]
+    said = [r["by"].removeprefix("FAILED ").removeprefix("ERROR ") for r in found if r["end"] == KILLED]
+    told = [k for by in said for k in known if k == by or by.startswith(f"{k} - ")]
     with tempfile.TemporaryDirectory(prefix="mutation-") as place:
         shutil.copytree(into / "tree", tree := Path(place) / "0")
         preload(tree)
