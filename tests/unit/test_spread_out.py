@@ -8,16 +8,22 @@ from typing import Any
 
 import pytest
 
+from schemesim.engine.case import bind
 from schemesim.engine.program import compile_scheme
-from schemesim.engine.sensing import LogicalSensing
+from schemesim.engine.sensing import LogicalSensing, NoFault
+from schemesim.errors import InputError
 from schemesim.plant.model import Location
 from schemesim.scheme.dress import dress
 from schemesim.scheme.policy import duplicate_chain, duplicate_relay
 from schemesim.scheme.settings_rules import settings_for
+from schemesim.study.brackets import Bracket
 from schemesim.study.edits import ADDITIONS
 from schemesim.study.element_audit import audit_elements
 from schemesim.study.importance_study import study_importance
+from schemesim.study.misoperations import Judged, Misoperation, MisoperationStudy
+from schemesim.study.money import Costs, Values
 from schemesim.study.outage_results import Outage, OutageResult, OutageStudy, Worse
+from schemesim.study.risk import place_of
 from schemesim.study.spoiled import Effect
 from schemesim.study.timer_study import Weights
 from schemesim.study.tree import explore
@@ -90,3 +96,24 @@ def test_a_second_dc_takes_the_second_coil_with_it() -> None:
     assert added.coil_dc == (("1", "1"), ("2", "2"))
     one = replace(two, sets=two.sets[:1])
     assert ADDITIONS["second DC"].change(one) == one
+
+
+def test_misoperations_a_year_have_a_low_and_a_high_end() -> None:
+    p = {m: Bracket(0.25, 0.5) for m in Misoperation}
+    table = MisoperationStudy((Judged("F1", 2.0, p, Bracket(0.25, 0.5)),)).summary()
+    assert set(table["per_yr_low"]) == {0.5}
+    assert set(table["per_yr_high"]) == {1.0}
+
+
+def test_the_worst_of_a_trip_with_no_fault_is_that_it_trips() -> None:
+    bound = bind(program_of(feeder_scheme()), NoFault("M1"), LogicalSensing())
+    worst = place_of(bound, explore(bound, epsilon=0.5), 0).worst
+    assert [list(column) for column in (worst.t_ms, worst.late, worst.needless, worst.spurious)] == [[0], [0], [0], [1]]
+
+
+@pytest.mark.parametrize("value", ["5", True, None])
+def test_what_money_is_counted_in_is_a_number(value: Any) -> None:
+    with pytest.raises(InputError, match="a finite number of 0 or more"):
+        Values(damage_per_ms=value, damage_cap=-1)
+    with pytest.raises(InputError, match="discount rate"):
+        Costs(discount_rate=value)
