@@ -18,6 +18,7 @@ from typing import TYPE_CHECKING, TypeVar
 import networkx as nx
 
 from schemesim.errors import ErrorList, nearest, reject
+from schemesim.plant.location import Location as Location  # a plant gives the places in it
 from schemesim.plant.net_data import (
     Coupling,
     LineImpedance,
@@ -151,33 +152,6 @@ class Dispatch:
 
     name: str
     out: frozenset[str] = frozenset()
-
-
-@dataclass(frozen=True, slots=True, order=True)
-class Location:
-    """Where a fault falls: a section and, along a line, a position from 0 to 1.
-
-    Examples
-    --------
-    >>> str(Location("L1", 0.25))
-    'L1@0.25'
-    """
-
-    section: str
-    position: float = 0.5
-
-    def __str__(self) -> str:
-        return self.section if self.position == 0.5 else f"{self.section}@{self.position:g}"
-
-    def is_named(self, text: str) -> bool:
-        """Whether a text names it: as printed, or with its position also where that is the middle.
-
-        Examples
-        --------
-        >>> Location("L1").is_named("L1@0.5"), Location("L1").is_named("L1"), Location("L1", 0.1).is_named("L1")
-        (True, True, False)
-        """
-        return text in (str(self), f"{self.section}@{self.position:g}")
 
 
 _Item = TypeVar("_Item", Section, Device, Source, VoltageTransformer, Dispatch)
