@@ -27,6 +27,7 @@ def environment(tree: Path) -> dict[str, str]:
 
 def preload(tree: Path) -> None:
     """Import what no mutant changes."""
+    vars(sys.modules["__main__"]).pop("__file__", None)  # processes that a test starts shall not import this run's own
     os.environ.update(environment(tree))
     for name in HEAVY:
         with contextlib.suppress(ImportError):
