@@ -48,7 +48,7 @@ def cover(paths: list[str], into: Path) -> None:
     cov = coverage.Coverage(data_file=None, source=["schemesim"], config_file=False)
     contexts = Contexts(cov)
     cov.start()
-    pytest.main(["-q", "-p", "no:cacheprovider", "-n0", *paths], plugins=[contexts])
+    pytest.main(["-q", "-p", "no:cacheprovider", *paths], plugins=[contexts])
     cov.stop()
     failed = set(contexts.failed)
     if not contexts.seconds:

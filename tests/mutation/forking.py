@@ -55,7 +55,7 @@ def start(tree: Path, tests: list[str], log: Path, options: tuple[str, ...] = ("
         sys.argv = ["pytest", *tests]
         import pytest
 
-        arguments = ["-q", "-p", "no:cacheprovider", "-n0", "--no-header", "--tb=line", *options, *tests]
+        arguments = ["-q", "-p", "no:cacheprovider", "--no-header", "--tb=line", *options, *tests]
         code = int(pytest.main(arguments))
         found = sys.modules.get("schemesim")
         if found is not None and not str(found.__file__).startswith(str(tree)):

@@ -140,4 +140,4 @@ def session(tree: Path, paths: list[str], loop: Loop) -> int:
     sys.path[:] = [str(tree), *(p for p in sys.path if not (Path(p or ".") / "schemesim").is_dir())]
     for name in [n for n in sys.modules if n.partition(".")[0] == "schemesim"]:
         del sys.modules[name]
-    return int(pytest.main(["-q", "-s", "-p", "no:cacheprovider", "-n0", "--no-header", *paths], plugins=[loop]))
+    return int(pytest.main(["-q", "-s", "-p", "no:cacheprovider", "--no-header", *paths], plugins=[loop]))
