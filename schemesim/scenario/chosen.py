@@ -9,7 +9,7 @@ from schemesim.errors import ErrorList, InputError, nearest
 from schemesim.plant.model import Location, Plant
 from schemesim.scenario.model import location
 
-Places: TypeAlias = "Iterable[Location | str] | Location | str"
+Places: TypeAlias = Iterable[Location | str] | Location | str
 """One location or several, each a Location or text: a section, or a line and a position, ``L1@0.25``."""
 
 
