@@ -10,7 +10,7 @@ import numpy as np
 
 from schemesim.engine.case import Case
 from schemesim.engine.many import NEVER_US, Batch, Ending
-from schemesim.engine.outcome import Status
+from schemesim.engine.outcome import status_of
 from schemesim.engine.sensing import NoFault
 from schemesim.scheme.model import Role
 
@@ -92,14 +92,7 @@ def _numbers(case: Case, piece: Columns, endings: dict[Ending, int]) -> NDArray[
 def _ending(case: Case, piece: Columns, key: list[int], fed: bool) -> Ending:
     mask, at_horizon, cleared = piece.masks[key[0]], bool(key[1]), bool(key[2])
     breakers = len(case.breakers)
-    if isinstance(case.event, NoFault):
-        status = Status.NO_FAULT
-    elif not fed:
-        status = Status.NOT_FED
-    elif cleared:
-        status = Status.CLEARED
-    else:
-        status = Status.UNDETERMINED if at_horizon else Status.NOT_CLEARED
+    status = status_of(isinstance(case.event, NoFault), fed, 0 if cleared else None, at_horizon)
     tripped = []
     for place, code in enumerate(key[3 : 3 + breakers]):
         if code:

@@ -13,7 +13,7 @@ from typing import NamedTuple
 
 from schemesim.engine.case import Case
 from schemesim.engine.moment import Moment
-from schemesim.engine.outcome import Opening, Outcome, Status
+from schemesim.engine.outcome import Opening, Outcome, status_of
 from schemesim.engine.rules import MAX_PASSES
 from schemesim.engine.sensing import NoFault
 from schemesim.engine.succession import Asks, follow, rest
@@ -208,14 +208,8 @@ class Forks:
         while past is not None:
             past, opening = past
             openings.append(opening)
-        if isinstance(self.case.event, NoFault):
-            status = Status.NO_FAULT
-        elif not self.case.topology(0).fed:
-            status = Status.NOT_FED
-        elif going.t_clear_us is not None:
-            status = Status.CLEARED
-        else:
-            status = Status.UNDETERMINED if at_horizon else Status.NOT_CLEARED
+        fed = self.case.topology(0).fed
+        status = status_of(isinstance(self.case.event, NoFault), fed, going.t_clear_us, at_horizon)
         operated = tuple(sorted(going.operated))
         return Outcome(status, going.t_clear_us, tuple(sorted(openings)), operated, at_horizon)
 

@@ -13,7 +13,6 @@ from schemesim.engine.values import (
     CLOSED,
     CLOSING,
     FALSE,
-    NOT_KNOWN,
     OPENING,
     TO_FALSE,
     TO_TRUE,
@@ -274,12 +273,7 @@ def _forget(m: Moment, gone: Doomed) -> None:
             if w.closable[place] or not m.decided >> place & 1:
                 mask |= group
         gone.kept[found] = mask
-    more = 0
-    for q in w.shared:
-        if mask >> 8 * q & 1 and m.known[q] == NOT_KNOWN:
-            for j in w.siblings[q]:
-                more |= 0xFF << 8 * j
-    m.known = bytearray((int.from_bytes(m.known, "little") & (mask | more)).to_bytes(len(m.known), "little"))
+    m.known = bytearray((int.from_bytes(m.known, "little") & mask).to_bytes(len(m.known), "little"))
 
 
 _IF_TRUE = bytes(0xFF if v == TRUE else 0 for v in range(256))

@@ -66,8 +66,6 @@ class Wiring:
     questions : tuple of int
         Questions of the program that bear on the case, or exclude one that does; the engine
         numbers them by their place here.
-    shared : tuple of int
-        Questions with others that exclude them.
     unless_mask, given_mask : tuple of int
         For each ask the gates it suppresses, or enables, as a mask.
     ask_bytes, mode_bytes : tuple of int
@@ -106,7 +104,6 @@ class Wiring:
     certain: bytes
     settles: tuple[tuple[int, ...], ...]
     siblings: tuple[tuple[int, ...], ...]
-    shared: tuple[int, ...]
     unless_mask: tuple[int, ...]
     given_mask: tuple[int, ...]
     ask_bytes: tuple[int, ...]
@@ -188,7 +185,6 @@ def _wiring(case: Case) -> Wiring:
         certain=bytes(UNKNOWN if v is None else int(v) for v in case.certain),
         settles=tuple(case.settles.get(q, ()) for q in questions),
         siblings=siblings_of,
-        shared=tuple(q for q, others in enumerate(siblings_of) if others),
         unless_mask=_gates_by_ask(case.unless, len(case.asks)),
         given_mask=_gates_by_ask(case.given, len(case.asks)),
         ask_bytes=tuple(_bytes_at(local[q] for q in group) for group in case.asks),
