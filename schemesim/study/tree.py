@@ -23,18 +23,20 @@ import math
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field
 from fractions import Fraction
-from typing import Protocol
+from typing import TYPE_CHECKING, Protocol
 
 from schemesim.engine.answers import Answers, ForcedAnswers
 from schemesim.engine.case import Case
 from schemesim.engine.event import DEFAULT_HORIZON_US, run_event
-from schemesim.engine.forks import Forks, Paused
 from schemesim.engine.outcome import Outcome, Run
 from schemesim.engine.program import Program, Question
 from schemesim.errors import ErrorList, RunError, reject
 from schemesim.scheme.model import Probability
 from schemesim.study.brackets import Bracket, round_down, round_up
 from schemesim.study.odds import Odds, add, conditions
+
+if TYPE_CHECKING:
+    from schemesim.engine.forks import Forks, Paused
 
 EPSILON = 1e-6
 """Mass left unexplored by default."""
@@ -245,6 +247,8 @@ def explore(
     InputError
         For bad numbers and for conditions that are unknown or exclude each other.
     """
+    from schemesim.engine.forks import Forks  # only who grows a tree pays for it
+
     bound = _checked(epsilon, max_runs, complete, stop is not None)
     known = conditions(case.program, given or {})
     forks = Forks(case, known, horizon_us) if run is None and not case.inverse else None
