@@ -9,7 +9,6 @@ from schemesim.plant.net_faults import network_of
 
 @pytest.mark.filterwarnings("ignore")  # of the library that carries the network
 def test_updates_and_fresh_factorisations_agree_on_what_is_timed() -> None:
-    pytest.importorskip("pandapower", reason="the optional extra pandapower is not installed")
     from tests.benchmarks.networks import lines_of, openings, published, update_over_refactorise
 
     plant = published("case24_ieee_rts")

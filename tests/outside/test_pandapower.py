@@ -28,7 +28,7 @@ from schemesim.scenario import load_scenario
 
 with warnings.catch_warnings():
     warnings.simplefilter("ignore")  # what that library warns of while it is imported is its own affair
-    pp = pytest.importorskip("pandapower", reason="the optional extra pandapower is not installed")
+    import pandapower as pp
     import pandapower.networks as networks
     from pandapower.shortcircuit import calc_sc
 
