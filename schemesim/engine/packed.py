@@ -31,10 +31,7 @@ TILE = 4096
 
 
 class Packed(PackedRows):
-    """Rows walking in lockstep; results are columns with one entry for each row.
-
-    The rows are numbered ``0`` to ``count - 1`` in ``rows``; a tail fills the last word and never starts.
-    """
+    """Rows walking in lockstep."""
 
     def finish(self) -> None:
         """Walk every row to its end (rule R20)."""
@@ -206,18 +203,18 @@ class Packed(PackedRows):
             when[late] += self._takes(w.late[place], some)
         self._write(s, rows, when)
         at = self.at[rows]
-        new = self.code[place, at] == 0
+        new = ~self.opened[place, at]
         some, at = rows[new], at[new]
         self.t_trip[place, at], self.t_open[place, at] = self.t[some], when[new]
         holds = unpack(self.modes[2, place])[some]
-        self.code[place, at] = 1 + ~holds
+        self.opened[place, at], self.interrupted[place, at] = True, ~holds
         self.lay.ways[place].read_at(self.sig, some, self.keys[place], at)
 
     def _takes(self, start: tuple[int, int, int], rows: Rows) -> NDArray[np.int64]:
         fixed, first, second = start
         self.draw(np.array([first, second]))
         at = self.at[rows]
-        taken: NDArray[np.int64] = self.delays[first, at].astype(np.int64) + self.delays[second, at] + fixed
+        taken: NDArray[np.int64] = self.delays[first, at] + self.delays[second, at] + fixed
         return taken
 
     def _write(self, s: NDArray[np.intp] | int, rows: Rows, when: NDArray[np.int64]) -> None:

@@ -43,7 +43,7 @@ class PackedRows:
         self.never = int(np.iinfo(time).max)
         self.due = np.full((lay.sinks, n), self.never, dtype=time)
         self.at_once = np.zeros_like(self.to_true)
-        self.delays = np.zeros((len(w.delays) + 1, rows.size), dtype=time)
+        self.delays = np.zeros((len(w.delays) + 1, rows.size), dtype=np.int64)
         breakers = (len(w.breakers), n // 64)
         self.decided, self.opening, self.auxiliary = (np.zeros(breakers, dtype=WORD) for _ in range(3))
         self.away, self.closing, self.interrupts = (np.zeros(breakers, dtype=WORD) for _ in range(3))
@@ -57,7 +57,8 @@ class PackedRows:
         self.t_clear = np.full(self.count, NEVER_US, dtype=np.int64)
         self.t_open = np.full((len(w.breakers), self.count), NEVER_US, dtype=np.int64)
         self.t_trip = np.full((len(w.breakers), self.count), NEVER_US, dtype=np.int64)
-        self.code = np.zeros((len(w.breakers), self.count), dtype=np.int32)
+        self.opened = np.zeros((len(w.breakers), self.count), dtype=np.bool_)
+        self.interrupted = np.zeros_like(self.opened)
         self.keys = [np.zeros((ways.width, self.count), dtype=np.int64) for ways in lay.ways]
         self.t_operated = np.full((len(w.observed), self.count), NEVER_US, dtype=np.int64)
         self.last_topology = np.zeros(self.count, dtype=np.int32)
@@ -72,10 +73,8 @@ class PackedRows:
         if not self.drawn[numbers].all():
             for number in np.unique(numbers[~self.drawn[numbers]]).tolist():
                 name, delay = self.w.delays[number]
-                self.delays[number] = np.minimum(self.times.of(name, delay, self.rows), self.horizon_us + 1)
+                self.delays[number] = self.times.of(name, delay, self.rows)
                 self.drawn[number] = True
-
-    # -------------------------------------------------------------------------
 
     def _rest(self, verdicts: Verdicts) -> None:
         """The state before the event; rows that differ in an answer it needs are taken apart."""
@@ -138,16 +137,17 @@ class PackedRows:
 
     def columns(self) -> Columns:
         """What the rows left behind."""
+        code = np.zeros((len(self.w.breakers), self.count), dtype=np.int32)
         for place, ways in enumerate(self.lay.ways):
-            rows = np.flatnonzero(self.code[place])
+            rows = np.flatnonzero(self.opened[place])
             if rows.size:
-                self.code[place, rows] += 2 * ways.codes(self.keys[place][:, rows]) - 1
+                code[place, rows] = 2 * ways.codes(self.keys[place][:, rows]) + self.interrupted[place, rows]
         return Columns(
             t_clear=self.t_clear,
             t_open=self.t_open,
             t_trip=self.t_trip,
             t_operated=self.t_operated,
-            code=self.code,
+            code=code,
             ways=tuple(
                 {2 * i + done: (*way, bool(done)) for i, way in enumerate(ways.found) for done in (0, 1)}
                 for ways in self.lay.ways

@@ -8,7 +8,7 @@ import pytest
 
 from schemesim.engine.answers import DrawnAnswers
 from schemesim.engine.batch import run_batch
-from schemesim.engine.event import run_event
+from schemesim.engine.event import DEFAULT_HORIZON_US, run_event
 from schemesim.engine.layout import layout_of
 from schemesim.engine.many import ManyDrawn, ManyDrawnTimes
 from schemesim.engine.times import DelayTimes
@@ -23,13 +23,22 @@ TRIALS = 40
 SPREAD = replace(breaker("F1.CB", "coil"), interrupting=Uniform(40_000, 60_000))
 
 
-def agree(blocks: list[Block], components: list[Component], observe: frozenset[str] = frozenset()) -> int:
+def agree(
+    blocks: list[Block],
+    components: list[Component],
+    observe: frozenset[str] = frozenset(),
+    horizon_us: int = DEFAULT_HORIZON_US,
+) -> int:
     """Rows of a batch with random times against runs one by one; how many outcomes differ among themselves."""
     bound = case(radial(), blocks, components, observe=observe)
     assert bound.random
     program = bound.program
-    batch = run_batch(bound, TRIALS, ManyDrawn(program, 3, 0, TRIALS), times=ManyDrawnTimes(3, 0, TRIALS))
-    each = [run_event(bound, DrawnAnswers(program, 3, t), times=DelayTimes(3, t)).outcome for t in range(TRIALS)]
+    answers, times = ManyDrawn(program, 3, 0, TRIALS), ManyDrawnTimes(3, 0, TRIALS)
+    batch = run_batch(bound, TRIALS, answers, times=times, horizon_us=horizon_us)
+    each = [
+        run_event(bound, DrawnAnswers(program, 3, t), times=DelayTimes(3, t), horizon_us=horizon_us).outcome
+        for t in range(TRIALS)
+    ]
     assert [batch.outcome(t) for t in range(TRIALS)] == each
     return len({(o.openings, o.operated) for o in each})
 
@@ -61,3 +70,9 @@ def test_r12_the_trip_named_stands_behind_more_signals_than_one_number_holds() -
     bound = case(radial(), blocks, components)
     assert layout_of(wiring_of(bound)).ways[0].width > 1
     assert agree(blocks, components) > 2
+
+
+@pytest.mark.parametrize("horizon_us", [45_000, 65_000, 75_000])
+def test_r20_an_opening_beyond_the_horizon_keeps_its_time(horizon_us: int) -> None:
+    blocks: list[Block] = [sense("oc", "F1.CT"), trip("t", "oc"), gate("coil", "t"), SPREAD]
+    assert agree(blocks, [], horizon_us=horizon_us) > 1
